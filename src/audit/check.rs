@@ -1,0 +1,380 @@
+//! The checks themselves. Who may use what is worked out here once more, plainly, rather
+//! than taken from the code that the engine uses.
+
+use super::{Receipt, Refusal};
+use crate::claim::{Answer, FloorProof, HallViolation, Plan};
+use crate::clock::{Instant, Span};
+use crate::timetable::{Piece, Resource, Timetable};
+use std::collections::{HashMap, HashSet};
+use std::sync::Arc;
+
+/// Checks a whole answer: the plan, the floor, the violations.
+///
+/// # Errors
+/// Every reason to refuse it.
+pub fn check(timetable: &Timetable, answer: &Answer) -> Result<Receipt, Vec<Refusal>> {
+    let facts = Facts::of(timetable);
+    let mut refusals = Vec::new();
+    let in_use = plan(&facts, &answer.plan, &mut refusals);
+    let floor = floor(&facts, &answer.floor, &mut refusals);
+    let unplaced_floor = violations(&facts, &answer.violations, &mut refusals);
+    if !refusals.is_empty() {
+        return Err(refusals);
+    }
+    let weights = answer
+        .plan
+        .unplaced
+        .iter()
+        .filter_map(|unplaced| facts.piece(&unplaced.piece));
+    Ok(Receipt {
+        in_use,
+        floor,
+        unplaced: answer.plan.unplaced.len(),
+        unplaced_weight: weights.map(|piece| u64::from(piece.request.weight)).sum(),
+        unplaced_floor,
+        available: timetable.resources().all.len(),
+    })
+}
+
+/// Checks a plan alone and counts the distinct resources in it.
+///
+/// # Errors
+/// Every reason to refuse it.
+pub fn check_plan(timetable: &Timetable, claimed: &Plan) -> Result<usize, Vec<Refusal>> {
+    let mut refusals = Vec::new();
+    let in_use = plan(&Facts::of(timetable), claimed, &mut refusals);
+    if refusals.is_empty() {
+        Ok(in_use)
+    } else {
+        Err(refusals)
+    }
+}
+
+/// Checks a lower bound alone and gives its value.
+///
+/// # Errors
+/// Every reason to refuse it.
+pub fn check_floor(timetable: &Timetable, claimed: &FloorProof) -> Result<usize, Vec<Refusal>> {
+    let mut refusals = Vec::new();
+    let value = floor(&Facts::of(timetable), claimed, &mut refusals);
+    if refusals.is_empty() {
+        Ok(value)
+    } else {
+        Err(refusals)
+    }
+}
+
+/// Checks Hall violations alone and gives the least weight they leave unplaced.
+///
+/// # Errors
+/// Every reason to refuse one.
+pub fn check_violations(
+    timetable: &Timetable,
+    claimed: &[HallViolation],
+) -> Result<u64, Vec<Refusal>> {
+    let mut refusals = Vec::new();
+    let least = violations(&Facts::of(timetable), claimed, &mut refusals);
+    if refusals.is_empty() {
+        Ok(least)
+    } else {
+        Err(refusals)
+    }
+}
+
+/// The timetable, laid out for looking things up.
+struct Facts<'a> {
+    timetable: &'a Timetable,
+    all: Vec<Piece>,
+    places: HashMap<Arc<str>, usize>,
+}
+
+impl<'a> Facts<'a> {
+    fn of(timetable: &'a Timetable) -> Facts<'a> {
+        let all = timetable.pieces();
+        let places = all
+            .iter()
+            .enumerate()
+            .map(|(at, piece)| (Arc::clone(&piece.id), at))
+            .collect();
+        Facts {
+            timetable,
+            all,
+            places,
+        }
+    }
+
+    fn piece(&self, id: &str) -> Option<&Piece> {
+        self.places.get(id).map(|at| &self.all[*at])
+    }
+
+    fn counted(&self, id: &Arc<str>) -> Result<&Piece, Refusal> {
+        self.piece(id)
+            .filter(|piece| !piece.withdrawn)
+            .ok_or_else(|| Refusal::BoundCounts(Arc::clone(id)))
+    }
+
+    /// Seconds before and after that the piece keeps free on the resource.
+    fn buffers(piece: &Piece, resource: &Resource) -> (i64, i64) {
+        let request = &piece.request;
+        (
+            request.setup.map_or(resource.setup, |own| own),
+            request.turnaround.map_or(resource.turnaround, |own| own),
+        )
+    }
+
+    fn occupied(piece: &Piece, resource: &Resource) -> Span {
+        let (before, after) = Facts::buffers(piece, resource);
+        Span {
+            start: piece.span.start - before,
+            end: piece.span.end + after,
+        }
+    }
+
+    /// Why the resource may not take the piece, if it may not.
+    fn against(piece: &Piece, resource: &Resource) -> Option<&'static str> {
+        let request = &piece.request;
+        let here = |name: &Arc<str>| *name == resource.id || Some(name) == resource.kind.as_ref();
+        if piece.pin.as_ref().is_some_and(|pin| *pin != resource.id) {
+            return Some("it is pinned elsewhere");
+        }
+        if resource
+            .seats
+            .is_some_and(|seats| piece.size.unwrap_or(0) > seats)
+        {
+            return Some("it is too small");
+        }
+        if request
+            .needs
+            .iter()
+            .any(|need| !resource.offers.contains(need))
+        {
+            return Some("it lacks something needed");
+        }
+        if !request.only.is_empty() && !request.only.iter().any(here) {
+            return Some("it is not among those allowed");
+        }
+        if request.never.iter().any(here) {
+            return Some("it is ruled out");
+        }
+        let span = Facts::occupied(piece, resource);
+        if resource
+            .hours
+            .closed()
+            .iter()
+            .any(|closure| closure.span.overlaps(span))
+        {
+            return Some("it is closed then");
+        }
+        if !resource.hours.open_through(span) {
+            return Some("it is not open then");
+        }
+        None
+    }
+
+    /// The piece's span with its least buffers over the resources it may use, and those
+    /// resources' places in the list.
+    fn least(&self, piece: &Piece) -> (Span, Vec<usize>) {
+        let resources = &self.timetable.resources().all;
+        let usable: Vec<usize> = match &piece.pin {
+            Some(pin) => self
+                .timetable
+                .resources()
+                .position(pin)
+                .into_iter()
+                .collect(),
+            None => (0..resources.len()).collect(),
+        };
+        let usable: Vec<usize> = usable
+            .into_iter()
+            .filter(|at| Facts::against(piece, &resources[*at]).is_none())
+            .collect();
+        let settings = &self.timetable.settings;
+        let buffers = usable
+            .iter()
+            .map(|at| Facts::buffers(piece, &resources[*at]));
+        let least = buffers
+            .reduce(|a, b| (a.0.min(b.0), a.1.min(b.1)))
+            .unwrap_or((
+                piece.request.setup.unwrap_or(settings.setup),
+                piece.request.turnaround.unwrap_or(settings.turnaround),
+            ));
+        (piece.span.widened(least.0, least.1), usable)
+    }
+}
+
+fn plan(facts: &Facts<'_>, plan: &Plan, refusals: &mut Vec<Refusal>) -> usize {
+    let resources = facts.timetable.resources();
+    let mut seen: HashSet<&str> = HashSet::with_capacity(facts.all.len());
+    let mut rows: Vec<Vec<(Span, &Arc<str>)>> = vec![Vec::new(); resources.all.len()];
+    let named = plan.placements.iter().map(|placement| &placement.piece);
+    for id in named.chain(plan.unplaced.iter().map(|unplaced| &unplaced.piece)) {
+        match facts.piece(id) {
+            None => refusals.push(Refusal::UnknownPiece(Arc::clone(id))),
+            Some(piece) if piece.withdrawn => refusals.push(Refusal::Withdrawn(Arc::clone(id))),
+            Some(_) => {}
+        }
+        if !seen.insert(id) {
+            refusals.push(Refusal::Twice(Arc::clone(id)));
+        }
+    }
+    for placement in &plan.placements {
+        let Some(piece) = facts.piece(&placement.piece) else {
+            continue;
+        };
+        let Some(at) = resources.position(&placement.resource) else {
+            refusals.push(Refusal::UnknownResource {
+                piece: Arc::clone(&piece.id),
+                resource: Arc::clone(&placement.resource),
+            });
+            continue;
+        };
+        if placement.span != piece.span {
+            refusals.push(Refusal::OtherTime(Arc::clone(&piece.id)));
+        }
+        if let Some(because) = Facts::against(piece, &resources.all[at]) {
+            refusals.push(Refusal::Unfit {
+                piece: Arc::clone(&piece.id),
+                resource: Arc::clone(&placement.resource),
+                because,
+            });
+        }
+        rows[at].push((Facts::occupied(piece, &resources.all[at]), &placement.piece));
+    }
+    let mut in_use = 0;
+    for (row, resource) in rows.iter_mut().zip(&resources.all) {
+        in_use += usize::from(!row.is_empty());
+        row.sort_unstable();
+        // The span that reaches furthest so far: a long one can overlap more than the next.
+        let mut furthest: Option<(Span, &Arc<str>)> = None;
+        for (span, piece) in row.iter() {
+            if let Some((_, first)) = furthest.filter(|(before, _)| before.end > span.start) {
+                refusals.push(Refusal::DoubleBooked {
+                    resource: Arc::clone(&resource.id),
+                    first: Arc::clone(first),
+                    second: Arc::clone(piece),
+                });
+            }
+            if furthest.is_none_or(|(before, _)| before.end < span.end) {
+                furthest = Some((*span, piece));
+            }
+        }
+    }
+    for piece in facts.all.iter().filter(|piece| !piece.withdrawn) {
+        if !seen.contains(&*piece.id) {
+            refusals.push(Refusal::Forgotten(Arc::clone(&piece.id)));
+        }
+    }
+    in_use
+}
+
+/// The pieces a bound names, once each, none unknown or withdrawn.
+fn named<'a>(
+    facts: &'a Facts<'_>,
+    ids: &[Arc<str>],
+    refusals: &mut Vec<Refusal>,
+) -> Vec<&'a Piece> {
+    let mut seen = HashSet::new();
+    let mut pieces = Vec::with_capacity(ids.len());
+    for id in ids {
+        if !seen.insert(id) {
+            refusals.push(Refusal::BoundTwice(Arc::clone(id)));
+        }
+        match facts.counted(id) {
+            Ok(piece) => pieces.push(piece),
+            Err(refusal) => refusals.push(refusal),
+        }
+    }
+    pieces
+}
+
+fn floor(facts: &Facts<'_>, floor: &FloorProof, refusals: &mut Vec<Refusal>) -> usize {
+    match floor {
+        FloorProof::Clique { at, pieces } => {
+            for piece in named(facts, pieces, refusals) {
+                running(facts, piece, *at, refusals);
+            }
+        }
+        FloorProof::Incompatible { pieces } => {
+            let members: Vec<(&Piece, Vec<usize>)> = named(facts, pieces, refusals)
+                .into_iter()
+                .map(|piece| (piece, facts.least(piece).1))
+                .collect();
+            for (at, (first, one)) in members.iter().enumerate() {
+                for (second, two) in &members[..at] {
+                    apart(facts, (first, one), (second, two), refusals);
+                }
+            }
+        }
+    }
+    floor.value()
+}
+
+/// Refuses when some resource could take both pieces.
+fn apart(
+    facts: &Facts<'_>,
+    (first, one): (&Piece, &[usize]),
+    (second, two): (&Piece, &[usize]),
+    refusals: &mut Vec<Refusal>,
+) {
+    let all = &facts.timetable.resources().all;
+    let both = one
+        .iter()
+        .filter(|at| two.binary_search(at).is_ok())
+        .find(|at| {
+            let resource = &all[**at];
+            !Facts::occupied(first, resource).overlaps(Facts::occupied(second, resource))
+        });
+    if let Some(at) = both {
+        refusals.push(Refusal::CanShare {
+            first: Arc::clone(&first.id),
+            second: Arc::clone(&second.id),
+            resource: Arc::clone(&all[*at].id),
+        });
+    }
+}
+
+fn running(
+    facts: &Facts<'_>,
+    piece: &Piece,
+    at: Instant,
+    refusals: &mut Vec<Refusal>,
+) -> Vec<usize> {
+    let (span, usable) = facts.least(piece);
+    if !span.contains(at) {
+        refusals.push(Refusal::NotRunning(Arc::clone(&piece.id)));
+    }
+    usable
+}
+
+fn violations(facts: &Facts<'_>, claimed: &[HallViolation], refusals: &mut Vec<Refusal>) -> u64 {
+    let resources = facts.timetable.resources();
+    let mut seen: HashSet<&Arc<str>> = HashSet::new();
+    let mut least = 0;
+    for violation in claimed {
+        let stated: HashSet<&str> = violation.resources.iter().map(|id| &**id).collect();
+        let mut weights = Vec::new();
+        for piece in named(facts, &violation.pieces, refusals) {
+            weights.push(u64::from(piece.request.weight));
+            for at in running(facts, piece, violation.at, refusals) {
+                if !stated.contains(&*resources.all[at].id) {
+                    refusals.push(Refusal::LeftOut {
+                        piece: Arc::clone(&piece.id),
+                        resource: Arc::clone(&resources.all[at].id),
+                    });
+                }
+            }
+        }
+        for id in &violation.pieces {
+            if !seen.insert(id) {
+                refusals.push(Refusal::BoundTwice(Arc::clone(id)));
+            }
+        }
+        if weights.len() <= stated.len() {
+            refusals.push(Refusal::NoShortage);
+            continue;
+        }
+        weights.sort_unstable();
+        least += weights[..weights.len() - stated.len()].iter().sum::<u64>();
+    }
+    least
+}

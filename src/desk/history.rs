@@ -1,0 +1,76 @@
+//! Steps that were made, and those that were taken back.
+
+use crate::claim::Plan;
+use crate::document::Patch;
+use crate::edit::Edit;
+use crate::timetable::Timetable;
+use std::sync::Arc;
+
+/// One undoable step: the edits it consists of, and the states around it.
+#[derive(Clone, Debug)]
+pub struct Step {
+    /// What was done.
+    pub edits: Vec<Edit>,
+    pub(super) before: Timetable,
+    pub(super) after: Timetable,
+    pub(super) patches: Vec<Patch>,
+    /// The plan that stood before it: undoing brings that back too.
+    pub(super) reference: Option<Arc<Plan>>,
+}
+
+/// A line of steps with a position in it.
+#[derive(Debug, Default)]
+pub(super) struct History {
+    steps: Vec<Step>,
+    at: usize,
+    /// The position whose state is in the file; `None` when no position leads back to it.
+    saved: Option<usize>,
+    ever: bool,
+}
+
+impl History {
+    pub(super) fn push(&mut self, step: Step) {
+        if self.saved_at().is_some_and(|saved| saved > self.at) {
+            (self.saved, self.ever) = (None, true);
+        }
+        self.steps.truncate(self.at);
+        self.steps.push(step);
+        self.at += 1;
+    }
+
+    pub(super) fn back(&mut self) -> Option<&Step> {
+        self.at = self.at.checked_sub(1)?;
+        self.steps.get(self.at)
+    }
+
+    pub(super) fn forward(&mut self) -> Option<&Step> {
+        let step = self.steps.get(self.at)?;
+        self.at += 1;
+        Some(step)
+    }
+
+    pub(super) fn saved(&mut self) {
+        (self.saved, self.ever) = (Some(self.at), true);
+    }
+
+    /// The position that the file shows; the beginning as long as nothing was ever saved.
+    fn saved_at(&self) -> Option<usize> {
+        if self.ever { self.saved } else { Some(0) }
+    }
+
+    /// Steps between the file and now.
+    pub(super) fn unsaved(&self) -> usize {
+        self.saved_at()
+            .map_or(self.at, |saved| saved.abs_diff(self.at))
+    }
+
+    /// The steps made since the file was saved (all of them when that point is gone).
+    pub(super) fn since_saved(&self) -> impl Iterator<Item = &Step> {
+        let from = self.saved_at().unwrap_or(0).min(self.at);
+        self.steps[from..self.at].iter()
+    }
+
+    pub(super) fn made(&self) -> &[Step] {
+        &self.steps[..self.at]
+    }
+}

@@ -1,0 +1,404 @@
+//! The open document: the timetable as it stands, its history, and the answer that goes
+//! with it. Solving happens on a thread of its own; [`settle`] is the only door through
+//! which an answer becomes showable.
+//!
+//! Imports everything below `words`.
+
+mod history;
+mod settle;
+mod solver;
+
+pub use history::Step;
+pub use settle::{Settled, Survey, settle};
+pub use solver::{Event, Job, Solver};
+
+use crate::claim::Plan;
+use crate::clock::{Instant, Zone};
+use crate::document::{self, Document, Mistake, Mistakes, PlanFile, State, issued_path, plan_path};
+use crate::edit::{self, Change, Edit, Refused};
+use crate::store;
+use crate::timetable::Timetable;
+use crate::words;
+use std::collections::HashMap;
+use std::path::{Path, PathBuf};
+use std::sync::Arc;
+use thiserror::Error;
+
+/// Why a file could not be opened or saved.
+#[derive(Debug, Error)]
+pub enum Trouble {
+    /// The system refused.
+    #[error("{path}: {error}")]
+    Io {
+        /// The file.
+        path: String,
+        /// What it said.
+        error: std::io::Error,
+    },
+    /// It is no timetable.
+    #[error("{0}")]
+    Mistakes(Box<Mistakes>),
+    /// Somebody else wrote it since it was read.
+    #[error(
+        "{0} was changed by someone else since it was opened; save under another name with :save NAME.toml"
+    )]
+    Changed(String),
+}
+
+impl Trouble {
+    fn io(path: &Path, error: std::io::Error) -> Trouble {
+        Trouble::Io {
+            path: crate::text::clean(&path.display().to_string()).into_owned(),
+            error,
+        }
+    }
+}
+
+/// An open timetable.
+#[derive(Debug)]
+pub struct Desk {
+    /// Where it is saved.
+    pub path: PathBuf,
+    /// Doubtful places, noted on reading.
+    pub warnings: Vec<Mistake>,
+    document: Document,
+    timetable: Timetable,
+    opened: Timetable,
+    history: history::History,
+    /// Hash of the file's bytes when last read or written.
+    on_disk: String,
+    /// The text of those bytes: comparing is quicker than hashing once a frame.
+    saved_text: String,
+    /// The plan that a new answer stays near to.
+    reference: Option<Arc<Plan>>,
+    /// Where pieces that have begun stay.
+    begun: Arc<HashMap<Arc<str>, Arc<str>>>,
+    issued: Option<PlanFile>,
+    generation: u64,
+    settled: Option<Arc<Settled>>,
+    /// The generation whose plan file is still to be written.
+    plan_due: Option<u64>,
+}
+
+impl Desk {
+    /// Opens a file, with the plan files beside it when they can be read.
+    ///
+    /// # Errors
+    /// [`Trouble`], with every mistake in the file.
+    pub fn open(path: &Path) -> Result<Desk, Trouble> {
+        let bytes = store::read_bounded(path, document::MOST_BYTES)
+            .map_err(|error| Trouble::io(path, error))?;
+        let name = path.display().to_string();
+        let read = document::read(&name, &bytes).map_err(Trouble::Mistakes)?;
+        let plan_file = |path: PathBuf| {
+            let bytes = store::read_bounded(&path, document::MOST_BYTES).ok()?;
+            PlanFile::read(
+                &path.display().to_string(),
+                std::str::from_utf8(&bytes).ok()?,
+            )
+            .ok()
+        };
+        let issued = plan_file(issued_path(path));
+        let planned = plan_file(plan_path(path));
+        let known = planned
+            .as_ref()
+            .or(issued.as_ref())
+            .map(|file| file.plan.clone());
+        let mut begun = HashMap::new();
+        for file in planned.iter().chain(issued.as_ref()) {
+            for placement in &file.plan.placements {
+                begun.insert(
+                    Arc::clone(&placement.piece),
+                    Arc::clone(&placement.resource),
+                );
+            }
+        }
+        Ok(Desk {
+            path: path.to_path_buf(),
+            warnings: read.warnings,
+            on_disk: document::hash(&bytes),
+            saved_text: read.document.text().into(),
+            document: read.document,
+            opened: read.timetable.clone(),
+            timetable: read.timetable,
+            history: history::History::default(),
+            reference: known.map(Arc::new),
+            begun: Arc::new(begun),
+            issued,
+            generation: 0,
+            settled: None,
+            plan_due: None,
+        })
+    }
+
+    /// The timetable as it stands.
+    pub fn timetable(&self) -> &Timetable {
+        &self.timetable
+    }
+
+    /// The timetable as it was opened.
+    pub fn opened(&self) -> &Timetable {
+        &self.opened
+    }
+
+    /// The text that belongs to it.
+    pub fn document(&self) -> &Document {
+        &self.document
+    }
+
+    /// The last settled answer; it may still belong to an earlier state.
+    pub fn settled(&self) -> Option<&Arc<Settled>> {
+        self.settled.as_ref()
+    }
+
+    /// Whether the settled answer belongs to the timetable as it stands.
+    pub fn is_current(&self) -> bool {
+        self.settled
+            .as_ref()
+            .is_some_and(|settled| settled.generation == self.generation)
+    }
+
+    /// Steps that are not in the file; 0 when its bytes are the ones saved.
+    pub fn unsaved(&self) -> usize {
+        if self.document.text() == self.saved_text {
+            0
+        } else {
+            self.history.unsaved().max(1)
+        }
+    }
+
+    /// The edits since the file was last saved, as lines.
+    pub fn unsaved_lines(&self) -> Vec<String> {
+        let zone = self.timetable.settings.zone;
+        self.history
+            .since_saved()
+            .flat_map(|step| &step.edits)
+            .map(|edit| edit::print(edit, zone))
+            .collect()
+    }
+
+    /// The work for the solver as things stand.
+    pub fn job(&self) -> Job {
+        self.job_for(self.timetable.clone(), self.generation)
+    }
+
+    /// The work for a state that is only looked at.
+    ///
+    /// # Errors
+    /// [`Refused`] when the edits cannot be made.
+    pub fn preview(&self, edits: &[Edit], generation: u64) -> Result<(Timetable, Job), Refused> {
+        let mut timetable = self.timetable.clone();
+        for edit in edits {
+            edit::apply(&mut timetable, edit)?;
+        }
+        let job = self.job_for(timetable.clone(), generation);
+        Ok((timetable, job))
+    }
+
+    fn job_for(&self, timetable: Timetable, generation: u64) -> Job {
+        Job {
+            generation,
+            timetable,
+            reference: self.reference.clone(),
+            begun: Arc::clone(&self.begun),
+        }
+    }
+
+    /// Takes a settled answer in, if it belongs to the present state; says whether it did.
+    /// When a save was waiting for it, the plan file is due to be written.
+    pub fn receive(&mut self, settled: Arc<Settled>) -> bool {
+        if settled.generation != self.generation {
+            return false;
+        }
+        self.reference = Some(Arc::new(settled.answer.plan.clone()));
+        self.settled = Some(settled);
+        true
+    }
+
+    /// Makes edits as one step.
+    ///
+    /// # Errors
+    /// [`Refused`]; nothing is changed then.
+    pub fn make(&mut self, edits: Vec<Edit>) -> Result<(), Refused> {
+        match edits.first().map(|edit| &edit.what) {
+            None => return Ok(()),
+            Some(Change::Undo) => return self.undo(),
+            Some(Change::Redo) => return self.redo(),
+            Some(_) => {}
+        }
+        let before = self.timetable.clone();
+        let mut edits_made = Vec::new();
+        for edit in edits {
+            edits_made.extend(self.resolve(edit)?);
+        }
+        let mut timetable = before.clone();
+        let mut document = self.document.clone();
+        let mut patches = Vec::new();
+        for edit in &edits_made {
+            let earlier = timetable.clone();
+            let touched = edit::apply(&mut timetable, edit)?;
+            patches.extend(document.follow(&earlier, &timetable, &touched));
+        }
+        self.timetable = timetable;
+        self.document = document;
+        self.history.push(Step {
+            edits: edits_made,
+            before,
+            after: self.timetable.clone(),
+            patches,
+            reference: self.reference.clone(),
+        });
+        self.generation += 1;
+        Ok(())
+    }
+
+    /// Turns a swap into the two pins it means.
+    fn resolve(&self, edit: Edit) -> Result<Vec<Edit>, Refused> {
+        let Change::Swap(first, second) = &edit.what else {
+            return Ok(vec![edit]);
+        };
+        if first == second {
+            return Err(Refused::Itself(Arc::clone(first)));
+        }
+        let place = |piece: &Arc<str>| {
+            let pinned = self
+                .timetable
+                .request(piece)
+                .and_then(|request| request.pin.clone());
+            let planned = || {
+                let plan = self.reference.as_ref()?;
+                let placement = plan
+                    .placements
+                    .iter()
+                    .find(|placement| placement.piece == *piece)?;
+                Some(Arc::clone(&placement.resource))
+            };
+            pinned
+                .or_else(planned)
+                .ok_or_else(|| Refused::NoPlace(Arc::clone(piece)))
+        };
+        let (one, other) = (place(first)?, place(second)?);
+        let pin = |piece: &Arc<str>, on: Arc<str>| Edit {
+            what: Change::Pin {
+                piece: Arc::clone(piece),
+                on,
+            },
+            because: edit.because.clone(),
+        };
+        Ok(vec![pin(first, other), pin(second, one)])
+    }
+
+    /// Takes the last step back.
+    ///
+    /// # Errors
+    /// [`Refused::Nothing`] at the beginning.
+    pub fn undo(&mut self) -> Result<(), Refused> {
+        let step = self.history.back().ok_or(Refused::Nothing("undo"))?;
+        self.document.take_back(&step.patches);
+        self.timetable = step.before.clone();
+        self.reference = step.reference.clone();
+        self.generation += 1;
+        Ok(())
+    }
+
+    /// Does the step again that was taken back.
+    ///
+    /// # Errors
+    /// [`Refused::Nothing`] at the end.
+    pub fn redo(&mut self) -> Result<(), Refused> {
+        let step = self.history.forward().ok_or(Refused::Nothing("redo"))?;
+        self.document.repeat(&step.patches);
+        self.timetable = step.after.clone();
+        self.generation += 1;
+        Ok(())
+    }
+
+    /// Every step up to now, oldest first.
+    pub fn steps(&self) -> &[Step] {
+        self.history.made()
+    }
+
+    /// Reads a line of the edit language against the present state.
+    ///
+    /// # Errors
+    /// [`edit::Misread`], with the column.
+    pub fn parse(&self, line: &str, now: Instant) -> Result<Edit, edit::Misread> {
+        edit::parse(
+            line,
+            edit::Context {
+                timetable: &self.timetable,
+                now,
+            },
+        )
+    }
+
+    /// Saves, here or under another name. The plan file follows with the next settled
+    /// answer of this state, or at once when there is one.
+    ///
+    /// # Errors
+    /// [`Trouble`]; the edits are then still here.
+    pub fn save(&mut self, other: Option<&Path>, now: Instant) -> Result<(), Trouble> {
+        let path = other.unwrap_or(&self.path).to_path_buf();
+        if other.is_none()
+            && let Ok(bytes) = store::read_bounded(&path, document::MOST_BYTES)
+            && document::hash(&bytes) != self.on_disk
+        {
+            return Err(Trouble::Changed(
+                crate::text::clean(&path.display().to_string()).into_owned(),
+            ));
+        }
+        let bytes = self.document.bytes();
+        store::write_atomically(&path, &bytes).map_err(|error| Trouble::io(&path, error))?;
+        self.path = path;
+        self.on_disk = document::hash(&bytes);
+        self.saved_text = self.document.text().into();
+        self.history.saved();
+        self.plan_due = Some(self.generation);
+        self.write_plan(now)
+    }
+
+    /// Writes the plan file if one is due and its answer is here.
+    ///
+    /// # Errors
+    /// [`Trouble`] from the system.
+    pub fn write_plan(&mut self, now: Instant) -> Result<(), Trouble> {
+        if self.plan_due != Some(self.generation) || !self.is_current() {
+            return Ok(());
+        }
+        let Some(settled) = &self.settled else {
+            return Ok(());
+        };
+        let revision = self.issued.as_ref().map_or(0, |issued| issued.revision);
+        let file = PlanFile::of(
+            &settled.answer,
+            self.on_disk.clone(),
+            revision,
+            now,
+            settled.state(),
+        );
+        let text = file.print(self.zone(), &|unplaced| {
+            words::unplaced(&self.timetable, unplaced)
+        });
+        let path = plan_path(&self.path);
+        store::write_atomically(&path, text.as_bytes())
+            .map_err(|error| Trouble::io(&path, error))?;
+        // A better answer of the same state is written again when leaving or saving.
+        self.plan_due = None;
+        Ok(())
+    }
+
+    /// Whether a save still waits for its answer to write the plan file.
+    pub fn plan_is_due(&self) -> bool {
+        self.plan_due == Some(self.generation)
+    }
+
+    /// The zone of the timetable.
+    pub fn zone(&self) -> Zone {
+        self.timetable.settings.zone
+    }
+
+    /// The state of knowledge as plan files write it.
+    pub fn state(&self) -> Option<State> {
+        self.settled.as_ref().map(|settled| settled.state())
+    }
+}

@@ -1,0 +1,167 @@
+//! Solving on a thread of its own. A newer job supersedes a running one, so whoever types
+//! never waits.
+
+use super::settle::{Settled, Survey, settle};
+use crate::claim::{Answer, Plan};
+use crate::engine::{self, Budget, Flag, Problem, Reference, Stopper};
+use crate::timetable::Timetable;
+use std::collections::HashMap;
+use std::panic::{AssertUnwindSafe, catch_unwind};
+use std::sync::Arc;
+use std::sync::atomic::{AtomicU64, Ordering};
+use std::sync::mpsc::{Receiver, Sender, channel};
+use std::time::{Duration, Instant};
+
+/// After so long without an improvement the search rests: the machine is shared.
+const REST_AFTER: Duration = Duration::from_secs(60);
+
+/// A timetable to solve.
+#[derive(Clone, Debug)]
+pub struct Job {
+    /// Which state it is; answers carry it.
+    pub generation: u64,
+    /// The state.
+    pub timetable: Timetable,
+    /// The plan to stay near to.
+    pub reference: Option<Arc<Plan>>,
+    /// Where pieces that have begun stay.
+    pub begun: Arc<HashMap<Arc<str>, Arc<str>>>,
+}
+
+/// What the solver says.
+#[derive(Clone, Debug)]
+pub enum Event {
+    /// A (better) answer, checked.
+    Settled(Arc<Settled>),
+    /// No more will come for that state.
+    Rested(u64),
+    /// A fault of the program: an answer did not pass audit, or the search broke.
+    Fault(String),
+}
+
+impl Job {
+    /// Solves on this thread: every checked answer goes to `found`, the last is returned.
+    ///
+    /// # Errors
+    /// A description of the program's fault when an answer does not pass audit.
+    pub fn run(
+        self,
+        budget: Budget,
+        stop: &(dyn Stopper + Sync),
+        found: &mut dyn FnMut(&Arc<Settled>),
+    ) -> Result<Arc<Settled>, String> {
+        let began = Instant::now();
+        let pieces = self.timetable.pieces();
+        let problem = Problem::new(&self.timetable, &pieces, &self.begun);
+        let reference = self
+            .reference
+            .as_ref()
+            .map(|plan| Reference::of(&problem, plan));
+        let survey = Arc::new(Survey::of(self.timetable, pieces, &problem));
+        let mut last: Result<Option<Arc<Settled>>, String> = Ok(None);
+        let mut check = |answer: &Answer| {
+            if last.is_err() {
+                return;
+            }
+            let timed = Answer {
+                seconds: began.elapsed().as_secs_f64(),
+                ..answer.clone()
+            };
+            match settle(&survey, timed, self.generation) {
+                Ok(settled) => {
+                    let settled = Arc::new(settled);
+                    found(&settled);
+                    last = Ok(Some(settled));
+                }
+                Err(refusals) => {
+                    let said: Vec<String> =
+                        refusals.iter().take(3).map(ToString::to_string).collect();
+                    last = Err(format!("an answer did not pass audit: {}", said.join("; ")));
+                }
+            }
+        };
+        engine::solve(&problem, reference.as_ref(), budget, stop, &mut check);
+        last?.ok_or_else(|| "the search gave no answer".into())
+    }
+}
+
+/// Stops when told to, or when nothing has improved for a while.
+struct Calm {
+    told: Flag,
+    began: Instant,
+    /// Milliseconds after the beginning of the last improvement.
+    improved: AtomicU64,
+}
+
+impl Stopper for Calm {
+    fn stop(&self) -> bool {
+        let improved = Duration::from_millis(self.improved.load(Ordering::Relaxed));
+        self.told.stop() || self.began.elapsed() > improved + REST_AFTER
+    }
+}
+
+/// The solver's end for the desk's owner.
+pub struct Solver {
+    jobs: Sender<(Job, Flag)>,
+    running: Flag,
+}
+
+impl Solver {
+    /// Starts the thread; `tell` is called on it with every event.
+    pub fn start(tell: impl Fn(Event) + Send + 'static) -> Solver {
+        let (jobs, waiting) = channel();
+        std::thread::spawn(move || work(&waiting, &tell));
+        Solver {
+            jobs,
+            running: Flag::default(),
+        }
+    }
+
+    /// Gives it a state to solve; whatever runs is stopped.
+    pub fn submit(&mut self, job: Job) {
+        self.running.raise();
+        self.running = Flag::default();
+        // The thread only ends with the program.
+        let _ = self.jobs.send((job, self.running.clone()));
+    }
+}
+
+impl Drop for Solver {
+    fn drop(&mut self) {
+        self.running.raise();
+    }
+}
+
+fn work(waiting: &Receiver<(Job, Flag)>, tell: &dyn Fn(Event)) {
+    while let Ok(mut next) = waiting.recv() {
+        // Only the newest matters.
+        while let Ok(newer) = waiting.try_recv() {
+            next = newer;
+        }
+        let (job, told) = next;
+        let generation = job.generation;
+        let calm = Calm {
+            told,
+            began: Instant::now(),
+            improved: AtomicU64::new(0),
+        };
+        let budget = Budget {
+            threads: 2,
+            ..Budget::default()
+        };
+        let result = catch_unwind(AssertUnwindSafe(|| {
+            job.run(budget, &calm, &mut |settled| {
+                calm.improved
+                    .store(calm.began.elapsed().as_millis() as u64, Ordering::Relaxed);
+                tell(Event::Settled(Arc::clone(settled)));
+            })
+        }));
+        match result {
+            Ok(Ok(_)) => tell(Event::Rested(generation)),
+            Ok(Err(fault)) => tell(Event::Fault(fault)),
+            Err(_) => tell(Event::Fault(
+                "the search broke; the next edit starts it again".into(),
+            )),
+        }
+    }
+}

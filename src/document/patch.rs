@@ -1,0 +1,408 @@
+//! Byte patches: the text follows an edit by changing only the values concerned, so that
+//! comments, order and layout stay as they are and undo brings the bytes back.
+
+use super::Document;
+use crate::clock::{Instant, Resolved, Zone, print_length};
+use crate::edit::Touched;
+use crate::timetable::{Closure, Count, Kind, Named, Request, TimeStated, Timetable};
+use std::ops::Range;
+use std::sync::Arc;
+use toml_edit::{DocumentMut, InlineTable, Item, TableLike, Value};
+
+/// One change of the text, reversible.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct Patch {
+    at: usize,
+    old: String,
+    new: String,
+    table: Touched,
+    /// Whether the patch adds the table (with its place inside `new`) or takes it away.
+    adds: Option<Range<usize>>,
+    removes: Option<Range<usize>>,
+}
+
+impl Patch {
+    /// The patch that takes this one back.
+    fn inverse(&self) -> Patch {
+        Patch {
+            at: self.at,
+            old: self.new.clone(),
+            new: self.old.clone(),
+            table: self.table.clone(),
+            adds: self.removes.clone(),
+            removes: self.adds.clone(),
+        }
+    }
+}
+
+impl Document {
+    /// Brings the text in line with a timetable in which `touched` has changed; the patches
+    /// have been applied and can be taken back in reverse order.
+    pub fn follow(
+        &mut self,
+        before: &Timetable,
+        after: &Timetable,
+        touched: &[Touched],
+    ) -> Vec<Patch> {
+        let zone = after.settings.zone;
+        let mut patches = Vec::new();
+        for table in touched {
+            match table {
+                Touched::Request(at) => {
+                    for (key, value) in
+                        request_changes(&before.requests[*at], &after.requests[*at], zone)
+                    {
+                        patches.extend(self.set(table, "request", key, value.map(Set::Whole)));
+                    }
+                }
+                Touched::Named(at) => {
+                    let now = &after.named[*at];
+                    let Some(then) = before.named.get(*at) else {
+                        patches.push(self.add(table, "resource", &named_keys(now, zone)));
+                        continue;
+                    };
+                    let closed = |named: &Named| named.common.closed.clone().unwrap_or_default();
+                    let (was, is) = (closed(then), closed(now));
+                    let added = is.get(was.len()..).filter(|_| is.starts_with(&was));
+                    let value = match added {
+                        Some([one]) if !was.is_empty() => Set::Append(closure_value(one, zone)),
+                        _ => Set::Whole(closures_value(&is, zone)),
+                    };
+                    patches.extend(self.set(table, "resource", "closed", Some(value)));
+                }
+                Touched::Kind(at) => {
+                    patches.push(self.add(table, "kind", &kind_keys(&after.kinds[*at])))
+                }
+            }
+        }
+        patches
+    }
+
+    /// Takes patches back, last first.
+    pub fn take_back(&mut self, patches: &[Patch]) {
+        for patch in patches.iter().rev() {
+            self.apply(&patch.inverse());
+        }
+    }
+
+    /// Does patches again that were taken back.
+    pub fn repeat(&mut self, patches: &[Patch]) {
+        for patch in patches {
+            self.apply(patch);
+        }
+    }
+
+    fn apply(&mut self, patch: &Patch) {
+        self.text
+            .replace_range(patch.at..patch.at + patch.old.len(), &patch.new);
+        let end = patch.at + patch.old.len();
+        let moved = |byte: usize| byte + patch.new.len() - patch.old.len();
+        let (places, own) = self.places(&patch.table);
+        if patch.removes.is_some() {
+            places.truncate(own);
+        } else if patch.adds.is_none() {
+            places[own].end = moved(places[own].end);
+        }
+        let changed = patch.table.clone();
+        for (table, places) in [
+            (Touched::Request(usize::MAX), &mut self.requests),
+            (Touched::Named(usize::MAX), &mut self.named),
+            (Touched::Kind(usize::MAX), &mut self.kinds),
+        ] {
+            let same = std::mem::discriminant(&table) == std::mem::discriminant(&changed);
+            for (at, place) in places.iter_mut().enumerate() {
+                let own = same && at == own && patch.adds.is_none();
+                if !own && place.start >= end {
+                    *place = moved(place.start)..moved(place.end);
+                }
+            }
+        }
+        if let Some(place) = &patch.adds {
+            let place = patch.at + place.start..patch.at + place.end;
+            self.places(&patch.table).0.push(place);
+        }
+    }
+
+    /// The newline that the file uses.
+    fn newline(&self) -> &'static str {
+        if self.text.contains("\r\n") {
+            "\r\n"
+        } else {
+            "\n"
+        }
+    }
+
+    /// Sets or (with `None`) removes a key of a table.
+    fn set(&mut self, table: &Touched, name: &str, key: &str, value: Option<Set>) -> Option<Patch> {
+        let (places, at) = self.places(table);
+        let place = places[at].clone();
+        let fragment = &self.text[place.clone()];
+        let change = change_in(fragment, name, key, value, self.newline())?;
+        let patch = Patch {
+            at: place.start + change.0.start,
+            old: fragment[change.0].into(),
+            new: change.1,
+            table: table.clone(),
+            adds: None,
+            removes: None,
+        };
+        self.apply(&patch);
+        Some(patch)
+    }
+
+    /// Adds a table at the end of the file, or of the list when that is written in brackets.
+    fn add(&mut self, table: &Touched, name: &str, keys: &[(&str, Value)]) -> Patch {
+        let newline = self.newline();
+        let (places, _) = self.places(table);
+        let inline = places
+            .last()
+            .cloned()
+            .filter(|place| self.text[place.clone()].starts_with('{'));
+        let (at, new, place) = match inline {
+            Some(last) => {
+                let keys: Vec<String> = keys
+                    .iter()
+                    .map(|(key, value)| format!("{key} = {value}"))
+                    .collect();
+                let table = format!("{{ {} }}", keys.join(", "));
+                (last.end, format!(", {table}"), 2..2 + table.len())
+            }
+            None => {
+                let gap = match &*self.text {
+                    text if text.is_empty() || text.ends_with("\n\n") => String::new(),
+                    text if text.ends_with('\n') => newline.into(),
+                    _ => newline.repeat(2),
+                };
+                let lines: String = keys
+                    .iter()
+                    .map(|(key, value)| format!("{newline}{key} = {value}"))
+                    .collect();
+                let table = format!("[[{name}]]{lines}");
+                let place = gap.len()..gap.len() + table.len();
+                (self.text.len(), format!("{gap}{table}{newline}"), place)
+            }
+        };
+        let patch = Patch {
+            at,
+            old: String::new(),
+            new,
+            table: table.clone(),
+            adds: Some(place),
+            removes: None,
+        };
+        self.apply(&patch);
+        patch
+    }
+}
+
+/// What becomes of a key.
+enum Set {
+    Whole(Value),
+    /// One more element of an array.
+    Append(Value),
+}
+
+/// The bytes of a table's text to replace, and by what; `None` when there is nothing to do.
+fn change_in(
+    fragment: &str,
+    name: &str,
+    key: &str,
+    value: Option<Set>,
+    newline: &str,
+) -> Option<(Range<usize>, String)> {
+    let braces = fragment.starts_with('{');
+    let lead = if braces { "x = " } else { "" };
+    let source = format!("{lead}{fragment}");
+    let parsed = toml_edit::Document::parse(source.as_str()).ok()?;
+    let table: &dyn TableLike = if braces {
+        parsed.get("x")?.as_inline_table()?
+    } else {
+        parsed.get(name)?.as_array_of_tables()?.get(0)?
+    };
+    let here = |span: Range<usize>| span.start - lead.len()..span.end - lead.len();
+    match (table.get(key), value) {
+        (None, None) => None,
+        (Some(item), Some(set)) => {
+            let Some(span) = item.as_value().and_then(Value::span).map(here) else {
+                // Written as [[...]] tables: rare enough to let the library write it anew.
+                return Some((0..fragment.len(), rewritten(fragment, name, key, set)?));
+            };
+            Some(match set {
+                Set::Whole(value) => (span, value.to_string()),
+                Set::Append(value) => {
+                    let last = item.as_array()?.iter().last()?.span().map(here)?;
+                    (last.end..last.end, format!(", {value}"))
+                }
+            })
+        }
+        (None, Some(Set::Whole(value) | Set::Append(value))) => {
+            let line = format!("{key} = {value}");
+            if braces {
+                let last = table
+                    .iter()
+                    .filter_map(|(_, item)| item.span())
+                    .map(|span| here(span).end)
+                    .max();
+                let (at, text) = last.map_or((1, line.clone()), |end| (end, format!(", {line}")));
+                return Some((at..at, text));
+            }
+            // Before any table of its own below it, else after its last line.
+            let below = table.iter().filter(|(_, item)| item.as_value().is_none());
+            let end = below
+                .filter_map(|(_, item)| item.span())
+                .map(|span| span.start)
+                .min();
+            let at = end.map_or(fragment.len(), |below| fragment[..below].trim_end().len());
+            Some((at..at, format!("{newline}{line}")))
+        }
+        (Some(item), None) => {
+            let start = here(table.key(key)?.span()?).start;
+            let end = here(item.span()?).end;
+            Some((
+                if braces {
+                    with_comma(fragment, start..end)
+                } else {
+                    whole_lines(fragment, start..end)
+                },
+                String::new(),
+            ))
+        }
+    }
+}
+
+/// The lines of a key with the newline before them, as keys never stand on the header's line.
+fn whole_lines(fragment: &str, key: Range<usize>) -> Range<usize> {
+    let start = fragment[..key.start].rfind('\n').unwrap_or(0);
+    let start = if fragment[..start].ends_with('\r') {
+        start - 1
+    } else {
+        start
+    };
+    let end = fragment[key.end..]
+        .find('\n')
+        .map_or(fragment.len(), |newline| key.end + newline);
+    let end = if fragment[..end].ends_with('\r') {
+        end - 1
+    } else {
+        end
+    };
+    start..end
+}
+
+/// A key in braces with the comma that is then one too many.
+fn with_comma(fragment: &str, key: Range<usize>) -> Range<usize> {
+    let after = fragment[key.end..].trim_start();
+    if let Some(rest) = after.strip_prefix(',') {
+        let next = fragment.len() - rest.trim_start().len();
+        return key.start..next;
+    }
+    let before = fragment[..key.start].trim_end();
+    before
+        .strip_suffix(',')
+        .map_or(key.clone(), |kept| kept.len()..key.end)
+}
+
+fn rewritten(fragment: &str, name: &str, key: &str, set: Set) -> Option<String> {
+    let mut parsed: DocumentMut = fragment.parse().ok()?;
+    let table = parsed.get_mut(name)?.as_array_of_tables_mut()?.get_mut(0)?;
+    let mut array = toml_edit::Array::new();
+    match set {
+        Set::Whole(value) => {
+            return {
+                table.insert(key, Item::Value(value));
+                Some(parsed.to_string().trim_end().into())
+            };
+        }
+        Set::Append(value) => {
+            for entry in table.get(key)?.as_array_of_tables()?.iter() {
+                array.push(entry.clone().into_inline_table());
+            }
+            array.push(value);
+        }
+    }
+    table.insert(key, Item::Value(array.into()));
+    Some(parsed.to_string().trim_end().into())
+}
+
+/// A moment as it is written in the file: local time, with an offset where that is doubtful.
+fn moment_value(at: Instant, zone: Zone) -> Value {
+    let text = match zone.resolve(zone.civil(at)) {
+        Resolved::Twice { .. } => zone.rfc3339(at),
+        _ => zone.civil(at).format("%Y-%m-%dT%H:%M:%S").to_string(),
+    };
+    match text.parse::<toml_edit::Datetime>() {
+        Ok(written) => written.into(),
+        Err(_) => text.into(),
+    }
+}
+
+fn closure_value(closure: &Closure, zone: Zone) -> Value {
+    let mut table = InlineTable::new();
+    table.insert("from", moment_value(closure.span.start, zone));
+    table.insert("to", moment_value(closure.span.end, zone));
+    if let Some(because) = &closure.because {
+        table.insert("because", because.as_ref().into());
+    }
+    table.into()
+}
+
+fn closures_value(closures: &[Closure], zone: Zone) -> Value {
+    let values = closures.iter().map(|closure| closure_value(closure, zone));
+    Value::Array(values.collect())
+}
+
+/// The keys of a request that differ, with their new values.
+fn request_changes(
+    before: &Request,
+    after: &Request,
+    zone: Zone,
+) -> Vec<(&'static str, Option<Value>)> {
+    let mut changes: Vec<(&'static str, Option<Value>)> = Vec::new();
+    if before.start != after.start {
+        changes.push(("start", Some(moment_value(after.start, zone))));
+    }
+    let (was, is) = (before.span().end, after.span().end);
+    if after.stated == TimeStated::End && was != is {
+        changes.push(("end", Some(moment_value(is, zone))));
+    }
+    if after.stated == TimeStated::Length && before.length != after.length {
+        changes.push(("length", Some(print_length(after.length).into())));
+    }
+    if before.pin != after.pin {
+        changes.push((
+            "pin",
+            after.pin.as_ref().map(|pin| Value::from(pin.as_ref())),
+        ));
+    }
+    for (key, was, is) in [
+        ("fastened", before.fastened, after.fastened),
+        ("withdrawn", before.withdrawn, after.withdrawn),
+    ] {
+        if was != is {
+            changes.push((key, is.then(|| Value::from(true))));
+        }
+    }
+    changes
+}
+
+fn named_keys(named: &Named, zone: Zone) -> Vec<(&'static str, Value)> {
+    let text = |text: &Arc<str>| Value::from(text.as_ref());
+    let mut keys = vec![("id", text(&named.id))];
+    keys.extend(named.kind.as_ref().map(|kind| ("kind", text(kind))));
+    keys.extend(
+        named
+            .common
+            .closed
+            .as_ref()
+            .map(|closed| ("closed", closures_value(closed, zone))),
+    );
+    keys
+}
+
+fn kind_keys(kind: &Kind) -> Vec<(&'static str, Value)> {
+    let count = match kind.count {
+        Count::Of(count) => i64::from(count).into(),
+        Count::AsNeeded => "as needed".into(),
+    };
+    vec![("id", kind.id.as_ref().into()), ("count", count)]
+}

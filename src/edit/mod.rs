@@ -1,0 +1,82 @@
+//! The one edit language: a line of text per change, the same in the command line, in
+//! scripts and in what is kept. Printing then reading is the identity.
+//!
+//! Imports `clock`, `text` and `timetable`.
+
+mod apply;
+mod parse;
+mod print;
+
+pub use apply::{Refused, Touched, apply};
+pub use parse::{Context, Misread, parse};
+pub use print::print;
+
+use crate::clock::{Instant, Span};
+use std::sync::Arc;
+
+/// One change, absolute: nothing in it depends on when or where it is read again.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct Edit {
+    /// What is done.
+    pub what: Change,
+    /// The stated reason.
+    pub because: Option<Arc<str>>,
+}
+
+/// What can be done to a timetable.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub enum Change {
+    /// Start a piece elsewhere; its length stays.
+    Move {
+        /// Which.
+        piece: Arc<str>,
+        /// Its new start.
+        to: Instant,
+    },
+    /// Keep a piece on a resource.
+    Pin {
+        /// Which.
+        piece: Arc<str>,
+        /// Where.
+        on: Arc<str>,
+    },
+    /// Let it go to any again.
+    Unpin(Arc<str>),
+    /// Keep a piece at its start.
+    Fasten(Arc<str>),
+    /// Let it be moved again.
+    Loosen(Arc<str>),
+    /// Exchange two placements. The desk knows the placements and turns it into pins.
+    Swap(Arc<str>, Arc<str>),
+    /// Take a request out of the plan.
+    Withdraw(Arc<str>),
+    /// Put it back in.
+    Restore(Arc<str>),
+    /// Take a resource out for a while.
+    Close {
+        /// Which.
+        resource: Arc<str>,
+        /// Half-open.
+        span: Span,
+    },
+    /// Put it back in.
+    Reopen {
+        /// Which.
+        resource: Arc<str>,
+        /// Half-open.
+        span: Span,
+    },
+    /// Take the last step back.
+    Undo,
+    /// Do again what was taken back.
+    Redo,
+}
+
+impl From<Change> for Edit {
+    fn from(what: Change) -> Edit {
+        Edit {
+            what,
+            because: None,
+        }
+    }
+}

@@ -1,0 +1,97 @@
+//! Hall violations at a moment (Hall 1935): more pieces run than there are resources that
+//! any of them may use. Covers a piece without any possible resource, two overlapping pins,
+//! and a clique above the number of resources.
+
+use crate::claim::HallViolation;
+use crate::clock::Instant;
+use crate::engine::Problem;
+use std::collections::{BTreeMap, BTreeSet};
+use std::sync::Arc;
+
+/// Sets of choices beyond which only the smallest are looked at.
+const MOST_SETS: usize = 300;
+
+/// Violations that share no piece, found set of choices by set of choices, smallest first:
+/// for each, the pieces that may use nothing outside it are swept by time.
+pub(crate) fn disjoint(problem: &Problem) -> Vec<HallViolation> {
+    let mut sets: BTreeMap<(usize, &[u32]), Vec<usize>> = BTreeMap::new();
+    for item in 0..problem.items.len() {
+        let choices = problem.choices(item);
+        sets.entry((room(problem, choices), choices))
+            .or_default()
+            .push(item);
+    }
+    let everything: Vec<u32> = (0..problem.classes.len() as u32).collect();
+    sets.entry((problem.resources.len(), &everything))
+        .or_default();
+    let mut taken = vec![false; problem.items.len()];
+    let mut found = Vec::new();
+    let last = (problem.resources.len(), everything.as_slice());
+    let chosen = sets.keys().take(MOST_SETS).copied().chain([last]);
+    let mut seen = BTreeSet::new();
+    for (room, set) in chosen {
+        if !seen.insert((room, set)) {
+            continue;
+        }
+        let inside = sets
+            .iter()
+            .filter(|((_, choices), _)| subset(choices, set))
+            .flat_map(|(_, items)| items.iter().copied())
+            .filter(|item| !taken[*item]);
+        let mut inside: Vec<usize> = inside.collect();
+        inside.sort_unstable_by_key(|item| problem.items[*item].core);
+        sweep(problem, &inside, room, set, &mut taken, &mut found);
+    }
+    found
+}
+
+/// Resources in a set of classes.
+fn room(problem: &Problem, set: &[u32]) -> usize {
+    set.iter()
+        .map(|class| problem.classes[*class as usize].members.len())
+        .sum()
+}
+
+/// Whether one ascending list lies inside another.
+fn subset(small: &[u32], large: &[u32]) -> bool {
+    small.len() <= large.len() && small.iter().all(|class| large.binary_search(class).is_ok())
+}
+
+/// Goes through `items` by start and takes out a violation whenever too many run at once.
+fn sweep(
+    problem: &Problem,
+    items: &[usize],
+    room: usize,
+    set: &[u32],
+    taken: &mut [bool],
+    found: &mut Vec<HallViolation>,
+) {
+    let mut running: Vec<usize> = Vec::new();
+    for item in items {
+        let at = problem.items[*item].core.start;
+        running.retain(|other| problem.items[*other].core.end > at);
+        running.push(*item);
+        if running.len() > room {
+            found.push(violation(problem, &running, set, at));
+            for item in running.drain(..) {
+                taken[item] = true;
+            }
+        }
+    }
+}
+
+fn violation(problem: &Problem, items: &[usize], set: &[u32], at: Instant) -> HallViolation {
+    let members = set
+        .iter()
+        .flat_map(|class| &problem.classes[*class as usize].members);
+    HallViolation {
+        at,
+        pieces: items
+            .iter()
+            .map(|item| Arc::clone(&problem.ids[*item]))
+            .collect(),
+        resources: members
+            .map(|r| Arc::clone(&problem.resources[*r as usize]))
+            .collect(),
+    }
+}

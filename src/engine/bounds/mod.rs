@@ -1,0 +1,5 @@
+//! Lower bounds, each with the certificate that `audit` rechecks.
+
+pub(super) mod clique;
+pub(super) mod hall;
+pub(super) mod incompatible;

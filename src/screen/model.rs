@@ -1,0 +1,395 @@
+//! The one state of the screen.
+
+use super::layout::{RowKind, Rows};
+use super::theme::Theme;
+use super::view::View;
+use crate::actions::Keys;
+use crate::clock::{Instant, Span};
+use crate::desk::{Desk, Settled};
+use crate::edit::{Change, Edit};
+use crate::text::width;
+use crate::timetable::Timetable;
+use crate::words::Progress;
+use ratatui::layout::Rect;
+use std::sync::Arc;
+use tui_input::Input;
+
+/// What the user chose about look and keys.
+#[derive(Clone, Debug)]
+pub struct Setup {
+    /// Styles.
+    pub theme: Theme,
+    /// Keys.
+    pub keys: Keys,
+    /// Characters of plain ASCII only.
+    pub ascii: bool,
+}
+
+/// A line for the user, until the next key.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct Message {
+    /// What it says.
+    pub text: String,
+    /// Whether something went wrong.
+    pub warning: bool,
+}
+
+/// A piece in the hand.
+#[derive(Clone, Debug)]
+pub struct Carry {
+    /// Which.
+    pub id: Arc<str>,
+    /// Where it started.
+    pub home_start: Instant,
+    /// The resource it was on.
+    pub home: Option<usize>,
+    /// Where it would start now.
+    pub start: Instant,
+    /// The resource it is held over.
+    pub over: Option<usize>,
+    /// The timetable as it would be.
+    pub timetable: Timetable,
+}
+
+impl Carry {
+    /// The edits that dropping it here means.
+    pub fn edits(&self) -> Vec<Edit> {
+        let mut edits = Vec::new();
+        if self.over != self.home
+            && let Some(over) = self.over
+        {
+            let on = Arc::clone(&self.timetable.resources().all[over].id);
+            edits.push(
+                Change::Pin {
+                    piece: Arc::clone(&self.id),
+                    on,
+                }
+                .into(),
+            );
+        }
+        if self.start != self.home_start {
+            edits.push(
+                Change::Move {
+                    piece: Arc::clone(&self.id),
+                    to: self.start,
+                }
+                .into(),
+            );
+        }
+        edits
+    }
+}
+
+/// A search in progress.
+#[derive(Clone, Debug, Default)]
+pub struct Find {
+    /// What is typed.
+    pub input: Input,
+    /// Pieces that match, best first.
+    pub matches: Vec<usize>,
+    /// The chosen one of them.
+    pub chosen: usize,
+}
+
+/// What the keys act on.
+#[derive(Clone, Debug)]
+pub enum Mode {
+    /// The board.
+    Board,
+    /// A piece is carried.
+    Carry(Box<Carry>),
+    /// The command line.
+    Command(Input),
+    /// Finding a piece.
+    Find(Find),
+    /// The help, scrolled by so many lines.
+    Help(usize),
+    /// The question before leaving.
+    Leave,
+}
+
+/// The state.
+#[derive(Debug)]
+pub struct Model {
+    /// The open document.
+    pub desk: Desk,
+    /// Look and keys.
+    pub setup: Setup,
+    /// Columns and rows of the terminal.
+    pub size: (u16, u16),
+    /// The board.
+    pub rows: Rows,
+    /// The visible time.
+    pub view: View,
+    /// The first visible row.
+    pub top: usize,
+    /// The row in hand.
+    pub row: usize,
+    /// The moment in hand.
+    pub at: Instant,
+    /// The piece in hand.
+    pub here: Option<usize>,
+    /// What the keys act on.
+    pub mode: Mode,
+    /// For the user.
+    pub message: Option<Message>,
+    /// The answer for what is carried.
+    pub preview: Option<Arc<Settled>>,
+    /// Which preview that must be.
+    pub preview_generation: u64,
+    /// Whether the search goes on.
+    pub progress: Progress,
+    /// What `now` means.
+    pub now: Instant,
+    seen: bool,
+}
+
+/// Generations of previews, apart from those of the desk.
+const PREVIEWS: u64 = 1 << 63;
+
+impl Model {
+    /// The screen of an open timetable.
+    pub fn new(desk: Desk, setup: Setup) -> Model {
+        let view = View::showing(Span::lasting(Instant(0), 3600), 60);
+        let mut model = Model {
+            desk,
+            setup,
+            size: (80, 24),
+            rows: Rows::default(),
+            view,
+            top: 0,
+            row: 0,
+            at: Instant(0),
+            here: None,
+            mode: Mode::Board,
+            message: None,
+            preview: None,
+            preview_generation: PREVIEWS,
+            progress: Progress::Searching,
+            now: Instant(0),
+            seen: false,
+        };
+        if !model.desk.warnings.is_empty() {
+            let count = model.desk.warnings.len();
+            model.say(
+                format!("{count} doubtful times in the file; fewest count lists them"),
+                true,
+            );
+        }
+        model.refresh();
+        model
+    }
+
+    /// Where everything is on the screen.
+    pub fn areas(&self) -> Areas {
+        Areas::of(self.size, self.label_width())
+    }
+
+    /// The timetable that is shown: with what is carried where it is held.
+    pub fn timetable(&self) -> &Timetable {
+        match &self.mode {
+            Mode::Carry(carry) => &carry.timetable,
+            _ => self.desk.timetable(),
+        }
+    }
+
+    /// The answer that is shown, and whether it belongs to what is shown.
+    pub fn shown(&self) -> (Option<&Arc<Settled>>, bool) {
+        match (&self.mode, &self.preview) {
+            (Mode::Carry(carry), _) if carry.edits().is_empty() => {
+                (self.desk.settled(), self.desk.is_current())
+            }
+            (Mode::Carry(_), Some(preview)) => (
+                Some(preview),
+                preview.generation() == self.preview_generation,
+            ),
+            (Mode::Carry(_), None) => (self.desk.settled(), false),
+            _ => (self.desk.settled(), self.desk.is_current()),
+        }
+    }
+
+    /// The next generation for a preview.
+    pub fn next_preview(&mut self) -> u64 {
+        self.preview_generation = (self.preview_generation + 1) | PREVIEWS;
+        self.preview_generation
+    }
+
+    /// Says something until the next key.
+    pub fn say(&mut self, text: impl Into<String>, warning: bool) {
+        self.message = Some(Message {
+            text: text.into(),
+            warning,
+        });
+    }
+
+    /// Lays the board out anew and keeps what is in hand in hand.
+    pub fn refresh(&mut self) {
+        let held = self
+            .here
+            .and_then(|here| self.rows.pieces.get(here))
+            .map(|piece| Arc::clone(&piece.id));
+        let (settled, current) = self.shown();
+        let plan = settled.map(|settled| &settled.answer().plan);
+        let over = match &self.mode {
+            Mode::Carry(carry) => carry.over.map(|over| (&*carry.id, over)),
+            _ => None,
+        };
+        self.rows = Rows::of(self.timetable(), plan, !current, over);
+        self.row = self.row.min(self.rows.rows.len().saturating_sub(1));
+        self.here = held.and_then(|id| self.rows.find(&id));
+        if !self.seen && (current || self.desk.settled().is_none()) {
+            self.seen = current;
+            self.first_look();
+        } else if let Some(here) = self.here {
+            self.row = self.rows.row_of[here];
+            self.at = self.rows.pieces[here].span.start;
+        }
+        self.keep_in_sight();
+    }
+
+    /// Shows the day of the first peak (or of the first piece) and takes a piece of it.
+    fn first_look(&mut self) {
+        let peak = self
+            .desk
+            .settled()
+            .and_then(|settled| settled.survey().load.peaks().first().copied());
+        let first = self.rows.pieces.iter().map(|piece| piece.span.start).min();
+        let Some(at) = peak.map(|peak| peak.span.start).or(first) else {
+            return;
+        };
+        self.show_day(at);
+        self.take_at(at);
+    }
+
+    /// Shows the day that a moment is in.
+    pub fn show_day(&mut self, at: Instant) {
+        let zone = self.timetable().settings.zone;
+        let date = zone.date(at);
+        let that_day = self
+            .rows
+            .pieces
+            .iter()
+            .filter(|piece| zone.date(piece.span.start) == date);
+        let (mut start, mut end) = (at, at + 1);
+        for piece in that_day {
+            start = start.min(piece.span.start);
+            end = end.max(piece.span.end);
+        }
+        let start = Instant(start.0.div_euclid(3600) * 3600);
+        self.view = View::showing(Span { start, end }, self.areas().time.width);
+    }
+
+    /// Takes a piece that runs at a moment, from the topmost row that has one.
+    pub fn take_at(&mut self, at: Instant) {
+        self.at = at;
+        let running = |row: &super::layout::Row| {
+            row.pieces
+                .iter()
+                .copied()
+                .find(|piece| self.rows.pieces[*piece].span.contains(at))
+        };
+        match self.rows.rows.iter().find_map(running) {
+            Some(piece) => self.take(piece),
+            None => self.keep_in_sight(),
+        }
+    }
+
+    /// Takes a piece in hand.
+    pub fn take(&mut self, piece: usize) {
+        self.here = Some(piece);
+        self.row = self.rows.row_of[piece];
+        self.at = self.rows.pieces[piece].span.start;
+        self.keep_in_sight();
+    }
+
+    /// Moves the visible part so that what is in hand is in it.
+    pub fn keep_in_sight(&mut self) {
+        let areas = self.areas();
+        self.view = self.view.following(self.at, areas.time.width);
+        let height = usize::from(areas.board.height).max(1);
+        if self.row < self.top || self.row >= self.top + height {
+            // A page rather than a line: fewer bytes over a slow line.
+            self.top = self.row.saturating_sub(height / 3);
+        }
+        self.top = self.top.min(self.rows.rows.len().saturating_sub(height));
+    }
+
+    /// What a row is called.
+    pub fn row_name(&self, row: &RowKind) -> &str {
+        match row {
+            RowKind::Resource(resource) => &self.timetable().resources().all[*resource].id,
+            RowKind::Unplaced => "no place",
+            RowKind::Withdrawn => "withdrawn",
+        }
+    }
+
+    fn label_width(&self) -> u16 {
+        let most = if self.size.0 >= 120 { 22 } else { 12 };
+        let longest = self
+            .timetable()
+            .resources()
+            .all
+            .iter()
+            .take(500)
+            .map(|resource| width(&resource.id))
+            .max();
+        (longest.unwrap_or(0).clamp(9, most) + 2) as u16
+    }
+}
+
+/// Where the parts of the screen are.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
+pub struct Areas {
+    /// Title and state.
+    pub header: Rect,
+    /// Dates and hours.
+    pub axis: Rect,
+    /// All rows, labels included.
+    pub board: Rect,
+    /// The columns of time, over axis, board and load.
+    pub time: Rect,
+    /// The load.
+    pub load: Rect,
+    /// What is in hand.
+    pub detail: Rect,
+    /// Messages, hints, what is typed.
+    pub footer: Rect,
+}
+
+/// Below this size there is only a line that says so.
+pub(super) const LEAST: (u16, u16) = (40, 12);
+
+impl Areas {
+    fn of((columns, rows): (u16, u16), label: u16) -> Areas {
+        if columns < LEAST.0 || rows < LEAST.1 {
+            return Areas::default();
+        }
+        let load = if rows >= 36 { 6 } else { 3 };
+        let detail = if rows >= 30 { 6 } else { 4.min(rows / 5) };
+        let board = rows - 2 - 1 - load - detail - 1;
+        let mut y = 0;
+        let mut next = |height: u16| {
+            let area = Rect::new(0, y, columns, height);
+            y += height;
+            area
+        };
+        let (header, axis, board) = (next(2), next(1), next(board));
+        let (load, detail, footer) = (next(load), next(detail), next(1));
+        let label = label.min(columns / 2);
+        let time = Rect::new(
+            label,
+            axis.y,
+            columns - label,
+            axis.height + board.height + load.height,
+        );
+        Areas {
+            header,
+            axis,
+            board,
+            time,
+            load,
+            detail,
+            footer,
+        }
+    }
+}

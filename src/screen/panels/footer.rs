@@ -1,0 +1,118 @@
+//! The last line: what is typed, what was said, or the keys that matter now.
+
+use crate::actions::{ACTIONS, Action};
+use crate::screen::draw::put;
+use crate::screen::model::{Mode, Model};
+use crate::text::{clean, width};
+use ratatui::buffer::Buffer;
+use ratatui::layout::{Position, Rect};
+
+/// Draws it; returns where the cursor belongs when something is typed or asked here.
+pub(in crate::screen) fn draw(model: &Model, buffer: &mut Buffer, area: Rect) -> Option<Position> {
+    let theme = &model.setup.theme;
+    buffer.set_style(area, ratatui::style::Style::reset());
+    for x in area.left()..area.right() {
+        buffer[(x, area.y)].reset();
+    }
+    if let Mode::Leave = model.mode {
+        let text = format!(
+            "{} not saved: s saves and leaves, y leaves without saving, anything else stays",
+            match model.desk.unsaved() {
+                1 => "1 edit".to_string(),
+                count => format!("{count} edits"),
+            }
+        );
+        let x = put(buffer, area, 0, 0, &text, theme.warning);
+        return Some(Position::new(area.x + x, area.y));
+    }
+    if let Some(message) = &model.message {
+        let style = if message.warning {
+            theme.warning
+        } else {
+            theme.prompt
+        };
+        if let Mode::Command(input) = &model.mode {
+            // What is wrong above, what was typed below it.
+            let above = Rect::new(area.x, area.y.saturating_sub(1), area.width, 1);
+            for x in above.left()..above.right() {
+                buffer[(x, above.y)].reset();
+            }
+            put(buffer, above, 0, 0, &message.text, style);
+            return Some(typed(model, input, buffer, area));
+        }
+        put(buffer, area, 0, 0, &message.text, style);
+        return None;
+    }
+    match &model.mode {
+        Mode::Command(input) => Some(typed(model, input, buffer, area)),
+        Mode::Carry(_) => {
+            put(
+                buffer,
+                area,
+                0,
+                0,
+                "arrows carry it in time and over resources; Enter drops it; Esc puts it back",
+                theme.prompt,
+            );
+            None
+        }
+        _ => {
+            put(
+                buffer,
+                area,
+                0,
+                0,
+                &hints(model, usize::from(area.width)),
+                theme.hint,
+            );
+            None
+        }
+    }
+}
+
+fn typed(model: &Model, input: &tui_input::Input, buffer: &mut Buffer, area: Rect) -> Position {
+    let room = usize::from(area.width).saturating_sub(2);
+    let skipped = input.visual_scroll(room);
+    let shown: String = {
+        // Whole characters from the left until what is cut off is wide enough.
+        let mut cut = 0;
+        let clean = clean(input.value());
+        let from = clean.char_indices().find(|(_, c)| {
+            let here = cut >= skipped;
+            cut += width(c.encode_utf8(&mut [0; 4]));
+            here
+        });
+        from.map_or_else(String::new, |(at, _)| clean[at..].to_string())
+    };
+    put(
+        buffer,
+        area,
+        0,
+        0,
+        &format!(":{shown}"),
+        model.setup.theme.prompt,
+    );
+    let column = input.visual_cursor().saturating_sub(skipped).min(room);
+    Position::new(area.x + 1 + column as u16, area.y)
+}
+
+/// As many of the usual keys as fit; help always does.
+fn hints(model: &Model, room: usize) -> String {
+    let key = |action: Action| {
+        let keys = model.setup.keys.of(action);
+        keys.first().map_or_else(String::new, |key| match *key {
+            "enter" => "Enter".into(),
+            key => key.to_string(),
+        })
+    };
+    let mut text = format!("{} help", key(Action::Help));
+    for entry in ACTIONS.iter().filter(|entry| entry.action != Action::Help) {
+        if let Some(hint) = entry.hint {
+            let more = format!("  {} {hint}", key(entry.action));
+            if width(&text) + width(&more) <= room {
+                text.push_str(&more);
+            }
+        }
+    }
+    text
+}

@@ -1,0 +1,110 @@
+//! Writing files so that nobody ever finds half of one.
+//!
+//! Imports nothing from the crate.
+
+use std::fs::{self, File};
+use std::io::{self, Write};
+use std::path::{Path, PathBuf};
+
+/// Replaces a file as a whole: a temporary file beside it, sync, rename, sync of the folder.
+/// Permissions of an existing file stay; a link is followed, not replaced.
+///
+/// # Errors
+/// Whatever the system says; the old file is then untouched.
+pub fn write_atomically(path: &Path, bytes: &[u8]) -> io::Result<()> {
+    let path = fs::canonicalize(path).unwrap_or_else(|_| path.to_path_buf());
+    let folder = match path.parent() {
+        Some(folder) if !folder.as_os_str().is_empty() => folder.to_path_buf(),
+        _ => PathBuf::from("."),
+    };
+    let mut file = tempfile::Builder::new()
+        .prefix(".fewest-")
+        .tempfile_in(&folder)?;
+    file.write_all(bytes)?;
+    match fs::metadata(&path) {
+        Ok(there) => file.as_file().set_permissions(there.permissions())?,
+        Err(_) => set_usual_permissions(file.as_file(), &folder)?,
+    }
+    file.as_file().sync_all()?;
+    file.persist(&path).map_err(|error| error.error)?;
+    // The rename itself must reach the disk too; where folders cannot be synced it is as safe
+    // as it can be.
+    if let Ok(folder) = File::open(&folder) {
+        let _ = folder.sync_all();
+    }
+    Ok(())
+}
+
+/// A temporary file is private; a new timetable is as readable as files usually are here.
+fn set_usual_permissions(file: &File, folder: &Path) -> io::Result<()> {
+    let probe = folder.join(format!(".fewest-mode-{}", std::process::id()));
+    let made = File::create_new(&probe).and_then(|file| file.metadata());
+    let _ = fs::remove_file(&probe);
+    file.set_permissions(made?.permissions())
+}
+
+/// Reads a whole file unless it is larger than `most` bytes.
+///
+/// # Errors
+/// Whatever the system says, or that it is too large.
+pub fn read_bounded(path: &Path, most: u64) -> io::Result<Vec<u8>> {
+    let there = fs::metadata(path)?;
+    if there.is_dir() {
+        return Err(io::Error::new(
+            io::ErrorKind::IsADirectory,
+            "this is a folder, not a file",
+        ));
+    }
+    if there.len() > most {
+        let message = format!("this file is larger than {} MiB", most >> 20);
+        return Err(io::Error::new(io::ErrorKind::FileTooLarge, message));
+    }
+    fs::read(path)
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn a_file_is_replaced_whole_and_keeps_its_permissions() {
+        let folder = tempfile::tempdir().unwrap();
+        let path = folder.path().join("a.toml");
+        write_atomically(&path, b"one").unwrap();
+        let mut permissions = fs::metadata(&path).unwrap().permissions();
+        std::os::unix::fs::PermissionsExt::set_mode(&mut permissions, 0o640);
+        fs::set_permissions(&path, permissions.clone()).unwrap();
+        write_atomically(&path, b"two").unwrap();
+        assert_eq!(fs::read(&path).unwrap(), b"two");
+        assert_eq!(fs::metadata(&path).unwrap().permissions(), permissions);
+        assert_eq!(
+            fs::read_dir(folder.path()).unwrap().count(),
+            1,
+            "nothing is left behind"
+        );
+    }
+
+    #[test]
+    fn a_link_is_followed() {
+        let folder = tempfile::tempdir().unwrap();
+        let (real, link) = (folder.path().join("real"), folder.path().join("link"));
+        fs::write(&real, "one").unwrap();
+        std::os::unix::fs::symlink(&real, &link).unwrap();
+        write_atomically(&link, b"two").unwrap();
+        assert!(fs::symlink_metadata(&link).unwrap().is_symlink());
+        assert_eq!(fs::read(&real).unwrap(), b"two");
+    }
+
+    #[test]
+    fn a_vanished_folder_is_an_error_and_too_large_a_file_is_not_read() {
+        let folder = tempfile::tempdir().unwrap();
+        assert!(write_atomically(&folder.path().join("no/a.toml"), b"x").is_err());
+        let path = folder.path().join("large");
+        fs::write(&path, [0; 100]).unwrap();
+        assert_eq!(
+            read_bounded(&path, 99).unwrap_err().kind(),
+            io::ErrorKind::FileTooLarge
+        );
+        assert_eq!(read_bounded(&path, 100).unwrap().len(), 100);
+    }
+}

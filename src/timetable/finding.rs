@@ -1,0 +1,112 @@
+//! Findings: what is wrong with a timetable that can be opened all the same. The pieces
+//! concerned stay unplaced with their reason.
+
+use super::{Piece, Timetable, Unfit, may_use, occupied};
+use std::collections::HashMap;
+use std::sync::Arc;
+
+/// One finding.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct Finding {
+    /// The piece it is about.
+    pub piece: Arc<str>,
+    /// What was found.
+    pub kind: FindingKind,
+}
+
+/// What can be found.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub enum FindingKind {
+    /// It is pinned on a resource that cannot serve it.
+    PinCannotServe {
+        /// The resource it is pinned on.
+        pin: Arc<str>,
+        /// Why not.
+        because: Unfit,
+    },
+    /// Its pin overlaps another piece's pin on the same resource.
+    PinsOverlap {
+        /// The resource.
+        pin: Arc<str>,
+        /// The other piece.
+        other: Arc<str>,
+    },
+    /// No resource may take it.
+    NoResource,
+}
+
+/// All findings, in file order. Withdrawn pieces have none.
+pub fn findings(timetable: &Timetable) -> Vec<Finding> {
+    let pieces = timetable.pieces();
+    let resources = timetable.resources();
+    let mut found = Vec::new();
+    let mut pinned: HashMap<usize, Vec<(crate::clock::Span, &Piece)>> = HashMap::new();
+    // Requests that say the same of themselves share the search for a possible resource.
+    let mut possible_before: HashMap<Wishes<'_>, Vec<usize>> = HashMap::new();
+    for piece in pieces.iter().filter(|piece| !piece.withdrawn) {
+        let mut add = |kind| {
+            found.push(Finding {
+                piece: Arc::clone(&piece.id),
+                kind,
+            })
+        };
+        match piece
+            .pin
+            .as_ref()
+            .and_then(|pin| resources.position(pin).map(|at| (pin, at)))
+        {
+            Some((pin, at)) => {
+                if let Err(because) = may_use(piece, &resources.all[at]) {
+                    add(FindingKind::PinCannotServe {
+                        pin: Arc::clone(pin),
+                        because,
+                    });
+                }
+                let occupied = occupied(piece, &resources.all[at]);
+                let others = pinned.entry(at).or_default();
+                if let Some((_, other)) = others.iter().find(|(span, _)| span.overlaps(occupied)) {
+                    add(FindingKind::PinsOverlap {
+                        pin: Arc::clone(pin),
+                        other: Arc::clone(&other.id),
+                    });
+                }
+                others.push((occupied, piece));
+            }
+            None => {
+                let suited = possible_before.entry(Wishes::of(piece)).or_insert_with(|| {
+                    (0..resources.all.len())
+                        .filter(|at| super::suits(piece, &resources.all[*at]).is_ok())
+                        .collect()
+                });
+                if !suited
+                    .iter()
+                    .any(|at| may_use(piece, &resources.all[*at]).is_ok())
+                {
+                    add(FindingKind::NoResource);
+                }
+            }
+        }
+    }
+    found
+}
+
+/// What decides which resources suit a piece, whatever its time.
+#[derive(PartialEq, Eq, Hash)]
+pub(crate) struct Wishes<'a> {
+    size: Option<u64>,
+    needs: &'a [Arc<str>],
+    only: &'a [Arc<str>],
+    never: &'a [Arc<str>],
+}
+
+impl<'a> Wishes<'a> {
+    /// The wishes of a piece.
+    pub(crate) fn of(piece: &'a Piece) -> Wishes<'a> {
+        Wishes {
+            size: piece.size,
+            needs: &piece.request.needs,
+            only: &piece.request.only,
+            never: &piece.request.never,
+        }
+    }
+}

@@ -1,0 +1,121 @@
+//! What is stated: requests, kinds, named resources, opening times, and what follows
+//! from them before anything is planned (the resources there are, the pieces to place,
+//! who may use what).
+//!
+//! Imports `clock` and `text`. Everything is cheap to clone: an edit copies the one
+//! request it changes and shares the rest, so that history and background solving can
+//! hold on to whole snapshots.
+
+mod finding;
+mod hours;
+mod piece;
+mod resources;
+mod stated;
+
+pub(crate) use finding::Wishes;
+pub use finding::{Finding, FindingKind, findings};
+pub use hours::{Closure, Days, Hours, Opening, subtract};
+pub use piece::{Piece, Unfit, least_buffers, may_use, occupied, suits};
+pub(crate) use resources::member_number;
+pub use resources::{Resource, Resources};
+pub use stated::{Common, Count, Kind, Listed, Named, Noun, Request, Settings, TimeStated};
+
+use std::collections::HashMap;
+use std::sync::Arc;
+
+/// A whole timetable as stated.
+#[derive(Clone, Debug)]
+pub struct Timetable {
+    /// What is said once for all.
+    pub settings: Arc<Settings>,
+    /// The kinds, in file order.
+    pub kinds: Vec<Arc<Kind>>,
+    /// The named resources (and overridden members), in file order.
+    pub named: Vec<Arc<Named>>,
+    /// File order over both tables.
+    pub listed: Vec<Listed>,
+    /// The requests, in file order.
+    pub requests: Vec<Arc<Request>>,
+    /// Where each request is in `requests`, by id.
+    ids: Arc<HashMap<Arc<str>, usize>>,
+    /// What there is to hand out; follows from the rest.
+    resources: Arc<Resources>,
+}
+
+impl PartialEq for Timetable {
+    /// Equal when the same things are stated in the same order.
+    fn eq(&self, other: &Self) -> bool {
+        self.settings == other.settings
+            && self.kinds == other.kinds
+            && self.named == other.named
+            && self.listed == other.listed
+            && self.requests == other.requests
+    }
+}
+
+impl Timetable {
+    /// A timetable of these statements. Ids are expected to be unique; a later request
+    /// of the same id is not found by id.
+    pub fn new(
+        settings: Settings,
+        kinds: Vec<Kind>,
+        named: Vec<Named>,
+        listed: Vec<Listed>,
+        requests: Vec<Request>,
+    ) -> Timetable {
+        let requests: Vec<Arc<Request>> = requests.into_iter().map(Arc::new).collect();
+        let mut ids = HashMap::with_capacity(requests.len());
+        for (at, request) in requests.iter().enumerate() {
+            ids.entry(Arc::clone(&request.id)).or_insert(at);
+        }
+        let mut timetable = Timetable {
+            settings: Arc::new(settings),
+            kinds: kinds.into_iter().map(Arc::new).collect(),
+            named: named.into_iter().map(Arc::new).collect(),
+            listed,
+            requests,
+            ids: Arc::new(ids),
+            resources: Arc::new(Resources::default()),
+        };
+        timetable.refresh();
+        timetable
+    }
+
+    /// Works the resources out again after a change of what they follow from.
+    pub fn refresh(&mut self) {
+        self.resources = Arc::new(Resources::of(self));
+    }
+
+    /// What there is to hand out, in listed order.
+    pub fn resources(&self) -> &Resources {
+        &self.resources
+    }
+
+    /// The place of a request in [`Timetable::requests`].
+    pub fn position(&self, id: &str) -> Option<usize> {
+        self.ids.get(id).copied()
+    }
+
+    /// The request of that id.
+    pub fn request(&self, id: &str) -> Option<&Arc<Request>> {
+        self.position(id).map(|at| &self.requests[at])
+    }
+
+    /// Replaces one request; resources are worked out again where some are made as needed.
+    pub fn replace(&mut self, at: usize, request: Request) {
+        self.requests[at] = Arc::new(request);
+        if self.resources.open_ended {
+            self.refresh();
+        }
+    }
+
+    /// Every piece there is to place or has been withdrawn, in file order.
+    pub fn pieces(&self) -> Vec<Piece> {
+        self.requests.iter().map(Piece::of_request).collect()
+    }
+
+    /// Whether an unknown name could be a member of a kind that grows as needed.
+    pub fn member_of_open_kind(&self, id: &str) -> bool {
+        resources::open_kinds(self).any(|kind| resources::member_number(&kind, id).is_some())
+    }
+}

@@ -1,0 +1,152 @@
+//! Pieces, and which resource may take which.
+
+use super::{Request, Resource, Settings, Timetable};
+use crate::clock::Span;
+use std::sync::Arc;
+
+/// What is placed. At present every request is one piece; occurrences and parts will be
+/// pieces with an id, time, pin and size of their own.
+#[derive(Clone, Debug)]
+pub struct Piece {
+    /// Its id: the request's.
+    pub id: Arc<str>,
+    /// The request it comes from.
+    pub request: Arc<Request>,
+    /// Its own time, without buffers.
+    pub span: Span,
+    /// The resource it stays on.
+    pub pin: Option<Arc<str>>,
+    /// Stays at its start.
+    pub fastened: bool,
+    /// Out of the plan.
+    pub withdrawn: bool,
+    /// Seats it takes.
+    pub size: Option<u64>,
+}
+
+impl Piece {
+    /// The one piece of a request.
+    pub fn of_request(request: &Arc<Request>) -> Piece {
+        Piece {
+            id: Arc::clone(&request.id),
+            request: Arc::clone(request),
+            span: request.span(),
+            pin: request.pin.clone(),
+            fastened: request.fastened,
+            withdrawn: request.withdrawn,
+            size: request.size,
+        }
+    }
+
+    /// Whether it began before the moment up to which everything is settled.
+    pub fn begun(&self, settings: &Settings) -> bool {
+        settings
+            .settled_until
+            .is_some_and(|until| self.span.start < until)
+    }
+}
+
+/// Why a resource cannot take a piece.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub enum Unfit {
+    /// Pinned to another.
+    Pinned(Arc<str>),
+    /// Not among those it may only use.
+    NotInOnly,
+    /// Among those it never uses.
+    InNever,
+    /// Fewer seats than its size.
+    TooSmall {
+        /// Seats there are.
+        seats: u64,
+        /// Seats it takes.
+        size: u64,
+    },
+    /// Does not offer something it needs.
+    Lacks(Arc<str>),
+    /// Runs into a closure, with its reason if one is stated.
+    Closed(Option<Arc<str>>),
+    /// Not open throughout.
+    NotOpen,
+}
+
+/// The time the piece would keep the resource occupied, buffers included; the request's
+/// own buffers come before the resource's.
+pub fn occupied(piece: &Piece, resource: &Resource) -> Span {
+    piece.span.widened(
+        piece.request.setup.unwrap_or(resource.setup),
+        piece.request.turnaround.unwrap_or(resource.turnaround),
+    )
+}
+
+/// Whether the resource suits the piece at any time (its pin aside).
+///
+/// # Errors
+/// The first reason against it.
+pub fn suits(piece: &Piece, resource: &Resource) -> Result<(), Unfit> {
+    let request = &piece.request;
+    let named = |names: &[Arc<str>]| {
+        names.iter().any(|name| {
+            *name == resource.id || resource.kind.as_ref().is_some_and(|kind| name == kind)
+        })
+    };
+    if !request.only.is_empty() && !named(&request.only) {
+        return Err(Unfit::NotInOnly);
+    }
+    if named(&request.never) {
+        return Err(Unfit::InNever);
+    }
+    if let (Some(size), Some(seats)) = (piece.size, resource.seats)
+        && size > seats
+    {
+        return Err(Unfit::TooSmall { seats, size });
+    }
+    match request
+        .needs
+        .iter()
+        .find(|need| resource.offers.binary_search(need).is_err())
+    {
+        Some(need) => Err(Unfit::Lacks(Arc::clone(need))),
+        None => Ok(()),
+    }
+}
+
+/// Whether the piece may use the resource at its time, and the span it then occupies.
+///
+/// # Errors
+/// The first reason against it.
+pub fn may_use(piece: &Piece, resource: &Resource) -> Result<Span, Unfit> {
+    if let Some(pin) = piece.pin.as_ref().filter(|pin| **pin != resource.id) {
+        return Err(Unfit::Pinned(Arc::clone(pin)));
+    }
+    suits(piece, resource)?;
+    let span = occupied(piece, resource);
+    if let Some(closure) = resource.hours.closure_in(span) {
+        return Err(Unfit::Closed(closure.because.clone()));
+    }
+    if !resource.hours.open_through(span) {
+        return Err(Unfit::NotOpen);
+    }
+    Ok(span)
+}
+
+/// The piece's span with its least buffers over the resources it may use: what load,
+/// clique and overlap graph count. A piece that no resource may take keeps its own
+/// buffers, or the timetable's.
+pub fn least_buffers(timetable: &Timetable, piece: &Piece) -> Span {
+    let mut least: Option<(i64, i64)> = None;
+    for resource in &timetable.resources().all {
+        if let Ok(span) = may_use(piece, resource) {
+            let (before, after) = (piece.span.start - span.start, span.end - piece.span.end);
+            least = Some(least.map_or((before, after), |(b, a)| (b.min(before), a.min(after))));
+        }
+    }
+    let (before, after) = least.unwrap_or((
+        piece.request.setup.unwrap_or(timetable.settings.setup),
+        piece
+            .request
+            .turnaround
+            .unwrap_or(timetable.settings.turnaround),
+    ));
+    piece.span.widened(before, after)
+}

@@ -1,0 +1,276 @@
+//! The resources there are: named ones, members of kinds, and those made as needed.
+
+use super::{Closure, Common, Count, Hours, Kind, Listed, Named, Opening, Timetable};
+use crate::clock::{DAY, Instant, Span};
+use std::collections::{HashMap, HashSet};
+use std::sync::Arc;
+
+/// One thing that is handed out.
+#[derive(Clone, Debug)]
+pub struct Resource {
+    /// Its id.
+    pub id: Arc<str>,
+    /// Shown beside the id.
+    pub title: Option<Arc<str>>,
+    /// The kind it belongs to.
+    pub kind: Option<Arc<str>>,
+    /// Most that fit; absent is no limit.
+    pub seats: Option<u64>,
+    /// What it offers, sorted.
+    pub offers: Arc<[Arc<str>]>,
+    /// Seconds kept free before, unless the request says otherwise.
+    pub setup: i64,
+    /// Seconds kept free after.
+    pub turnaround: i64,
+    /// When it can be used.
+    pub hours: Arc<Hours>,
+    /// Whether it is one of as many as needed.
+    pub as_needed: bool,
+}
+
+/// Every resource in listed order, and where to find it.
+#[derive(Clone, Debug, Default)]
+pub struct Resources {
+    /// In listed order; of a kind that grows as needed, as many as could ever be used.
+    pub all: Vec<Resource>,
+    by_id: HashMap<Arc<str>, usize>,
+    /// Whether any kind grows as needed.
+    pub open_ended: bool,
+}
+
+impl Resources {
+    /// The place of a resource in `all`.
+    pub fn position(&self, id: &str) -> Option<usize> {
+        self.by_id.get(id).copied()
+    }
+
+    /// The resource of that id.
+    pub fn get(&self, id: &str) -> Option<&Resource> {
+        self.position(id).map(|at| &self.all[at])
+    }
+
+    /// Works out the resources of a timetable.
+    pub(super) fn of(timetable: &Timetable) -> Resources {
+        let mut making = Making::new(timetable);
+        if timetable.listed.is_empty() {
+            making.members(&implied_kind(timetable));
+        }
+        for listed in &timetable.listed {
+            match listed {
+                Listed::Kind(at) => making.members(&timetable.kinds[*at]),
+                Listed::Named(at) => making.named(&timetable.named[*at]),
+            }
+        }
+        making.resources
+    }
+}
+
+/// With neither kind nor resource stated: as many alike as needed, called by the noun.
+fn implied_kind(timetable: &Timetable) -> Kind {
+    Kind {
+        id: Arc::clone(&timetable.settings.noun.one),
+        count: Count::AsNeeded,
+        common: Common::default(),
+    }
+}
+
+/// The ids of the kinds that grow as needed.
+pub(super) fn open_kinds(timetable: &Timetable) -> impl Iterator<Item = Arc<str>> + '_ {
+    let implied = timetable
+        .listed
+        .is_empty()
+        .then(|| Arc::clone(&timetable.settings.noun.one));
+    timetable
+        .kinds
+        .iter()
+        .filter(|kind| kind.count == Count::AsNeeded)
+        .map(|kind| Arc::clone(&kind.id))
+        .chain(implied)
+}
+
+/// The number of a member called `KIND-NUMBER`, from 1.
+pub(crate) fn member_number(kind: &str, id: &str) -> Option<u32> {
+    id.strip_prefix(kind)?
+        .strip_prefix('-')
+        .filter(|digits| digits.bytes().all(|b| b.is_ascii_digit()) && !digits.starts_with('0'))?
+        .parse()
+        .ok()
+}
+
+/// Hours already made, by what they state.
+type KnownHours = HashMap<(Option<Vec<Opening>>, Vec<Closure>), Arc<Hours>>;
+
+struct Making<'a> {
+    timetable: &'a Timetable,
+    resources: Resources,
+    overrides: HashMap<&'a str, &'a Arc<Named>>,
+    hours: KnownHours,
+    horizon: Span,
+}
+
+impl<'a> Making<'a> {
+    fn new(timetable: &'a Timetable) -> Making<'a> {
+        let starts = timetable.requests.iter().map(|request| request.span());
+        let (mut first, mut last) = (Instant(i64::MAX), Instant(i64::MIN));
+        for span in starts {
+            first = first.min(span.start);
+            last = last.max(span.end);
+        }
+        if first > last {
+            (first, last) = (Instant(0), Instant(0));
+        }
+        Making {
+            timetable,
+            resources: Resources::default(),
+            overrides: timetable
+                .named
+                .iter()
+                .map(|named| (named.id.as_ref(), named))
+                .collect(),
+            hours: HashMap::new(),
+            // Some room for moves; beyond it windows are worked out one by one.
+            horizon: Span {
+                start: first,
+                end: last,
+            }
+            .widened(30 * DAY, 30 * DAY),
+        }
+    }
+
+    fn members(&mut self, kind: &Kind) {
+        let numbers: Vec<u32> = match kind.count {
+            Count::Of(count) => (1..=count).collect(),
+            Count::AsNeeded => {
+                self.resources.open_ended = true;
+                self.needed(kind)
+            }
+        };
+        for number in numbers {
+            let id: Arc<str> = format!("{}-{number}", kind.id).into();
+            let own = self.overrides.get(id.as_ref()).map(|named| &named.common);
+            let common = own.map_or_else(|| kind.common.clone(), |own| inherit(own, &kind.common));
+            self.push(id, Some(&kind.id), &common, kind.count == Count::AsNeeded);
+        }
+    }
+
+    fn named(&mut self, named: &Named) {
+        let kind = named
+            .kind
+            .as_ref()
+            .and_then(|id| self.timetable.kinds.iter().find(|kind| kind.id == *id));
+        let member =
+            kind.is_some_and(
+                |kind| match (kind.count, member_number(&kind.id, &named.id)) {
+                    (_, None) => false,
+                    (Count::AsNeeded, Some(_)) => true,
+                    (Count::Of(count), Some(number)) => number <= count,
+                },
+            );
+        if !member {
+            let common = kind.map_or_else(
+                || named.common.clone(),
+                |kind| inherit(&named.common, &kind.common),
+            );
+            self.push(Arc::clone(&named.id), named.kind.as_ref(), &common, false);
+        }
+    }
+
+    /// Members of an open-ended kind that some plan could ever use: one for every piece of
+    /// the largest load, beside those that a pin or a table of their own names.
+    fn needed(&self, kind: &Kind) -> Vec<u32> {
+        let number = |id: &str| member_number(&kind.id, id);
+        let mut stated: HashSet<u32> = HashSet::new();
+        let mut ends: Vec<(Instant, i32)> = Vec::new();
+        let settings = &self.timetable.settings;
+        for request in self
+            .timetable
+            .requests
+            .iter()
+            .filter(|request| !request.withdrawn)
+        {
+            stated.extend(request.pin.as_deref().and_then(number));
+            let setup = request
+                .setup
+                .or(kind.common.setup)
+                .unwrap_or(settings.setup);
+            let turnaround = request
+                .turnaround
+                .or(kind.common.turnaround)
+                .unwrap_or(settings.turnaround);
+            let span = request.span().widened(setup, turnaround);
+            ends.push((span.start, 1));
+            ends.push((span.end, -1));
+        }
+        stated.extend(
+            self.timetable
+                .named
+                .iter()
+                .filter_map(|named| number(&named.id)),
+        );
+        // Ends sort before starts at the same moment: back to back is no overlap.
+        ends.sort_unstable();
+        let (mut load, mut most) = (0, 0);
+        for (_, step) in ends {
+            load += step;
+            most = most.max(load);
+        }
+        let mut numbers: Vec<u32> = (1..)
+            .filter(|n| !stated.contains(n))
+            .take(most as usize)
+            .collect();
+        numbers.extend(stated);
+        numbers.sort_unstable();
+        numbers
+    }
+
+    fn push(&mut self, id: Arc<str>, kind: Option<&Arc<str>>, common: &Common, as_needed: bool) {
+        let settings = &self.timetable.settings;
+        let stated = (
+            common.open.clone(),
+            common.closed.clone().unwrap_or_default(),
+        );
+        let horizon = self.horizon;
+        let hours = self
+            .hours
+            .entry(stated)
+            .or_insert_with_key(|(open, closed)| {
+                Arc::new(Hours::new(
+                    open.clone(),
+                    closed.clone(),
+                    settings.zone,
+                    horizon,
+                ))
+            });
+        let mut offers = common.offers.clone().unwrap_or_default();
+        offers.sort_unstable();
+        let resource = Resource {
+            id: Arc::clone(&id),
+            title: common.title.clone(),
+            kind: kind.cloned(),
+            seats: common.seats,
+            offers: offers.into(),
+            setup: common.setup.unwrap_or(settings.setup),
+            turnaround: common.turnaround.unwrap_or(settings.turnaround),
+            hours: Arc::clone(hours),
+            as_needed,
+        };
+        let at = self.resources.all.len();
+        if let std::collections::hash_map::Entry::Vacant(place) = self.resources.by_id.entry(id) {
+            place.insert(at);
+            self.resources.all.push(resource);
+        }
+    }
+}
+
+/// What `own` states, and `kind`'s word on the rest.
+fn inherit(own: &Common, kind: &Common) -> Common {
+    Common {
+        title: own.title.clone().or_else(|| kind.title.clone()),
+        seats: own.seats.or(kind.seats),
+        offers: own.offers.clone().or_else(|| kind.offers.clone()),
+        setup: own.setup.or(kind.setup),
+        turnaround: own.turnaround.or(kind.turnaround),
+        open: own.open.clone().or_else(|| kind.open.clone()),
+        closed: own.closed.clone().or_else(|| kind.closed.clone()),
+    }
+}
