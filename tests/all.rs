@@ -1,3 +1,18 @@
 //! The integration tests: one binary, so that linking stays short.
 #![allow(missing_docs, reason = "tests explain themselves by their names")]
 #![allow(clippy::unwrap_used, clippy::expect_used, reason = "a test may panic")]
+#![allow(
+    clippy::print_stderr,
+    reason = "a skipped check says so where people look"
+)]
+
+mod captures;
+mod commands;
+mod edits;
+mod optimum;
+mod outside;
+mod plans;
+mod reading;
+mod samples;
+mod terminal;
+mod tools;

@@ -61,7 +61,7 @@ struct Raw {
     proof: Option<RawProof>,
     #[serde(default)]
     placement: Vec<RawPlacement>,
-    #[serde(default)]
+    #[serde(default, skip_serializing_if = "Vec::is_empty")]
     unplaced: Vec<RawUnplaced>,
 }
 

@@ -82,7 +82,7 @@ pub fn apply(timetable: &mut Timetable, edit: &Edit) -> Result<Vec<Touched>, Ref
         Change::Move { piece, to } => moved(timetable, piece, *to),
         Change::Pin { piece, on } => {
             let open = on.as_ref();
-            if timetable.resources().get(open).is_none() && !timetable.member_of_open_kind(open) {
+            if timetable.resources().get(open).is_none() && timetable.open_kind_of(open).is_none() {
                 return Err(if is_kind(timetable, open) {
                     Refused::IsKind(Arc::clone(on))
                 } else {
@@ -248,15 +248,17 @@ fn closures(
     resource: &Arc<str>,
     how: impl FnOnce(&mut Vec<Closure>) -> Result<(), Refused>,
 ) -> Result<Vec<Touched>, Refused> {
-    let Some(known) = timetable.resources().get(resource) else {
-        return Err(if is_kind(timetable, resource) {
-            Refused::IsKind(Arc::clone(resource))
-        } else {
-            Refused::UnknownResource(Arc::clone(resource))
-        });
+    let (mut closed, kind) = match timetable.resources().get(resource) {
+        Some(known) => (known.hours.closed().to_vec(), known.kind.clone()),
+        // A member of a kind that grows as needed may be closed before it is first used.
+        None => match timetable.open_kind_of(resource) {
+            Some(kind) => (Vec::new(), Some(kind)),
+            None if is_kind(timetable, resource) => {
+                return Err(Refused::IsKind(Arc::clone(resource)));
+            }
+            None => return Err(Refused::UnknownResource(Arc::clone(resource))),
+        },
     };
-    let mut closed = known.hours.closed().to_vec();
-    let kind = known.kind.clone();
     how(&mut closed)?;
     let mut touched = Vec::new();
     if let Some(at) = timetable

@@ -114,8 +114,8 @@ impl Timetable {
         self.requests.iter().map(Piece::of_request).collect()
     }
 
-    /// Whether an unknown name could be a member of a kind that grows as needed.
-    pub fn member_of_open_kind(&self, id: &str) -> bool {
-        resources::open_kinds(self).any(|kind| resources::member_number(&kind, id).is_some())
+    /// The kind that grows as needed of which an id names a member, used or not.
+    pub fn open_kind_of(&self, id: &str) -> Option<Arc<str>> {
+        resources::open_kinds(self).find(|kind| resources::member_number(kind, id).is_some())
     }
 }

@@ -1,0 +1,252 @@
+//! The engine against exact answers that it did not compute: brute force on tiny cases, and
+//! a small integer programme solved by the microlp library.
+
+use crate::tools::{solve, timetable};
+use fewest::audit::Knowledge;
+use proptest::prelude::*;
+use std::fmt::Write;
+
+/// A tiny timetable, as plain numbers: the oracle reads these, the program reads the text.
+#[derive(Clone, Debug)]
+struct Tiny {
+    /// Per room: seats, has a projector, minutes kept free after.
+    rooms: Vec<(u32, bool, i64)>,
+    /// Per request: start, length, size, needs the projector, pin, weight, never.
+    requests: Vec<(i64, i64, u32, bool, Option<usize>, u64, Option<usize>)>,
+    /// One room closed from..to.
+    closed: Option<(usize, i64, i64)>,
+}
+
+impl Tiny {
+    fn text(&self) -> String {
+        let at = |minute: i64| format!("2027-01-11T{:02}:{:02}:00", 8 + minute / 60, minute % 60);
+        let mut text = "[timetable]\ntitle = \"tiny\"\nnoun = [\"room\", \"rooms\"]\n".to_string();
+        for (room, (seats, projector, after)) in self.rooms.iter().enumerate() {
+            let offers = if *projector { "\"projector\"" } else { "" };
+            let _ = writeln!(
+                text,
+                "[[resource]]\nid = \"room-{room}\"\nseats = {seats}\noffers = [{offers}]\nturnaround = \"{after}m\""
+            );
+            if let Some((_, from, to)) = self.closed.filter(|(closed, _, _)| *closed == room) {
+                let _ = writeln!(
+                    text,
+                    "closed = [{{ from = {}, to = {} }}]",
+                    at(from),
+                    at(to)
+                );
+            }
+        }
+        for (id, (start, length, size, needs, pin, weight, never)) in
+            self.requests.iter().enumerate()
+        {
+            let _ = writeln!(
+                text,
+                "[[request]]\nid = \"r{id}\"\nstart = {}\nlength = \"{length}m\"\nsize = {size}\nweight = {weight}",
+                at(*start)
+            );
+            if *needs {
+                text.push_str("needs = [\"projector\"]\n");
+            }
+            if let Some(pin) = pin {
+                let _ = writeln!(text, "pin = \"room-{pin}\"");
+            }
+            if let Some(never) = never {
+                let _ = writeln!(text, "never = [\"room-{never}\"]");
+            }
+        }
+        text
+    }
+
+    fn usable(&self, request: usize, room: usize) -> bool {
+        let (start, length, size, needs, pin, _, never) = self.requests[request];
+        let (seats, projector, after) = self.rooms[room];
+        let closed = self.closed.is_some_and(|(closed, from, to)| {
+            closed == room && start < to && from < start + length + after
+        });
+        size <= seats
+            && (projector || !needs)
+            && pin.is_none_or(|pin| pin == room)
+            && never != Some(room)
+            && !closed
+    }
+
+    fn collide(&self, a: usize, b: usize, room: usize) -> bool {
+        let after = self.rooms[room].2;
+        let ((a, la), (b, lb)) = (
+            (self.requests[a].0, self.requests[a].1),
+            (self.requests[b].0, self.requests[b].1),
+        );
+        a < b + lb + after && b < a + la + after
+    }
+
+    /// Least weight unplaced, then fewest rooms, by trying everything.
+    fn best(&self) -> (u64, usize) {
+        fn go(
+            tiny: &Tiny,
+            at: usize,
+            on: &mut Vec<Option<usize>>,
+            left: u64,
+            best: &mut (u64, usize),
+        ) {
+            let used: std::collections::BTreeSet<usize> = on.iter().flatten().copied().collect();
+            if (left, used.len()) >= *best {
+                return;
+            }
+            if at == tiny.requests.len() {
+                *best = (left, used.len());
+                return;
+            }
+            for room in 0..tiny.rooms.len() {
+                let free =
+                    (0..at).all(|other| on[other] != Some(room) || !tiny.collide(other, at, room));
+                if tiny.usable(at, room) && free {
+                    on.push(Some(room));
+                    go(tiny, at + 1, on, left, best);
+                    on.pop();
+                }
+            }
+            on.push(None);
+            go(tiny, at + 1, on, left + tiny.requests[at].5, best);
+            on.pop();
+        }
+        let mut best = (u64::MAX, usize::MAX);
+        go(self, 0, &mut Vec::new(), 0, &mut best);
+        best
+    }
+}
+
+fn tiny() -> impl Strategy<Value = Tiny> {
+    let rooms = prop::collection::vec(
+        (
+            1u32..4,
+            any::<bool>(),
+            prop::sample::select(vec![0i64, 0, 10]),
+        ),
+        1..4,
+    );
+    rooms.prop_flat_map(|rooms| {
+        let count = rooms.len();
+        let request = (
+            (0i64..24).prop_map(|x| x * 10),
+            (1i64..9).prop_map(|x| x * 10),
+            0u32..4,
+            prop::bool::weighted(0.2),
+            prop::option::weighted(0.2, 0..count),
+            1u64..4,
+            prop::option::weighted(0.1, 0..count),
+        );
+        let closed = prop::option::weighted(
+            0.2,
+            (0..count, 0i64..120).prop_map(|(room, from)| (room, from, from + 45)),
+        );
+        (Just(rooms), prop::collection::vec(request, 0..8), closed).prop_map(
+            |(rooms, requests, closed)| Tiny {
+                rooms,
+                requests,
+                closed,
+            },
+        )
+    })
+}
+
+proptest! {
+    #![proptest_config(ProptestConfig::with_cases(400))]
+    /// Whatever is called proved is the truth, floors are never too high, and on cases this
+    /// small the search leaves out the least and, with everything placed, uses the fewest,
+    /// even where it cannot prove it.
+    #[test]
+    fn agrees_with_brute_force(tiny in tiny()) {
+        let settled = solve(&timetable(&tiny.text()), 20_000);
+        let receipt = settled.receipt();
+        let (left, used) = tiny.best();
+        prop_assert_eq!(receipt.unplaced_weight(), left);
+        // With something left out, the count of the rest is best effort.
+        prop_assert!(receipt.in_use() == used || left > 0);
+        prop_assert!(receipt.unplaced_floor() <= left);
+        match receipt.knowledge() {
+            Knowledge::Proved(proved) => prop_assert_eq!((0, proved.count()), (left, used)),
+            Knowledge::Between { floor, .. } => prop_assert!(left > 0 || floor <= used),
+            Knowledge::Impossible { least, .. } => {
+                prop_assert!(left > 0);
+                prop_assert!(!least || receipt.unplaced_weight() == left);
+            }
+        }
+    }
+
+    /// The same seed and steps give the same answer on one thread.
+    #[test]
+    fn the_same_seed_gives_the_same_answer(tiny in tiny()) {
+        let timetable = timetable(&tiny.text());
+        let (one, other) = (solve(&timetable, 3_000), solve(&timetable, 3_000));
+        prop_assert_eq!(&one.answer().plan, &other.answer().plan);
+        prop_assert_eq!(&one.answer().floor, &other.answer().floor);
+    }
+
+    /// The fewest rooms by an integer programme in the microlp library: one variable per
+    /// request and room, one per room, one row per room and maximal clique.
+    #[test]
+    fn agrees_with_an_integer_programme(tiny in tiny().prop_filter("all can be placed", |t| t.best().0 == 0)) {
+        use microlp::{ComparisonOp, OptimizationDirection, Problem};
+        let mut problem = Problem::new(OptimizationDirection::Minimize);
+        let rooms: Vec<_> = tiny.rooms.iter().map(|_| problem.add_binary_var(1.0)).collect();
+        let takes: Vec<Vec<_>> = (0..tiny.requests.len())
+            .map(|r| (0..rooms.len()).map(|room| tiny.usable(r, room).then(|| problem.add_binary_var(0.0))).collect())
+            .collect();
+        for row in &takes {
+            let row: Vec<_> = row.iter().flatten().map(|v| (*v, 1.0)).collect();
+            problem.add_constraint(row, ComparisonOp::Eq, 1.0);
+        }
+        for room in 0..rooms.len() {
+            // Pieces that collide there run together at the start of one of them.
+            for r in 0..tiny.requests.len() {
+                let running = (0..tiny.requests.len()).filter(|other| {
+                    let (start, length) = (tiny.requests[*other].0, tiny.requests[*other].1 + tiny.rooms[room].2);
+                    (start..start + length).contains(&tiny.requests[r].0)
+                });
+                let mut row: Vec<_> = running.filter_map(|other| takes[other][room]).map(|v| (v, 1.0)).collect();
+                row.push((rooms[room], -1.0));
+                problem.add_constraint(row, ComparisonOp::Le, 0.0);
+            }
+        }
+        let solution = problem.solve().unwrap().into_solution().unwrap();
+        let settled = solve(&timetable(&tiny.text()), 20_000);
+        prop_assert_eq!(settled.receipt().in_use(), solution.objective().round() as usize);
+        prop_assert_eq!(settled.receipt().unplaced(), 0);
+    }
+}
+
+/// Instances with a known answer: `k` rooms are each filled without a gap over a day, so at
+/// every moment exactly `k` pieces run and no plan can do with fewer; sizes follow the rooms.
+#[test]
+fn generated_with_a_known_answer() {
+    let mut state: u64 = 7;
+    let mut random = |below: u64| {
+        state = state
+            .wrapping_mul(6_364_136_223_846_793_005)
+            .wrapping_add(1_442_695_040_888_963_407);
+        (state >> 33) % below
+    };
+    for k in [3, 8, 20] {
+        let mut tiny = Tiny {
+            rooms: Vec::new(),
+            requests: Vec::new(),
+            closed: None,
+        };
+        for room in 0..k {
+            tiny.rooms.push((10 * (room as u32 + 1), true, 0));
+            let mut at = 0;
+            while at < 600 {
+                let length = (20 + 10 * random(9) as i64).min(600 - at);
+                let size = 10 * (room as u32 + 1) - random(9) as u32;
+                tiny.requests.push((at, length, size, false, None, 1, None));
+                at += length;
+            }
+        }
+        let settled = solve(&timetable(&tiny.text()), 2_000_000);
+        assert!(
+            matches!(settled.receipt().knowledge(), Knowledge::Proved(p) if p.count() == k),
+            "{k}: {:?}",
+            settled.receipt()
+        );
+    }
+}
