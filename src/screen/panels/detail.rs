@@ -196,19 +196,20 @@ fn held(model: &Model, carry: &Carry, piece: &Piece) -> (String, Tone) {
     let over = carry.over.map_or_else(String::new, |over| {
         format!(" over {}", carry.timetable.resources().all[over].id)
     });
+    let when = |at| zone.civil(at).format("%a %d %b %H:%M").to_string();
     let from = if carry.start == carry.home_start {
         String::new()
+    } else if zone.date(carry.start) == zone.date(carry.home_start) {
+        format!(", was {}", zone.time(carry.home_start))
     } else {
-        format!(" (was {})", zone.print(carry.home_start))
+        format!(", was {}", when(carry.home_start))
     };
-    (
-        format!(
-            "carrying {}{over}, start {}{from}",
-            piece.id,
-            zone.print(carry.start)
-        ),
-        Tone::Head,
-    )
+    let text = format!(
+        "carrying {}{over}: starts {}{from}",
+        piece.id,
+        when(carry.start)
+    );
+    (text, Tone::Head)
 }
 
 /// What speaks against dropping it here; it may be dropped all the same.
