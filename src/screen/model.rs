@@ -142,6 +142,8 @@ pub struct Model {
     /// What `now` means.
     pub now: Instant,
     seen: bool,
+    /// Whether the view shows a whole day and should go on doing so at another size.
+    pub fitted: bool,
 }
 
 /// Generations of previews, apart from those of the desk.
@@ -168,6 +170,7 @@ impl Model {
             progress: Progress::Searching,
             now: Instant(0),
             seen: false,
+            fitted: true,
         };
         if !model.desk.warnings.is_empty() {
             let count = model.desk.warnings.len();
@@ -277,6 +280,16 @@ impl Model {
         }
         let start = Instant(start.0.div_euclid(3600) * 3600);
         self.view = View::showing(Span { start, end }, self.areas().time.width);
+        self.fitted = true;
+    }
+
+    /// Another size: a day that was fitted to the old one is fitted to the new one.
+    pub fn resized(&mut self, columns: u16, rows: u16) {
+        self.size = (columns, rows);
+        if self.fitted && !self.rows.pieces.is_empty() {
+            self.show_day(self.at);
+        }
+        self.keep_in_sight();
     }
 
     /// Takes a piece that runs at a moment, from the topmost row that has one.

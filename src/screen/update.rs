@@ -67,8 +67,7 @@ pub fn update(model: &mut Model, msg: Msg) -> Vec<Effect> {
             Vec::new()
         }
         Msg::Resize(columns, rows) => {
-            model.size = (columns, rows);
-            model.keep_in_sight();
+            model.resized(columns, rows);
             Vec::new()
         }
         Msg::Solver(event) => heard(model, event),
@@ -401,8 +400,7 @@ fn acting(model: &mut Model, action: Action) -> Vec<Effect> {
         Action::DayAfter => another_day(model, true),
         Action::NextPeak => peak(model, true),
         Action::PeakBefore => peak(model, false),
-        Action::Closer => model.view = model.view.zoomed(true, model.at),
-        Action::Wider => model.view = model.view.zoomed(false, model.at),
+        Action::Closer | Action::Wider => zoom(model, action == Action::Closer),
         Action::Find => {
             model.mode = Mode::Find(Find::default());
             look_up(model);
@@ -425,6 +423,11 @@ fn acting(model: &mut Model, action: Action) -> Vec<Effect> {
     }
     model.keep_in_sight();
     Vec::new()
+}
+
+fn zoom(model: &mut Model, closer: bool) {
+    model.view = model.view.zoomed(closer, model.at);
+    model.fitted = false;
 }
 
 fn page(model: &Model) -> usize {
@@ -678,7 +681,7 @@ fn carrying(model: &mut Model, action: Action) -> Vec<Effect> {
             vec![Effect::Submit(Box::new(model.desk.job()))]
         }
         Action::Closer | Action::Wider => {
-            model.view = model.view.zoomed(action == Action::Closer, model.at);
+            zoom(model, action == Action::Closer);
             Vec::new()
         }
         _ => {

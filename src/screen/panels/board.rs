@@ -249,7 +249,12 @@ fn bar(model: &Model, buffer: &mut Buffer, line: Rect, row: &Row, at: usize, kno
                 close
             },
         );
-        let inside = format!("{}{}", marks(model, piece, known), clean(&piece.id));
+        let mut inside = format!("{}{}", marks(model, piece, known), clean(&piece.id));
+        // Where there is room to spare the title says more than blanks do.
+        if cells > inside.len() + 10 && !piece.request.title.is_empty() {
+            let title: String = piece.request.title.chars().take(cells).collect();
+            inside.push_str(&format!("  {title}"));
+        }
         format!("{open}{}{close}", fit(&inside, cells - 2))
     };
     put(buffer, line, left as u16, 0, &text, style);
