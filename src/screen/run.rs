@@ -70,15 +70,22 @@ pub(super) fn run(mut model: Model, break_after_first_frame: bool) -> Outcome {
         waiting: Some(Watch::now() + FIRST_ANSWER_WITHIN),
     };
     let code = loop_.turn(break_after_first_frame);
-    if code != 128 + SIGHUP as u8 {
+    let err = loop_.rescue(code);
+    if code == GONE {
+        // Nothing may be written to a terminal that is no more, not even by a destructor.
+        std::mem::forget(loop_.screen);
+    } else {
         leave();
     }
     Outcome {
         code,
-        err: loop_.rescue(code),
+        err,
         ..Outcome::default()
     }
 }
+
+/// The exit code when the terminal is gone.
+const GONE: u8 = 128 + SIGHUP as u8;
 
 struct Loop {
     model: Model,
@@ -99,7 +106,7 @@ impl Loop {
             }
             if self.dirty {
                 if self.draw().is_err() {
-                    return 128 + SIGHUP as u8;
+                    return GONE;
                 }
                 if break_after_first_frame {
                     panic!("broken on purpose");
@@ -125,7 +132,7 @@ impl Loop {
             self.model.now = Instant(chrono::Utc::now().timestamp());
             let effects = match next {
                 Wake::Signal(signal) => return Some(128 + signal as u8),
-                Wake::Gone => return Some(128 + SIGHUP as u8),
+                Wake::Gone => return Some(GONE),
                 Wake::Msg(msg) => {
                     if matches!(msg, Msg::Solver(Event::Settled(_))) {
                         self.waiting = None;
@@ -181,7 +188,7 @@ impl Loop {
                 let _ = signal_hook::low_level::emulate_default_handler(SIGTSTP);
                 match enter() {
                     Ok(screen) => self.screen = screen,
-                    Err(_) => return Some(128 + SIGHUP as u8),
+                    Err(_) => return Some(GONE),
                 }
                 self.redraw();
             }

@@ -176,7 +176,7 @@ impl<'a> Making<'a> {
     }
 
     /// Members of an open-ended kind that some plan could ever use: one for every piece of
-    /// the largest load, beside those that a pin or a table of their own names.
+    /// the largest load, beside those that a pin, a wish or a table of their own names.
     fn needed(&self, kind: &Kind) -> Vec<u32> {
         let number = |id: &str| member_number(&kind.id, id);
         let mut stated: HashSet<u32> = HashSet::new();
@@ -188,7 +188,12 @@ impl<'a> Making<'a> {
             .iter()
             .filter(|request| !request.withdrawn)
         {
-            stated.extend(request.pin.as_deref().and_then(number));
+            let names = request
+                .only
+                .iter()
+                .chain(&request.never)
+                .chain(&request.pin);
+            stated.extend(names.filter_map(|name| number(name)));
             let setup = request
                 .setup
                 .or(kind.common.setup)

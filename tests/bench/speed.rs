@@ -1,2 +1,231 @@
-//! wip
-fn main() {}
+//! Speed and memory, as ratios within one run and as medians.
+//!
+//! `cargo bench` prints, beside criterion's own figures, the ratio of the bound, the count
+//! and the placed plan to sorting the same spans, the peak memory so far, and the time from
+//! an edit to a redrawn 120x40 frame. No test depends on any of it.
+#![allow(clippy::unwrap_used, reason = "a benchmark may panic")]
+#![allow(clippy::print_stdout, reason = "a benchmark prints what it measures")]
+#![allow(missing_docs, reason = "criterion generates undocumented functions")]
+
+use criterion::{BenchmarkId, Criterion, criterion_group, criterion_main};
+use crossterm::event::{KeyCode, KeyEvent, KeyModifiers};
+use fewest::actions::Keys;
+use fewest::clock::{Instant, Span};
+use fewest::desk::{Desk, Event};
+use fewest::engine::{Budget, Until, bound_and_count, partition};
+use fewest::screen::{Depth, Effect, Model, Msg, Setup, Theme, draw, update};
+use ratatui::Terminal;
+use ratatui::backend::TestBackend;
+use std::fmt::Write;
+use std::hint::black_box;
+use std::time::{Duration, Instant as Watch};
+
+/// Numbers below a bound, from a seed (a linear congruential generator, Knuth's MMIX).
+struct Numbers(u64);
+
+impl Numbers {
+    fn below(&mut self, bound: u64) -> u64 {
+        self.0 = self
+            .0
+            .wrapping_mul(6_364_136_223_846_793_005)
+            .wrapping_add(1_442_695_040_888_963_407);
+        (self.0 >> 33) % bound
+    }
+}
+
+/// Alike spans: starts uniform over a fortnight in five-minute steps, lengths uniform from
+/// 15 minutes to 4 hours.
+fn spans(count: usize) -> Vec<Span> {
+    let mut numbers = Numbers(42);
+    (0..count)
+        .map(|_| {
+            let start = Instant(numbers.below(14 * 288) as i64 * 300);
+            Span::lasting(start, 900 * (1 + numbers.below(16)) as i64)
+        })
+        .collect()
+}
+
+/// The median time of a piece of work in seconds.
+fn median(rounds: usize, mut work: impl FnMut()) -> f64 {
+    let mut times: Vec<Duration> = (0..rounds)
+        .map(|_| {
+            let watch = Watch::now();
+            work();
+            watch.elapsed()
+        })
+        .collect();
+    times.sort_unstable();
+    times[rounds / 2].as_secs_f64()
+}
+
+/// Peak resident memory of this process so far, in MiB; 0 where the system does not say.
+fn peak_memory() -> u64 {
+    let status = std::fs::read_to_string("/proc/self/status").unwrap_or_default();
+    let line = status.lines().find_map(|line| line.strip_prefix("VmHWM:"));
+    line.and_then(|line| line.trim().trim_end_matches(" kB").parse::<u64>().ok())
+        .unwrap_or(0)
+        >> 10
+}
+
+fn alike(criterion: &mut Criterion) {
+    println!(
+        "\nalike, times over sorting the same spans (bound and count: at most 3; placed plan: at most 8)"
+    );
+    println!(
+        "{:>8} {:>10} {:>10} {:>10} {:>10}",
+        "spans", "sort us", "count", "placed", "peak MiB"
+    );
+    for count in [1_000, 10_000, 100_000] {
+        let spans = spans(count);
+        let rounds = 2_000_000 / count;
+        let sort = median(rounds, || {
+            let mut sorted = spans.clone();
+            sorted.sort_unstable();
+            black_box(sorted);
+        });
+        let bound = median(rounds, || _ = black_box(bound_and_count(black_box(&spans))));
+        let placed = median(rounds, || _ = black_box(partition(black_box(&spans))));
+        println!(
+            "{count:>8} {:>10.0} {:>10.2} {:>10.2} {:>10}",
+            sort * 1e6,
+            bound / sort,
+            placed / sort,
+            peak_memory()
+        );
+    }
+    let mut group = criterion.benchmark_group("alike");
+    for count in [1_000, 10_000, 100_000] {
+        let spans = spans(count);
+        group.bench_with_input(BenchmarkId::new("sort", count), &spans, |bencher, spans| {
+            bencher.iter(|| {
+                let mut sorted = spans.clone();
+                sorted.sort_unstable();
+                sorted
+            });
+        });
+        group.bench_with_input(
+            BenchmarkId::new("bound and count", count),
+            &spans,
+            |bencher, spans| {
+                bencher.iter(|| bound_and_count(spans));
+            },
+        );
+        group.bench_with_input(
+            BenchmarkId::new("placed plan", count),
+            &spans,
+            |bencher, spans| {
+                bencher.iter(|| partition(spans));
+            },
+        );
+    }
+    group.finish();
+}
+
+/// A desk of so many requests: alike as needed, or on 300 rooms of 12 sizes with openings.
+fn timetable(count: usize, rooms: bool) -> String {
+    let mut text = "[timetable]\ntitle = \"Speed\"\nnoun = [\"room\", \"rooms\"]\n".to_string();
+    if rooms {
+        for room in 0..300 {
+            let seats = 20 * (1 + room % 12);
+            let _ = writeln!(
+                text,
+                "[[resource]]\nid = \"hall-{room}\"\nseats = {seats}\nopen = [{{ from = \"07:00\", to = \"23:00\" }}]"
+            );
+        }
+    }
+    let mut numbers = Numbers(7);
+    for request in 0..count {
+        let (day, minute) = (1 + numbers.below(14), 480 + 5 * numbers.below(132));
+        let _ = writeln!(
+            text,
+            "[[request]]\nid = \"r{request}\"\ntitle = \"Request number {request}\"\nstart = 2027-01-{day:02}T{:02}:{:02}:00\nlength = \"{}m\"\nsize = {}\npeople = [\"person-{}\"]",
+            minute / 60,
+            minute % 60,
+            15 * (1 + numbers.below(8)),
+            5 + numbers.below(150),
+            numbers.below(3_000)
+        );
+    }
+    text
+}
+
+fn model(text: &str) -> (tempfile::TempDir, Model) {
+    let folder = tempfile::tempdir().unwrap();
+    let path = folder.path().join("speed.toml");
+    std::fs::write(&path, text).unwrap();
+    let theme = Theme::named("daylight", Depth::Palette).unwrap().unwrap();
+    let setup = Setup {
+        theme,
+        keys: Keys::default(),
+        ascii: false,
+    };
+    (folder, Model::new(Desk::open(&path).unwrap(), setup))
+}
+
+/// Does what the screen does with its effects, solving on the spot: up to the first answer.
+fn perform(model: &mut Model, effects: Vec<Effect>) {
+    for effect in effects {
+        if let Effect::Submit(job) = effect {
+            // The first answer is what the frame shows; the search would go on behind it.
+            let mut first = None;
+            let _ = job.run(Budget::default(), &Until(Watch::now()), &mut |settled| {
+                first.get_or_insert_with(|| settled.clone());
+            });
+            update(model, Msg::Solver(Event::Settled(first.unwrap())));
+        }
+    }
+}
+
+fn key(model: &mut Model, code: KeyCode) {
+    let effects = update(model, Msg::Key(KeyEvent::new(code, KeyModifiers::NONE)));
+    perform(model, effects);
+}
+
+fn edit_to_frame(_: &mut Criterion) {
+    println!(
+        "\nfrom an edit to a redrawn 120x40 frame, 10,000 requests, without the disk (at most 16 ms median)"
+    );
+    println!(
+        "{:>16} {:>12} {:>12} {:>10}",
+        "resources", "median ms", "p99 ms", "peak MiB"
+    );
+    for (name, rooms) in [("alike, as needed", false), ("300 unlike", true)] {
+        let (_folder, mut model) = model(&timetable(10_000, rooms));
+        let mut terminal = Terminal::new(TestBackend::new(120, 40)).unwrap();
+        update(&mut model, Msg::Resize(120, 40));
+        let job = model.desk.job();
+        perform(&mut model, vec![Effect::Submit(Box::new(job))]);
+        let mut numbers = Numbers(3);
+        let mut times = Vec::new();
+        for _ in 0..200 {
+            let line = format!(
+                ":move r{} by {}5m",
+                numbers.below(10_000),
+                if numbers.below(2) == 0 { "-" } else { "+" }
+            );
+            for c in line.chars() {
+                key(&mut model, KeyCode::Char(c));
+            }
+            let watch = Watch::now();
+            key(&mut model, KeyCode::Enter);
+            terminal.draw(|frame| draw(&model, frame)).unwrap();
+            times.push(watch.elapsed());
+        }
+        times.sort_unstable();
+        let at = |share: usize| times[times.len() * share / 100].as_secs_f64() * 1e3;
+        println!(
+            "{name:>16} {:>12.2} {:>12.2} {:>10}",
+            at(50),
+            at(99),
+            peak_memory()
+        );
+        assert!(model.desk.unsaved() > 100, "the edits were made");
+    }
+}
+
+criterion_group! {
+    name = benches;
+    config = Criterion::default().sample_size(20).measurement_time(Duration::from_secs(2)).without_plots();
+    targets = alike, edit_to_frame
+}
+criterion_main!(benches);
