@@ -3,7 +3,8 @@
 //!
 //! The modules, from the ground up; each imports only from those above it in this list:
 //!
-//! - [`clock`] instants, spans, civil time; [`text`] cleaning and width of untrusted text
+//! - [`clock`] instants, spans, civil time; [`text`] cleaning and width of untrusted text;
+//!   [`lookup`] maps by id
 //! - [`timetable`] what is stated
 //! - [`edit`] the language of changes
 //! - [`claim`] what is answered, as data
@@ -27,6 +28,7 @@ pub mod document;
 pub mod edit;
 pub mod engine;
 pub mod intake;
+pub mod lookup;
 pub mod overlap;
 pub mod screen;
 pub mod store;

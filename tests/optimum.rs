@@ -6,13 +6,15 @@ use fewest::audit::Knowledge;
 use proptest::prelude::*;
 use std::fmt::Write;
 
+/// Start, length, size, needs the projector, pin, weight, never.
+type Wanted = (i64, i64, u32, bool, Option<usize>, u64, Option<usize>);
+
 /// A tiny timetable, as plain numbers: the oracle reads these, the program reads the text.
 #[derive(Clone, Debug)]
 struct Tiny {
     /// Per room: seats, has a projector, minutes kept free after.
     rooms: Vec<(u32, bool, i64)>,
-    /// Per request: start, length, size, needs the projector, pin, weight, never.
-    requests: Vec<(i64, i64, u32, bool, Option<usize>, u64, Option<usize>)>,
+    requests: Vec<Wanted>,
     /// One room closed from..to.
     closed: Option<(usize, i64, i64)>,
 }

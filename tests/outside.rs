@@ -13,7 +13,8 @@ use std::path::Path;
 /// of the figure).
 #[test]
 fn small_published_examples() {
-    let cases: [(&str, &[(i64, i64)], usize); 6] = [
+    type Case = (&'static str, &'static [(i64, i64)], usize);
+    let cases: [Case; 6] = [
         (
             "three meetings, two rooms",
             &[(0, 30), (5, 10), (15, 20)],

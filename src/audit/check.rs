@@ -4,8 +4,9 @@
 use super::{Receipt, Refusal};
 use crate::claim::{Answer, FloorProof, HallViolation, Plan};
 use crate::clock::{Instant, Span};
+use crate::lookup::FastMap;
 use crate::timetable::{Piece, Resource, Timetable};
-use std::collections::{HashMap, HashSet};
+use std::collections::HashSet;
 use std::sync::Arc;
 
 /// Checks a whole answer: the plan, the floor, the violations.
@@ -85,7 +86,7 @@ pub fn check_violations(
 struct Facts<'a> {
     timetable: &'a Timetable,
     all: Vec<Piece>,
-    places: HashMap<Arc<str>, usize>,
+    places: FastMap<Arc<str>, usize>,
 }
 
 impl<'a> Facts<'a> {

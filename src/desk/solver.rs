@@ -56,7 +56,7 @@ impl Job {
         let reference = self
             .reference
             .as_ref()
-            .map(|plan| Reference::of(&problem, plan));
+            .map(|plan| Reference::of(&problem, &self.timetable, plan));
         let survey = Arc::new(Survey::of(self.timetable, pieces, &problem));
         let mut last: Result<Option<Arc<Settled>>, String> = Ok(None);
         let mut check = |answer: &Answer| {

@@ -2,8 +2,9 @@
 //! which class.
 
 use crate::clock::{Instant, Span};
+use crate::lookup::{FastMap, FastSet};
 use crate::timetable::{Hours, Piece, Resource, Timetable, Wishes, may_use, suits};
-use std::collections::{HashMap, HashSet};
+use std::collections::HashMap;
 use std::sync::Arc;
 
 /// Resources that no item can tell apart. A member that somebody is pinned on has a class
@@ -46,8 +47,6 @@ pub struct Problem {
     /// The ids of the resources.
     pub resources: Vec<Arc<str>>,
     choices: Vec<u32>,
-    /// Where each resource is, by id, for reading references.
-    places: HashMap<Arc<str>, u32>,
 }
 
 impl Problem {
@@ -80,9 +79,7 @@ impl Problem {
                 .map(|resource| Arc::clone(&resource.id))
                 .collect(),
             choices: Vec::new(),
-            places: HashMap::new(),
         };
-        problem.places = problem.resources.iter().cloned().zip(0..).collect();
         problem.fill(timetable, &pieces, &pins);
         problem
     }
@@ -95,7 +92,7 @@ impl Problem {
             .map(|class| &all[class.members[0] as usize])
             .collect();
         // Most pieces say the same of themselves as many others.
-        let mut suited: HashMap<Wishes<'_>, Vec<u32>> = HashMap::new();
+        let mut suited: FastMap<Wishes<'_>, Vec<u32>> = FastMap::default();
         for (piece, pin) in pieces.iter().zip(pins) {
             let from = self.choices.len() as u32;
             if let Some(pin) = pin {
@@ -178,11 +175,6 @@ impl Problem {
         self.items.iter().map(|item| item.core).collect()
     }
 
-    /// The place of a resource, by id.
-    pub fn place(&self, resource: &str) -> Option<u32> {
-        self.places.get(resource).copied()
-    }
-
     /// Items that run at a moment with their least buffers.
     pub fn running(&self, at: Instant) -> impl Iterator<Item = usize> + '_ {
         (0..self.items.len()).filter(move |item| self.items[*item].core.contains(at))
@@ -208,8 +200,8 @@ fn classify(
     pieces: &[&Piece],
     pins: &[Option<&Arc<str>>],
 ) -> (Vec<Class>, Vec<u32>) {
-    let mut pinned: HashSet<&str> = HashSet::new();
-    let mut spoken_of: HashSet<&str> = HashSet::new();
+    let mut pinned: FastSet<&str> = FastSet::default();
+    let mut spoken_of: FastSet<&str> = FastSet::default();
     for (piece, pin) in pieces.iter().zip(pins) {
         pinned.extend(pin.iter().map(|pin| pin.as_ref()));
         let names = piece.request.only.iter().chain(&piece.request.never);

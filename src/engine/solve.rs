@@ -5,6 +5,8 @@ use super::bounds::{clique, hall, incompatible};
 use super::plans::{Assignment, NONE, align, alike, greedy, keep, rows, tabu};
 use super::{Problem, Stopper};
 use crate::claim::{Answer, FloorProof, HallViolation, Placement, Plan, Reason, Unplaced};
+use crate::lookup::FastMap;
+use crate::timetable::Timetable;
 use std::sync::Arc;
 use std::sync::Mutex;
 use std::time::Instant;
@@ -22,22 +24,37 @@ pub(crate) struct Kept {
 pub struct Reference(pub(crate) Vec<Kept>);
 
 impl Reference {
-    /// The reference that a plan gives for a problem.
-    pub fn of(problem: &Problem, plan: &Plan) -> Reference {
-        let before: std::collections::HashMap<&str, &Placement> = plan
-            .placements
+    /// The reference that a plan gives for a problem of that timetable.
+    pub fn of(problem: &Problem, timetable: &Timetable, plan: &Plan) -> Reference {
+        let resources = timetable.resources();
+        // Placements are listed in the order of the items, as a rule; the map is for the rest.
+        let mut before: FastMap<&str, &Placement> = FastMap::default();
+        let in_order = plan.placements.len() == problem.ids.len()
+            && problem
+                .ids
+                .iter()
+                .zip(&plan.placements)
+                .all(|(id, p)| *id == p.piece);
+        if !in_order {
+            before.extend(plan.placements.iter().map(|p| (&*p.piece, p)));
+        }
+        let kept = problem
+            .ids
             .iter()
-            .map(|placement| (&*placement.piece, placement))
-            .collect();
-        let kept = problem.ids.iter().zip(&problem.items).map(|(id, item)| {
-            let placement = before.get(&**id);
-            Kept {
-                resource: placement
-                    .and_then(|p| problem.place(&p.resource))
-                    .unwrap_or(NONE),
-                changed: placement.is_none_or(|p| p.span != item.span),
-            }
-        });
+            .zip(&problem.items)
+            .enumerate()
+            .map(|(at, (id, item))| {
+                let placement = if in_order {
+                    plan.placements.get(at)
+                } else {
+                    before.get(&**id).copied()
+                };
+                let place = placement.and_then(|p| resources.position(&p.resource));
+                Kept {
+                    resource: place.map_or(NONE, |place| place as u32),
+                    changed: placement.is_none_or(|p| p.span != item.span),
+                }
+            });
         Reference(kept.collect())
     }
 }
@@ -91,8 +108,11 @@ pub fn solve(
     solving.first_plan();
     solving.first_floor();
     solving.report();
-    if !solving.settled() {
-        solving.improve(budget, stop);
+    if !solving.settled() && !stop.stop() {
+        solving.second_plan(stop);
+        if !solving.settled() {
+            solving.improve(budget, stop);
+        }
     }
     solving.answer()
 }
@@ -116,6 +136,8 @@ impl Solving<'_, '_> {
         )
     }
 
+    /// A plan at once: what was there before, as far as it still fits; where everything is
+    /// alike, the best there is.
     fn first_plan(&mut self) {
         if let Some(reference) = self.reference {
             self.best = keep::near(self.problem, reference);
@@ -123,11 +145,29 @@ impl Solving<'_, '_> {
                 return;
             }
         }
-        let fresh =
-            alike::by_groups(self.problem).unwrap_or_else(|| greedy::tightest_fit(self.problem));
-        if self.reference.is_none() || self.value(&fresh) < self.value(&self.best) {
-            self.take(fresh);
+        if let Some(alike) = alike::by_groups(self.problem) {
+            self.take_if_better(alike);
+        } else if self.reference.is_none() {
+            // Whoever asks gets a whole plan, however little time there is.
+            self.best = greedy::tightest_fit(self.problem, &super::Never);
         }
+    }
+
+    /// A plan from nothing may be better than one that keeps to an earlier plan; it takes
+    /// longer, so it comes after the first answer.
+    fn second_plan(&mut self, stop: &dyn Stopper) {
+        if self.reference.is_some() && self.take_if_better(greedy::tightest_fit(self.problem, stop))
+        {
+            self.report();
+        }
+    }
+
+    fn take_if_better(&mut self, on: Assignment) -> bool {
+        let better = self.value(&on) < self.value(&self.best);
+        if better {
+            self.take(on);
+        }
+        better
     }
 
     /// Makes a plan the best one, named like the reference.
@@ -317,7 +357,9 @@ impl Solving<'_, '_> {
             since_better += slice;
             if let Some(search) = &mut search {
                 if aimed != Some(target) {
-                    search.aim(&self.best, target);
+                    if !search.aim(&self.best, target, stop) {
+                        return;
+                    }
                     aimed = Some(target);
                 }
                 let mut least = left_out;

@@ -1,7 +1,7 @@
 //! Clashes: one person in two overlapping pieces.
 
+use crate::lookup::FastMap;
 use crate::timetable::Piece;
-use std::collections::BTreeMap;
 use std::sync::Arc;
 
 /// One person, two pieces at the same time.
@@ -18,7 +18,7 @@ pub struct Clash {
 /// Every clash among pieces that are not withdrawn, in pairs, by their own times without
 /// buffers; sorted by person. Pieces of one request never clash with each other.
 pub fn clashes(pieces: &[Piece]) -> Vec<Clash> {
-    let mut taking_part: BTreeMap<&Arc<str>, Vec<&Piece>> = BTreeMap::new();
+    let mut taking_part: FastMap<&Arc<str>, Vec<&Piece>> = FastMap::default();
     for piece in pieces.iter().filter(|piece| !piece.withdrawn) {
         for person in &piece.request.people {
             taking_part.entry(person).or_default().push(piece);
@@ -26,6 +26,9 @@ pub fn clashes(pieces: &[Piece]) -> Vec<Clash> {
     }
     let mut found = Vec::new();
     for (person, mut theirs) in taking_part {
+        if theirs.len() < 2 {
+            continue;
+        }
         theirs.sort_by_key(|piece| piece.span);
         for (at, piece) in theirs.iter().enumerate() {
             for other in theirs[at + 1..]
@@ -42,5 +45,6 @@ pub fn clashes(pieces: &[Piece]) -> Vec<Clash> {
             }
         }
     }
+    found.sort_by(|a: &Clash, b: &Clash| a.person.cmp(&b.person));
     found
 }

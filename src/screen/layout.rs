@@ -3,8 +3,8 @@
 use crate::claim::Plan;
 use crate::clock::Span;
 use crate::engine::partition;
+use crate::lookup::FastMap;
 use crate::timetable::{Piece, Timetable};
-use std::collections::HashMap;
 use std::sync::Arc;
 
 /// What a row is.
@@ -52,7 +52,7 @@ impl Rows {
     ) -> Rows {
         let pieces = timetable.pieces();
         let resources = timetable.resources();
-        let planned: HashMap<&str, &Arc<str>> = plan
+        let planned: FastMap<&str, &Arc<str>> = plan
             .map(|plan| {
                 plan.placements
                     .iter()

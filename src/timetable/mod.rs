@@ -20,7 +20,7 @@ pub(crate) use resources::member_number;
 pub use resources::{Resource, Resources};
 pub use stated::{Common, Count, Kind, Listed, Named, Noun, Request, Settings, TimeStated};
 
-use std::collections::HashMap;
+use crate::lookup::FastMap;
 use std::sync::Arc;
 
 /// A whole timetable as stated.
@@ -37,7 +37,7 @@ pub struct Timetable {
     /// The requests, in file order.
     pub requests: Vec<Arc<Request>>,
     /// Where each request is in `requests`, by id.
-    ids: Arc<HashMap<Arc<str>, usize>>,
+    ids: Arc<FastMap<Arc<str>, usize>>,
     /// What there is to hand out; follows from the rest.
     resources: Arc<Resources>,
 }
@@ -64,7 +64,8 @@ impl Timetable {
         requests: Vec<Request>,
     ) -> Timetable {
         let requests: Vec<Arc<Request>> = requests.into_iter().map(Arc::new).collect();
-        let mut ids = HashMap::with_capacity(requests.len());
+        let mut ids = FastMap::default();
+        ids.reserve(requests.len());
         for (at, request) in requests.iter().enumerate() {
             ids.entry(Arc::clone(&request.id)).or_insert(at);
         }

@@ -2,6 +2,7 @@
 
 use super::{Closure, Common, Count, Hours, Kind, Listed, Named, Opening, Timetable};
 use crate::clock::{DAY, Instant, Span};
+use crate::lookup::FastMap;
 use std::collections::{HashMap, HashSet};
 use std::sync::Arc;
 
@@ -33,7 +34,7 @@ pub struct Resource {
 pub struct Resources {
     /// In listed order; of a kind that grows as needed, as many as could ever be used.
     pub all: Vec<Resource>,
-    by_id: HashMap<Arc<str>, usize>,
+    by_id: FastMap<Arc<str>, usize>,
     /// Whether any kind grows as needed.
     pub open_ended: bool,
 }

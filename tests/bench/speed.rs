@@ -11,13 +11,14 @@ use criterion::{BenchmarkId, Criterion, criterion_group, criterion_main};
 use crossterm::event::{KeyCode, KeyEvent, KeyModifiers};
 use fewest::actions::Keys;
 use fewest::clock::{Instant, Span};
-use fewest::desk::{Desk, Event};
-use fewest::engine::{Budget, Until, bound_and_count, partition};
+use fewest::desk::{Desk, Event, Solver};
+use fewest::engine::{bound_and_count, partition};
 use fewest::screen::{Depth, Effect, Model, Msg, Setup, Theme, draw, update};
 use ratatui::Terminal;
 use ratatui::backend::TestBackend;
 use std::fmt::Write;
 use std::hint::black_box;
+use std::sync::mpsc::{Receiver, channel};
 use std::time::{Duration, Instant as Watch};
 
 /// Numbers below a bound, from a seed (a linear congruential generator, Knuth's MMIX).
@@ -162,23 +163,46 @@ fn model(text: &str) -> (tempfile::TempDir, Model) {
     (folder, Model::new(Desk::open(&path).unwrap(), setup))
 }
 
-/// Does what the screen does with its effects, solving on the spot: up to the first answer.
-fn perform(model: &mut Model, effects: Vec<Effect>) {
-    for effect in effects {
-        if let Effect::Submit(job) = effect {
-            // The first answer is what the frame shows; the search would go on behind it.
-            let mut first = None;
-            let _ = job.run(Budget::default(), &Until(Watch::now()), &mut |settled| {
-                first.get_or_insert_with(|| settled.clone());
-            });
-            update(model, Msg::Solver(Event::Settled(first.unwrap())));
-        }
-    }
+/// A screen with its solver, as the program runs them.
+struct Running {
+    model: Model,
+    solver: Solver,
+    told: Receiver<Event>,
 }
 
-fn key(model: &mut Model, code: KeyCode) {
-    let effects = update(model, Msg::Key(KeyEvent::new(code, KeyModifiers::NONE)));
-    perform(model, effects);
+impl Running {
+    fn new(model: Model) -> Running {
+        let (tell, told) = channel();
+        let solver = Solver::start(move |event| {
+            let _ = tell.send(event);
+        });
+        Running {
+            model,
+            solver,
+            told,
+        }
+    }
+
+    /// A key, and the first answer to what it did.
+    fn key(&mut self, code: KeyCode) {
+        let effects = update(
+            &mut self.model,
+            Msg::Key(KeyEvent::new(code, KeyModifiers::NONE)),
+        );
+        self.perform(effects);
+    }
+
+    fn perform(&mut self, effects: Vec<Effect>) {
+        for effect in effects {
+            if let Effect::Submit(job) = effect {
+                self.solver.submit(*job);
+                while !self.model.desk.is_current() {
+                    let event = self.told.recv().unwrap();
+                    update(&mut self.model, Msg::Solver(event));
+                }
+            }
+        }
+    }
 }
 
 fn edit_to_frame(_: &mut Criterion) {
@@ -190,11 +214,12 @@ fn edit_to_frame(_: &mut Criterion) {
         "resources", "median ms", "p99 ms", "peak MiB"
     );
     for (name, rooms) in [("alike, as needed", false), ("300 unlike", true)] {
-        let (_folder, mut model) = model(&timetable(10_000, rooms));
+        let (_folder, model) = model(&timetable(10_000, rooms));
+        let mut running = Running::new(model);
         let mut terminal = Terminal::new(TestBackend::new(120, 40)).unwrap();
-        update(&mut model, Msg::Resize(120, 40));
-        let job = model.desk.job();
-        perform(&mut model, vec![Effect::Submit(Box::new(job))]);
+        update(&mut running.model, Msg::Resize(120, 40));
+        let job = running.model.desk.job();
+        running.perform(vec![Effect::Submit(Box::new(job))]);
         let mut numbers = Numbers(3);
         let mut times = Vec::new();
         for _ in 0..200 {
@@ -204,11 +229,11 @@ fn edit_to_frame(_: &mut Criterion) {
                 if numbers.below(2) == 0 { "-" } else { "+" }
             );
             for c in line.chars() {
-                key(&mut model, KeyCode::Char(c));
+                running.key(KeyCode::Char(c));
             }
             let watch = Watch::now();
-            key(&mut model, KeyCode::Enter);
-            terminal.draw(|frame| draw(&model, frame)).unwrap();
+            running.key(KeyCode::Enter);
+            terminal.draw(|frame| draw(&running.model, frame)).unwrap();
             times.push(watch.elapsed());
         }
         times.sort_unstable();
@@ -219,7 +244,7 @@ fn edit_to_frame(_: &mut Criterion) {
             at(99),
             peak_memory()
         );
-        assert!(model.desk.unsaved() > 100, "the edits were made");
+        assert!(running.model.desk.unsaved() > 100, "the edits were made");
     }
 }
 

@@ -2,10 +2,11 @@
 
 use super::Assignment;
 use super::rows::{Rows, takers};
-use crate::engine::Problem;
+use crate::engine::{Problem, Stopper};
 
-/// A plan by start time; where two start together, the one with fewer choices first.
-pub(crate) fn tightest_fit(problem: &Problem) -> Assignment {
+/// A plan by start time; where two start together, the one with fewer choices first. When
+/// stopped, what is not placed yet stays unplaced.
+pub(crate) fn tightest_fit(problem: &Problem, stop: &dyn Stopper) -> Assignment {
     let takers = takers(problem);
     let mut order: Vec<usize> = (0..problem.items.len()).collect();
     let room = |item: &usize| -> usize {
@@ -19,7 +20,10 @@ pub(crate) fn tightest_fit(problem: &Problem) -> Assignment {
     // Pieces with one choice cannot give way, so they sit first.
     let (single, several): (Vec<usize>, Vec<usize>) =
         order.into_iter().partition(|item| room(item) == 1);
-    for item in single.into_iter().chain(several) {
+    for (count, item) in single.into_iter().chain(several).enumerate() {
+        if count % 256 == 255 && stop.stop() {
+            break;
+        }
         rows.place_tightest(item, &takers);
     }
     rows.on

@@ -134,9 +134,13 @@ impl<'a> Tabu<'a> {
         })
     }
 
-    /// Takes over a plan and aims at `target` resources; weights stay.
-    pub(crate) fn aim(&mut self, plan: &[u32], target: usize) {
+    /// Takes over a plan and aims at `target` resources; weights stay. `false` when stopped
+    /// before it was done: the search is then of no use.
+    pub(crate) fn aim(&mut self, plan: &[u32], target: usize, stop: &dyn Stopper) -> bool {
         for cost in &mut self.cost {
+            if stop.stop() {
+                return false;
+            }
             cost.fill(0);
         }
         self.rows.iter_mut().for_each(Vec::clear);
@@ -145,6 +149,9 @@ impl<'a> Tabu<'a> {
         self.unplaced.clear();
         self.left_out = 0;
         for (item, resource) in plan.iter().enumerate() {
+            if item % 64 == 63 && stop.stop() {
+                return false;
+            }
             if self.skipped[item] || self.problem.choices(item).is_empty() {
                 continue;
             }
@@ -164,6 +171,7 @@ impl<'a> Tabu<'a> {
             }
         }
         self.rest_unplaced = wanted - resting;
+        true
     }
 
     /// Whether everything has its place, idle stand-ins included.
