@@ -9,8 +9,20 @@ fn main() -> ExitCode {
     let Ok(outcome) = outcome else {
         return ExitCode::from(fewest::cli::code::FAULT);
     };
-    // Whoever closed the pipe has read enough.
     let _ = std::io::stderr().write_all(outcome.err.as_bytes());
-    let _ = std::io::stdout().write_all(outcome.out.as_bytes());
-    ExitCode::from(outcome.code)
+    let mut out = std::io::stdout();
+    match out
+        .write_all(outcome.out.as_bytes())
+        .and_then(|()| out.flush())
+    {
+        Ok(()) => ExitCode::from(outcome.code),
+        // Whoever closed the pipe has read enough.
+        Err(error) if error.kind() == std::io::ErrorKind::BrokenPipe => {
+            ExitCode::from(outcome.code)
+        }
+        Err(error) => {
+            let _ = writeln!(std::io::stderr(), "standard output: {error}");
+            ExitCode::from(fewest::cli::code::FAULT)
+        }
+    }
 }

@@ -58,6 +58,8 @@ fn the_exit_code_says_what_is_known() {
         (vec!["count"], 2),
         (vec!["cuont", &proved], 2),
         (vec!["--help"], 0),
+        (vec!["why", &proved], 2),
+        (vec!["count", &proved, "--unsaved"], 2),
         (vec!["audit", &proved], 3),
         (vec![proved.as_str()], 0),
     ] {
@@ -457,6 +459,153 @@ fn the_core_prints_nothing_and_reads_no_environment() {
             );
         }
     });
+}
+
+#[test]
+fn what_cannot_be_printed_is_not_called_done() {
+    if !Path::new("/dev/full").exists() {
+        return eprintln!("SKIPPED: there is no /dev/full here");
+    }
+    let path = file("sample-timetables/three-day-event.toml");
+    let command = format!(
+        "{} count {} > /dev/full",
+        env!("CARGO_BIN_EXE_fewest"),
+        path.display()
+    );
+    let output = Command::new("sh").args(["-c", &command]).output().unwrap();
+    assert_eq!(output.status.code(), Some(1));
+    assert!(
+        err(&output).starts_with("standard output: "),
+        "{}",
+        err(&output)
+    );
+}
+
+#[test]
+fn later_commands_are_refused_as_not_yet_and_usage_is_clean() {
+    for command in ["why", "ease", "issue", "differs", "handouts", "spoken"] {
+        let output = fewest(&[command, "a.toml"]);
+        assert_eq!(
+            err(&output),
+            format!("\"{command}\" is not yet possible in this version\n")
+        );
+    }
+    let output = fewest(&["count", "\u{1b}[31m", "--bo\u{1b}[31m"]);
+    assert!(
+        err(&output).chars().all(|c| c == '\n' || !c.is_control()),
+        "{:?}",
+        err(&output)
+    );
+}
+
+#[test]
+fn as_many_as_needed_includes_those_that_wishes_name() {
+    let folder = tempfile::tempdir().unwrap();
+    let head = "[timetable]\ntitle = \"never\"\n[[kind]]\nid = \"k\"\ncount = \"as needed\"\n";
+    let text = format!(
+        "{head}{}{}{}",
+        request("a", "never = [\"k-1\"]\n"),
+        request("b", "never = [\"k-1\", \"k-2\"]\n"),
+        request("c", "only = [\"k-6\"]\n")
+    );
+    let path = write(folder.path(), "a.toml", &text);
+    let report: Value =
+        serde_json::from_slice(&fewest(&["count", "--json", &path]).stdout).unwrap();
+    assert_eq!(
+        (&report["state"], &report["in_use"]),
+        (&"proved".into(), &3.into())
+    );
+}
+
+#[test]
+fn the_least_that_stays_out_is_proved_where_all_want_the_same() {
+    let folder = tempfile::tempdir().unwrap();
+    for count in 2..8 {
+        let requests: String = (0..count)
+            .map(|at| request(&format!("r{at}"), ""))
+            .collect();
+        let path = write(folder.path(), "a.toml", &format!("{TWO}{requests}"));
+        let report: Value =
+            serde_json::from_slice(&fewest(&["count", "--json", &path]).stdout).unwrap();
+        assert_eq!(
+            (&report["unplaced_weight"], &report["unplaced_floor"]),
+            (&(count - 2).into(), &(count - 2).into())
+        );
+    }
+}
+
+#[test]
+fn intake_notices_rows_that_would_be_lost() {
+    let folder = tempfile::tempdir().unwrap();
+    let run = |name: &str, text: &str, more: &[&str]| {
+        let csv = write(folder.path(), name, text);
+        let path = folder.path().join(name).with_extension("toml");
+        let base = [
+            "intake",
+            &csv,
+            "--out",
+            path.to_str().unwrap(),
+            "--id",
+            "id",
+            "--start",
+            "s",
+            "--end",
+            "e",
+        ];
+        let output = fewest(&[&base[..], more].concat());
+        (
+            output.status.code(),
+            err(&output),
+            std::fs::read_to_string(path).unwrap_or_default(),
+        )
+    };
+    let row = "2027-01-11 09:00,2027-01-11 10:00";
+    let (code, said, _) = run("quote.csv", &format!("id,s,e\n\"a,{row}\nb,{row}\n"), &[]);
+    assert!(
+        code == Some(2) && said.contains("a quotation mark is never closed; look from line 2 on"),
+        "{said}"
+    );
+    let (code, said, text) = run(
+        "cells.csv",
+        &format!("id,s,e\na,{row},x\nb,{row}\nc\n"),
+        &[],
+    );
+    assert!(
+        code == Some(3)
+            && said.contains(":2: it has 4 cells, the heading has 3")
+            && said.contains(":4: it has 1 cells"),
+        "{said}"
+    );
+    assert_eq!(text.matches("[[request]]").count(), 1);
+    let (code, said, _) = run("twice.csv", &format!("id,s,s,e\na,1,{row}\n"), &[]);
+    assert!(
+        code == Some(2) && said.contains("there are two columns \"s\""),
+        "{said}"
+    );
+    let semicolons = format!("id,s,e\na,{row}\n").replace(',', ";");
+    let (_, said, _) = run("semi.csv", &semicolons, &[]);
+    assert!(
+        said.contains("the cells seem to be separated by ;: --separator \";\""),
+        "{said}"
+    );
+    assert_eq!(
+        run("semi2.csv", &semicolons, &["--separator", ";"]).0,
+        Some(0)
+    );
+    let (code, said, text) = run(
+        "gap.csv",
+        "id,s,e\na,2027-03-28 01:30,2027-03-28 02:30\n",
+        &["--zone", "Europe/Lisbon"],
+    );
+    assert!(
+        code == Some(0)
+            && said.contains("2027-03-28 01:30:00 does not exist; 2027-03-28 02:30 was taken"),
+        "{said}"
+    );
+    assert!(
+        text.contains("start = 2027-03-28T02:30:00\nend = 2027-03-28T03:30:00"),
+        "{text}"
+    );
 }
 
 #[test]

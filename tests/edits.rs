@@ -153,6 +153,73 @@ fn an_edit_changes_its_value_and_no_other_byte() {
 }
 
 #[test]
+fn reopening_keeps_what_is_written_between_closures() {
+    let text = "[timetable]\ntitle = \"t\"\n[[resource]]\nid = \"r\"\nclosed = [ # why\n  { from = 2027-01-12T08:00:00, to = 2027-01-12T13:00:00, because = \"repair\" }, # one\n  # two\n  { from = 2027-01-13T08:00:00, to = 2027-01-13T13:00:00 }, # last\n] # end\n[[resource]]\nid = \"s\"\n[[resource.closed]]\nfrom = 2027-01-12T08:00:00\nto = 2027-01-12T13:00:00\n";
+    for (line, old, new) in [
+        (
+            "reopen r from 2027-01-12 11:00 to 2027-01-12 14:00",
+            "to = 2027-01-12T13:00:00, because",
+            "to = 2027-01-12T11:00:00, because",
+        ),
+        (
+            "reopen r from 2027-01-12 09:00 to 2027-01-12 10:00",
+            "to = 2027-01-12T13:00:00, because = \"repair\" }",
+            "to = 2027-01-12T09:00:00, because = \"repair\" }, { from = 2027-01-12T10:00:00, to = 2027-01-12T13:00:00, because = \"repair\" }",
+        ),
+        (
+            "reopen r from 2027-01-13 08:00 to 2027-01-13 13:00",
+            ", # one\n  # two\n  { from = 2027-01-13T08:00:00, to = 2027-01-13T13:00:00 }, # last",
+            ", # last",
+        ),
+        (
+            "close r from 2027-01-14 08:00 to 2027-01-14 09:00",
+            "}, # last",
+            "}, { from = 2027-01-14T08:00:00, to = 2027-01-14T09:00:00 }, # last",
+        ),
+    ] {
+        let (_folder, mut desk) = small(text);
+        make(&mut desk, line).unwrap_or_else(|said| panic!("{line}: {said}"));
+        assert_eq!(desk.document().text(), text.replacen(old, new, 1), "{line}");
+        consistent(&desk);
+        desk.undo().unwrap();
+        assert_eq!(desk.document().text(), text);
+    }
+    let (_folder, mut desk) = small(text);
+    for line in [
+        "reopen r from 2027-01-01 00:00 to 2027-02-01 00:00",
+        "close s from 2027-01-15 08:00 to 2027-01-15 09:00",
+        "reopen s from 2027-01-12 08:00 to 2027-01-12 09:00",
+    ] {
+        make(&mut desk, line).unwrap_or_else(|said| panic!("{line}: {said}"));
+        consistent(&desk);
+    }
+    while desk.undo().is_ok() {
+        consistent(&desk);
+    }
+    assert_eq!(desk.document().text(), text);
+}
+
+#[test]
+fn another_name_never_overwrites_a_file() {
+    let (folder, mut desk) = small(SMALL);
+    make(&mut desk, "fasten a").unwrap();
+    let other = folder.path().join("other.toml");
+    std::fs::write(&other, "# precious\n").unwrap();
+    let said = desk.save(Some(&other), NOW).unwrap_err().to_string();
+    assert!(
+        said.contains("there is a file of that name already"),
+        "{said}"
+    );
+    assert_eq!(std::fs::read_to_string(&other).unwrap(), "# precious\n");
+    // Under its own name it is the same as saving.
+    let own = desk.path.clone();
+    std::fs::write(&own, "# theirs\n").unwrap();
+    assert!(desk.save(Some(&own), NOW).is_err());
+    std::fs::write(&own, SMALL).unwrap();
+    desk.save(Some(&own), NOW).unwrap();
+}
+
+#[test]
 fn requests_in_braces_are_edited_in_place() {
     let text = "request = [\n  { id = \"a\", start = 2027-01-11T09:00:00, length = \"1h\", pin = \"room-1\" }, # one\n  { id = \"b\", fastened = true, start = 2027-01-11T09:00:00, length = \"1h\" },\n]\n[timetable]\ntitle = \"braces\"\nnoun = [\"room\", \"rooms\"]\n";
     let (_folder, mut desk) = small(text);
@@ -297,7 +364,10 @@ fn a_file_that_someone_else_changed_is_not_overwritten() {
     make(&mut desk, "fasten a").unwrap();
     std::fs::write(&desk.path, "# theirs\n").unwrap();
     let trouble = desk.save(None, NOW).unwrap_err().to_string();
-    assert!(trouble.contains("was changed by someone else"), "{trouble}");
+    assert!(
+        trouble.contains("changed by someone else meanwhile"),
+        "{trouble}"
+    );
     assert_eq!(std::fs::read_to_string(&desk.path).unwrap(), "# theirs\n");
     let other = folder.path().join("mine.toml");
     desk.save(Some(&other), NOW).unwrap();

@@ -220,7 +220,7 @@ fn a_piece_is_carried_the_count_follows_and_everything_is_saved() {
     terminal.wait_for("* moved from 2027-06-10 12:45");
     terminal.wait_for("1 edit not saved");
     terminal.press("q");
-    terminal.wait_for("s saves and leaves, y leaves without saving");
+    terminal.wait_for("s saves and leaves, y leaves without, any other key stays");
     terminal.press("x");
     terminal.wait_for("still here");
     terminal.press("qs");

@@ -99,23 +99,16 @@ fn judge(
     let Some(floor) = floor else {
         return match check_plan(timetable, &plan) {
             Err(refusals) => refuse(name, &refusals, outcome),
-            // A plan without a proof may not call itself more than open.
-            Ok(_) if state != State::Between => {
-                let claimed = said(state).into();
-                refuse(
-                    name,
-                    &[Refusal::OtherState {
-                        claimed,
-                        shown: "between",
-                    }],
-                    outcome,
-                )
-            }
             Ok(in_use) => {
                 let _ = writeln!(
                     outcome.out,
-                    "{name}: the plan holds, {} in use; it keeps no proof",
-                    words::count_of(in_use, noun)
+                    "{name}: the plan holds, {} in use; it keeps no proof{}",
+                    words::count_of(in_use, noun),
+                    if state == State::Between {
+                        ""
+                    } else {
+                        ", so what it says is known does not count"
+                    }
                 );
                 Verdict::Holds {
                     unplaced,

@@ -31,7 +31,7 @@ pub(super) struct IntakeArgs {
     /// Column with the start
     #[arg(long, value_name = "COLUMN")]
     start: String,
-    /// Column with the end
+    /// Column with the end; this or --length is needed
     #[arg(
         long,
         value_name = "COLUMN",
@@ -66,6 +66,9 @@ pub(super) struct IntakeArgs {
     /// The resource column is a plan that was issued
     #[arg(long, requires = "resource")]
     as_issued: bool,
+    /// What separates the cells: one character, or tab
+    #[arg(long, default_value = ",", value_name = "CHARACTER")]
+    separator: String,
     /// IANA zone of the times
     #[arg(long, default_value = "UTC", value_name = "ZONE")]
     zone: String,
@@ -98,6 +101,15 @@ fn columns(args: &IntakeArgs) -> Result<Columns, Outcome> {
             ))
         })?),
     };
+    let separator = match args.separator.as_str() {
+        "tab" => b'\t',
+        other if other.len() == 1 && !other.starts_with(['"', '\r', '\n']) => other.as_bytes()[0],
+        _ => {
+            return Err(Outcome::bad(
+                "--separator takes one character, or the word tab",
+            ));
+        }
+    };
     let mut only = Vec::new();
     for condition in &args.only {
         let (column, value) = condition.split_once('=').ok_or_else(|| {
@@ -122,6 +134,7 @@ fn columns(args: &IntakeArgs) -> Result<Columns, Outcome> {
         only,
         blank: args.blank.clone(),
         as_issued: args.as_issued,
+        separator,
         zone,
     })
 }
@@ -203,8 +216,8 @@ fn take_in(args: &IntakeArgs) -> Result<Outcome, Outcome> {
         }
         let _ = writeln!(
             outcome.err,
-            "{} rows set aside, all of them in {}",
-            intake.set_aside.len(),
+            "{} set aside, to be found in {}",
+            several(intake.set_aside.len(), "row"),
             clean(&set_aside.display().to_string())
         );
         outcome.code = code::OPEN;
@@ -214,18 +227,23 @@ fn take_in(args: &IntakeArgs) -> Result<Outcome, Outcome> {
 
 fn summary(intake: &Intake, out: &Path) -> String {
     let mut text = format!(
-        "{} requests taken in, written to {}\n",
-        intake.requests.len(),
+        "{} taken in, written to {}\n",
+        several(intake.requests.len(), "request"),
         clean(&out.display().to_string())
     );
     if intake.passed_over > 0 {
         let _ = writeln!(
             text,
-            "{} rows passed over because of --only",
-            intake.passed_over
+            "{} passed over because of --only",
+            several(intake.passed_over, "row")
         );
     }
     text
+}
+
+/// `1 row`, `2 rows`.
+fn several(count: usize, word: &str) -> String {
+    format!("{count} {word}{}", if count == 1 { "" } else { "s" })
 }
 
 /// The resource column as the plan that was issued.

@@ -106,7 +106,12 @@ pub struct Look {
 #[derive(Args, Clone, Copy, Debug)]
 pub struct Search {
     /// Seconds to search at most
-    #[arg(long, default_value_t = 10.0, value_name = "S")]
+    #[arg(
+        long,
+        default_value_t = 10.0,
+        value_name = "S",
+        allow_negative_numbers = true
+    )]
     seconds: f64,
     /// Steps of work at most, instead of time
     #[arg(long, value_name = "N")]
@@ -151,9 +156,18 @@ enum Command {
 
 /// Runs the command line.
 pub fn run(args: impl IntoIterator<Item = std::ffi::OsString>) -> Outcome {
+    let args: Vec<std::ffi::OsString> = args.into_iter().collect();
+    if let Some(later) = later(&args) {
+        return Outcome::bad(format!("\"{later}\" is not yet possible in this version"));
+    }
     let cli = match Cli::try_parse_from(args) {
         Ok(cli) => cli,
-        Err(error) if error.use_stderr() => return Outcome::bad(error),
+        Err(error) if error.use_stderr() => {
+            // What was typed is quoted in it, and may be anything.
+            let said = error.to_string();
+            let lines: Vec<_> = said.lines().map(crate::text::clean).collect();
+            return Outcome::bad(lines.join("\n"));
+        }
         Err(help) => {
             return Outcome {
                 out: help.to_string(),
@@ -179,6 +193,18 @@ pub fn run(args: impl IntoIterator<Item = std::ffi::OsString>) -> Outcome {
         (None, Some(file)) => count::count(&file, false, Search::default()),
         (None, None) => Outcome::bad("name a timetable: fewest FILE"),
     }
+}
+
+/// The command or option of a later version that was asked for, if one was.
+fn later(args: &[std::ffi::OsString]) -> Option<&'static str> {
+    const COMMANDS: [&str; 6] = ["why", "ease", "issue", "differs", "handouts", "spoken"];
+    let first = args.get(1)?;
+    let command = COMMANDS.into_iter().find(|command| *first == **command);
+    command.or_else(|| {
+        args.iter()
+            .any(|arg| arg == "--unsaved")
+            .then_some("--unsaved")
+    })
 }
 
 impl Default for Search {

@@ -93,6 +93,12 @@ impl Zone {
         }
     }
 
+    /// Seconds that the clock was last put forward by in the two hours before a moment; 0 when
+    /// it was not.
+    pub fn gap_before(self, at: Instant) -> i64 {
+        (self.offset(at) - self.offset(at - 7_200)).max(0)
+    }
+
     /// The change of clock within a day of a civil time: its moment in seconds, and the
     /// offsets before and after it.
     fn change_near(self, civil: NaiveDateTime) -> (i64, i64, i64) {

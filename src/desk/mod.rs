@@ -39,10 +39,11 @@ pub enum Trouble {
     #[error("{0}")]
     Mistakes(Box<Mistakes>),
     /// Somebody else wrote it since it was read.
-    #[error(
-        "{0} was changed by someone else since it was opened; save under another name with :save NAME.toml"
-    )]
+    #[error("changed by someone else meanwhile; keep yours with :save OTHER.toml ({0})")]
     Changed(String),
+    /// There is a file of that name that is not the one opened.
+    #[error("there is a file of that name already; choose another ({0})")]
+    Exists(String),
 }
 
 impl Trouble {
@@ -339,13 +340,19 @@ impl Desk {
     /// [`Trouble`]; the edits are then still here.
     pub fn save(&mut self, other: Option<&Path>, now: Instant) -> Result<(), Trouble> {
         let path = other.unwrap_or(&self.path).to_path_buf();
-        if other.is_none()
+        let name = crate::text::clean(&path.display().to_string()).into_owned();
+        let same = path == self.path
+            || std::fs::canonicalize(&path).ok().is_some_and(|there| {
+                std::fs::canonicalize(&self.path).is_ok_and(|ours| ours == there)
+            });
+        if !same && path.exists() {
+            return Err(Trouble::Exists(name));
+        }
+        if same
             && let Ok(bytes) = store::read_bounded(&path, document::MOST_BYTES)
             && document::hash(&bytes) != self.on_disk
         {
-            return Err(Trouble::Changed(
-                crate::text::clean(&path.display().to_string()).into_owned(),
-            ));
+            return Err(Trouble::Changed(name));
         }
         let bytes = self.document.bytes();
         store::write_atomically(&path, &bytes).map_err(|error| Trouble::io(&path, error))?;

@@ -63,12 +63,9 @@ impl Document {
                     };
                     let closed = |named: &Named| named.common.closed.clone().unwrap_or_default();
                     let (was, is) = (closed(then), closed(now));
-                    let added = is.get(was.len()..).filter(|_| is.starts_with(&was));
-                    let value = match added {
-                        Some([one]) if !was.is_empty() => Set::Append(closure_value(one, zone)),
-                        _ => Set::Whole(closures_value(&is, zone)),
-                    };
-                    patches.extend(self.set(table, "resource", "closed", Some(value)));
+                    for value in closure_changes(&was, &is, zone) {
+                        patches.extend(self.set(table, "resource", "closed", Some(value)));
+                    }
                 }
                 Touched::Kind(at) => {
                     patches.push(self.add(table, "kind", &kind_keys(&after.kinds[*at])))
@@ -198,8 +195,92 @@ impl Document {
 /// What becomes of a key.
 enum Set {
     Whole(Value),
-    /// One more element of an array.
-    Append(Value),
+    /// Elements `from..to` of an array are replaced; `whole` is the array as it is then.
+    Elements {
+        from: usize,
+        to: usize,
+        new: Vec<Value>,
+        whole: Value,
+    },
+}
+
+impl Set {
+    fn whole(self) -> Value {
+        match self {
+            Set::Whole(value) | Set::Elements { whole: value, .. } => value,
+        }
+    }
+}
+
+/// The changes that turn one list of closures into another, one element at a time where
+/// that is all it takes, so that comments between the others stay.
+fn closure_changes(was: &[Closure], is: &[Closure], zone: Zone) -> Vec<Set> {
+    let elements = |from, to, new: &[Closure], whole: &[Closure]| Set::Elements {
+        from,
+        to,
+        new: new
+            .iter()
+            .map(|closure| closure_value(closure, zone))
+            .collect(),
+        whole: closures_value(whole, zone),
+    };
+    if was.is_empty() {
+        return vec![Set::Whole(closures_value(is, zone))];
+    }
+    if was.len() == is.len() {
+        let mut now = was.to_vec();
+        let differ: Vec<usize> = (0..is.len()).filter(|at| was[*at] != is[*at]).collect();
+        let change = |at: usize| {
+            now[at] = is[at].clone();
+            elements(at, at + 1, &is[at..=at], &now)
+        };
+        return differ.into_iter().map(change).collect();
+    }
+    let before = was.iter().zip(is).take_while(|(a, b)| a == b).count();
+    let most = was.len().min(is.len()) - before;
+    let after = was
+        .iter()
+        .rev()
+        .zip(is.iter().rev())
+        .take(most)
+        .take_while(|(a, b)| a == b)
+        .count();
+    vec![elements(
+        before,
+        was.len() - after,
+        &is[before..is.len() - after],
+        is,
+    )]
+}
+
+/// The bytes of an array to replace, and by what; `None` when it had better be written anew.
+fn element_change(
+    array: &toml_edit::Array,
+    here: impl Fn(Range<usize>) -> Range<usize>,
+    (from, to): (usize, usize),
+    new: &[Value],
+) -> Option<(Range<usize>, String)> {
+    let span = |at: usize| array.get(at)?.span().map(&here);
+    let text = new
+        .iter()
+        .map(ToString::to_string)
+        .collect::<Vec<_>>()
+        .join(", ");
+    Some(match (from < to, new.is_empty()) {
+        (true, false) => (span(from)?.start..span(to - 1)?.end, text),
+        (true, true) if to < array.len() => (span(from)?.start..span(to)?.start, String::new()),
+        (true, true) => (
+            span(from.checked_sub(1)?)?.end..span(to - 1)?.end,
+            String::new(),
+        ),
+        (false, _) if from < array.len() => {
+            (span(from)?.start..span(from)?.start, format!("{text}, "))
+        }
+        (false, _) => {
+            let end = span(from.checked_sub(1)?)?.end;
+            (end..end, format!(", {text}"))
+        }
+    })
 }
 
 /// The bytes of a table's text to replace, and by what; `None` when there is nothing to do.
@@ -227,16 +308,16 @@ fn change_in(
                 // Written as [[...]] tables: rare enough to let the library write it anew.
                 return Some((0..fragment.len(), rewritten(fragment, name, key, set)?));
             };
-            Some(match set {
-                Set::Whole(value) => (span, value.to_string()),
-                Set::Append(value) => {
-                    let last = item.as_array()?.iter().last()?.span().map(here)?;
-                    (last.end..last.end, format!(", {value}"))
+            let by_elements = match (&set, item.as_array()) {
+                (Set::Elements { from, to, new, .. }, Some(array)) => {
+                    element_change(array, here, (*from, *to), new)
                 }
-            })
+                _ => None,
+            };
+            Some(by_elements.unwrap_or_else(|| (span, set.whole().to_string())))
         }
-        (None, Some(Set::Whole(value) | Set::Append(value))) => {
-            let line = format!("{key} = {value}");
+        (None, Some(set)) => {
+            let line = format!("{key} = {}", set.whole());
             if braces {
                 let last = table
                     .iter()
@@ -305,22 +386,7 @@ fn with_comma(fragment: &str, key: Range<usize>) -> Range<usize> {
 fn rewritten(fragment: &str, name: &str, key: &str, set: Set) -> Option<String> {
     let mut parsed: DocumentMut = fragment.parse().ok()?;
     let table = parsed.get_mut(name)?.as_array_of_tables_mut()?.get_mut(0)?;
-    let mut array = toml_edit::Array::new();
-    match set {
-        Set::Whole(value) => {
-            return {
-                table.insert(key, Item::Value(value));
-                Some(parsed.to_string().trim_end().into())
-            };
-        }
-        Set::Append(value) => {
-            for entry in table.get(key)?.as_array_of_tables()?.iter() {
-                array.push(entry.clone().into_inline_table());
-            }
-            array.push(value);
-        }
-    }
-    table.insert(key, Item::Value(array.into()));
+    table.insert(key, Item::Value(set.whole()));
     Some(parsed.to_string().trim_end().into())
 }
 

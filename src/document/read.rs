@@ -539,7 +539,7 @@ impl Reader<'_> {
             people: texts(table.strings("people", notes)),
             may_start,
             weight: table
-                .number("weight", 1, 1_000_000, notes)
+                .number("weight", 1, u32::MAX.into(), notes)
                 .map_or(1, |weight| weight as u32),
             split: table.length("split", notes),
             pin: pin.map(|(pin, _)| pin),

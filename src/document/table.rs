@@ -166,10 +166,10 @@ impl<'a> Table<'a> {
             let at = value.span().unwrap_or_else(|| at.clone());
             match value.as_str() {
                 Some(text) if texts.iter().any(|(other, _)| **other == *text) => {
-                    notes.mistake(
+                    notes.warnings.push(Mistake {
                         at,
-                        format!("\"{}\" is listed twice in \"{key}\"", clean(text)),
-                    );
+                        message: format!("\"{}\" is listed twice in \"{key}\"", clean(text)),
+                    });
                 }
                 Some(text) => texts.push((text.into(), at)),
                 None => notes.mistake(

@@ -1,7 +1,7 @@
 //! Reading one line of the edit language.
 
 use super::{Change, Edit};
-use crate::clock::{Instant, Resolved, Span, Zone, parse_civil, parse_date, parse_length};
+use crate::clock::{DAY, Instant, Resolved, Span, Zone, parse_civil, parse_date, parse_length};
 use crate::text::{clean, is_id, nearest};
 use crate::timetable::Timetable;
 use chrono::NaiveDate;
@@ -48,7 +48,16 @@ pub fn parse(line: &str, context: Context<'_>) -> Result<Edit, Misread> {
             let (piece, start) = words.piece(context)?;
             let to = match words.either("to", "by")? {
                 "to" => words.moment(context, Some(context.timetable.settings.zone.date(start)))?,
-                _ => start + words.shift()?,
+                _ => {
+                    let seconds = words.shift()?;
+                    let zone = context.timetable.settings.zone;
+                    if seconds % DAY == 0 {
+                        // Whole days keep the time on the clock.
+                        zone.lenient(zone.civil(start) + chrono::TimeDelta::seconds(seconds))
+                    } else {
+                        start + seconds
+                    }
+                }
             };
             Change::Move { piece, to }
         }
@@ -136,7 +145,12 @@ impl<'a> Words<'a> {
             });
         }
         // The reason is quoted and may hold anything, so it is cut off before words are.
-        let cut = line.find(" because ").unwrap_or(line.len());
+        let spaced = |(at, word): &(usize, &str)| {
+            let after = line[at + word.len()..].chars().next();
+            line[..*at].ends_with([' ', '\t']) && after.is_some_and(char::is_whitespace)
+        };
+        let reason = line.match_indices("because").find(spaced);
+        let cut = reason.map_or(line.len(), |(at, _)| at - 1);
         let because = line.get(cut + 1..).filter(|_| cut < line.len());
         let column = |byte: usize| line[..byte].chars().count() + 1;
         let mut words = Vec::new();
@@ -226,7 +240,7 @@ impl<'a> Words<'a> {
                     .iter()
                     .map(|request| request.id.as_ref());
                 let hint = nearest(word.text, ids).map_or_else(
-                    || "look it up with /".to_string(),
+                    || "the file lists them".to_string(),
                     |near| format!("did you mean \"{near}\"?"),
                 );
                 Err(word.misread(format!(
@@ -284,7 +298,7 @@ impl<'a> Words<'a> {
         let Some((column, text)) = self.because.take() else {
             return Ok(None);
         };
-        let quoted = text.strip_prefix("because ").map(str::trim);
+        let quoted = text.strip_prefix("because").map(str::trim);
         quoted
             .and_then(|text| text.strip_prefix('"')?.strip_suffix('"'))
             .and_then(unescape)

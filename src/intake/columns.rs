@@ -32,6 +32,8 @@ pub struct Columns {
     pub blank: Vec<String>,
     /// The resource column is a plan that was issued, not a pin.
     pub as_issued: bool,
+    /// What separates the cells of a row.
+    pub separator: u8,
     /// The zone of the times.
     pub zone: Zone,
 }

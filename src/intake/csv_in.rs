@@ -45,7 +45,10 @@ pub struct Intake {
 /// A sentence, when the heading lacks a named column or the input is no CSV at all.
 pub fn read_csv(bytes: &[u8], columns: &Columns) -> Result<Intake, String> {
     let bytes = bytes.strip_prefix(b"\xEF\xBB\xBF").unwrap_or(bytes);
-    let mut reader = csv::ReaderBuilder::new().flexible(true).from_reader(bytes);
+    let mut reader = csv::ReaderBuilder::new()
+        .flexible(true)
+        .delimiter(columns.separator)
+        .from_reader(bytes);
     let heading = reader
         .byte_headers()
         .map_err(|error| format!("the heading row cannot be read: {error}"))?;
@@ -65,6 +68,7 @@ pub fn read_csv(bytes: &[u8], columns: &Columns) -> Result<Intake, String> {
         resource_ids: HashMap::new(),
         used: HashSet::new(),
     };
+    let mut last_line = 1;
     for record in reader.byte_records() {
         let record = record.map_err(|error| format!("this is not CSV: {error}"))?;
         let line = record.position().map_or(0, csv::Position::line);
@@ -72,11 +76,18 @@ pub fn read_csv(bytes: &[u8], columns: &Columns) -> Result<Intake, String> {
             .iter()
             .map(|cell| String::from_utf8_lossy(cell).into_owned())
             .collect();
+        last_line = line;
         let readable = record.iter().all(|cell| std::str::from_utf8(cell).is_ok());
-        let taken = if readable {
-            taking.row(line, &cells)
-        } else {
+        let expected = taking.intake.heading.len();
+        let taken = if !readable {
             Err("a cell is not UTF-8".into())
+        } else if cells.len() != expected {
+            Err(format!(
+                "it has {} cells, the heading has {expected}",
+                cells.len()
+            ))
+        } else {
+            taking.row(line, &cells)
         };
         if let Err(reason) = taken {
             taking.intake.set_aside.push(SetAside {
@@ -85,6 +96,12 @@ pub fn read_csv(bytes: &[u8], columns: &Columns) -> Result<Intake, String> {
                 cells,
             });
         }
+    }
+    // A quotation mark that is never closed swallows all rows after it.
+    if bytes.iter().filter(|byte| **byte == b'"').count() % 2 == 1 {
+        return Err(format!(
+            "a quotation mark is never closed; look from line {last_line} on"
+        ));
     }
     taking.disentangle();
     Ok(taking.intake)
@@ -107,13 +124,32 @@ struct Places {
 impl Places {
     fn of(heading: &[String], columns: &Columns) -> Result<Places, String> {
         let find = |name: &String| {
-            heading.iter().position(|cell| cell == name).ok_or_else(|| {
-                let hint = nearest(name, heading.iter().map(String::as_str)).map_or_else(
-                    || format!("there are: {}", heading.join(", ")),
-                    |near| format!("did you mean \"{near}\"?"),
-                );
-                format!("there is no column \"{}\"; {}", clean(name), clean(&hint))
-            })
+            let mut places = (0..heading.len()).filter(|at| heading[*at] == *name);
+            match (places.next(), places.next()) {
+                (Some(place), None) => Ok(place),
+                (Some(_), Some(_)) => Err(format!("there are two columns \"{}\"", clean(name))),
+                (None, _) => {
+                    let names = heading.iter().map(String::as_str);
+                    let other = [';', '\t', '|']
+                        .into_iter()
+                        .find(|c| heading.len() == 1 && heading[0].contains(*c));
+                    let hint = match (nearest(name, names), other) {
+                        (Some(near), _) => format!("did you mean \"{near}\"?"),
+                        (None, Some('\t')) => {
+                            "the cells seem to be separated by tabs: --separator tab".into()
+                        }
+                        (None, Some(c)) => {
+                            format!("the cells seem to be separated by {c}: --separator \"{c}\"")
+                        }
+                        (None, None) => format!("there are: {}", heading.join(", ")),
+                    };
+                    Err(format!(
+                        "there is no column \"{}\"; {}",
+                        clean(name),
+                        clean(&hint)
+                    ))
+                }
+            }
         };
         let maybe = |name: &Option<String>| name.as_ref().map(find).transpose();
         Ok(Places {
@@ -147,6 +183,7 @@ struct Taking<'a> {
 impl Taking<'_> {
     fn row(&mut self, line: u64, cells: &[String]) -> Result<(), String> {
         let columns = self.columns;
+        let zone = columns.zone;
         let cell = |at: usize| {
             let text = cells.get(at).map_or("", |cell| cell.trim());
             if columns.blank.iter().any(|blank| blank == text) {
@@ -195,6 +232,10 @@ impl Taking<'_> {
                 {
                     // Counted within a day, an end before the start is on the next one.
                     end = self.time(cell(at), Some(date), &mut doubtful)?;
+                }
+                if end <= start && doubtful.is_some() {
+                    // The start was put after a gap in the clock; the length stays.
+                    end = end + zone.gap_before(start);
                 }
                 Span { start, end }
             }

@@ -17,7 +17,7 @@ pub fn draw(model: &Model, frame: &mut Frame<'_>) {
         put(buffer, whole, 0, 0, &text, Style::new());
         return;
     }
-    let areas = model.areas();
+    let areas = model.areas_at((whole.width, whole.height));
     panels::header::draw(model, buffer, areas.header);
     let mut cursor = panels::board::draw(model, buffer, &areas);
     panels::load::draw(model, buffer, &areas);

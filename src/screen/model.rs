@@ -185,7 +185,13 @@ impl Model {
 
     /// Where everything is on the screen.
     pub fn areas(&self) -> Areas {
-        Areas::of(self.size, self.label_width())
+        self.areas_at(self.size)
+    }
+
+    /// Where everything is on a screen of that size: a frame may be of another size than the
+    /// last message said.
+    pub fn areas_at(&self, size: (u16, u16)) -> Areas {
+        Areas::of(size, self.label_width())
     }
 
     /// The timetable that is shown: with what is carried where it is held.

@@ -169,8 +169,17 @@ fn pasted(model: &mut Model, text: &str) {
             input.handle(InputRequest::InsertChar(c));
         }
     };
+    let more = text.trim_end().lines().count() > 1;
     match &mut model.mode {
-        Mode::Command(input) => insert(input),
+        Mode::Command(input) => {
+            insert(input);
+            if more {
+                model.say(
+                    "only the first pasted line was taken; fewest apply takes many",
+                    true,
+                );
+            }
+        }
         Mode::Find(find) => {
             insert(&mut find.input);
             look_up(model);
@@ -287,7 +296,14 @@ fn commanding(model: &mut Model, key: KeyEvent) -> Vec<Effect> {
                     return Vec::new();
                 }
             };
+            let doubled = match &edit.what {
+                Change::Move { to, .. } => crate::words::doubled(*to, model.desk.zone()),
+                _ => None,
+            };
             let effects = make(model, vec![edit]);
+            if let (None, Some(doubled)) = (&model.message, doubled) {
+                model.say(doubled, false);
+            }
             if model
                 .message
                 .as_ref()
@@ -316,7 +332,10 @@ fn finding(model: &mut Model, key: KeyEvent) -> Vec<Effect> {
             model.mode = Mode::Board;
             match chosen {
                 Some(piece) => {
-                    model.show_day(model.rows.pieces[piece].span.start);
+                    let start = model.rows.pieces[piece].span.start;
+                    if !model.view.span(model.areas().time.width).contains(start) {
+                        model.show_day(start);
+                    }
                     model.take(piece);
                 }
                 None => model.say("nothing found", false),
@@ -345,12 +364,16 @@ fn look_up(model: &mut Model) {
         let request = &piece.request;
         // A huge title is not matched to its end.
         let title: String = request.title.chars().take(200).collect();
-        let best = [piece.id.as_ref(), title.as_str()]
-            .into_iter()
-            .chain(request.people.iter().map(AsRef::as_ref))
-            .filter_map(|text| matcher.fuzzy_match(text, wanted))
-            .max();
-        scored.extend(best.map(|score| (score, at)));
+        let best = |word: &str| {
+            [piece.id.as_ref(), title.as_str()]
+                .into_iter()
+                .chain(request.people.iter().map(AsRef::as_ref))
+                .filter_map(|text| matcher.fuzzy_match(text, word))
+                .max()
+        };
+        // Every word counts on its own: one may be of the id, another of the title.
+        let scores: Option<Vec<i64>> = wanted.split_whitespace().map(best).collect();
+        scored.extend(scores.map(|scores| (scores.iter().sum(), at)));
     }
     scored.sort_by_key(|(score, at)| (std::cmp::Reverse(*score), *at));
     find.matches = scored

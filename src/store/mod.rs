@@ -12,6 +12,14 @@ use std::path::{Path, PathBuf};
 /// # Errors
 /// Whatever the system says; the old file is then untouched.
 pub fn write_atomically(path: &Path, bytes: &[u8]) -> io::Result<()> {
+    write_beside(path, bytes).map_err(|error| match error.raw_os_error() {
+        // Without the name of the temporary file, which tells nobody anything.
+        Some(code) => io::Error::from_raw_os_error(code),
+        None => error,
+    })
+}
+
+fn write_beside(path: &Path, bytes: &[u8]) -> io::Result<()> {
     let path = fs::canonicalize(path).unwrap_or_else(|_| path.to_path_buf());
     let folder = match path.parent() {
         Some(folder) if !folder.as_os_str().is_empty() => folder.to_path_buf(),

@@ -168,11 +168,13 @@ impl<'a> Making<'a> {
                 },
             );
         if !member {
-            let common = kind.map_or_else(
-                || named.common.clone(),
-                |kind| inherit(&named.common, &kind.common),
+            // One that is no numbered member belongs to its kind by name only.
+            self.push(
+                Arc::clone(&named.id),
+                named.kind.as_ref(),
+                &named.common,
+                false,
             );
-            self.push(Arc::clone(&named.id), named.kind.as_ref(), &common, false);
         }
     }
 

@@ -76,8 +76,8 @@ pub struct Kind {
     pub common: Common,
 }
 
-/// What kinds and resources say of themselves; a resource takes what it does not state
-/// from its kind.
+/// What kinds and resources say of themselves; a member stated once more (`big-2` of the kind
+/// `big`) takes what it does not state from its kind.
 #[derive(Clone, Debug, Default, PartialEq, Eq)]
 pub struct Common {
     /// Shown instead of the id.

@@ -1,7 +1,7 @@
 //! The state of knowledge in words.
 
 use crate::audit::{Knowledge, Receipt};
-use crate::clock::Zone;
+use crate::clock::{Instant, Resolved, Span, Zone};
 use crate::overlap::Peak;
 use crate::text::clean;
 use crate::timetable::Noun;
@@ -71,14 +71,50 @@ pub fn peaks(clique: usize, peaks: &[Peak], zone: Zone) -> String {
     let Some(first) = peaks.first() else {
         return "nothing overlaps".into();
     };
-    let day = zone.civil(first.span.start).format("%a %d %b");
     let more = match peaks.len() {
         1 => String::new(),
         count => format!(", first of {count} peaks"),
     };
+    format!("clique {clique}: {}{more}", span(first.span, zone))
+}
+
+/// `Mon 11 Jan 09:00-11:00`, with the day of the end when that is another, and offsets where
+/// a time occurs twice.
+pub fn span(span: Span, zone: Zone) -> String {
+    let doubled = |at: Instant| matches!(zone.resolve(zone.civil(at)), Resolved::Twice { .. });
+    let offset = |at: Instant| {
+        let text = zone.rfc3339(at);
+        if doubled(at) {
+            text[text.len() - 6..].to_string()
+        } else {
+            String::new()
+        }
+    };
+    let day = |at: Instant| zone.civil(at).format("%a %d %b").to_string();
+    let (start, end) = (span.start, span.end);
+    let end_day = if zone.date(start) == zone.date(end) {
+        String::new()
+    } else {
+        format!("{} ", day(end))
+    };
     format!(
-        "clique {clique}: {day} {}-{}{more}",
-        zone.time(first.span.start),
-        zone.time(first.span.end)
+        "{} {}{}-{end_day}{}{}",
+        day(start),
+        zone.time(start),
+        offset(start),
+        zone.time(end),
+        offset(end)
     )
+}
+
+/// What to say of a moment that the clock shows twice.
+pub fn doubled(at: Instant, zone: Zone) -> Option<String> {
+    match zone.resolve(zone.civil(at)) {
+        Resolved::Twice { .. } => Some(format!(
+            "{} occurs twice because the clock goes back; {} was taken",
+            zone.time(at),
+            zone.print(at)
+        )),
+        _ => None,
+    }
 }

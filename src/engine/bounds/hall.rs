@@ -57,7 +57,8 @@ fn subset(small: &[u32], large: &[u32]) -> bool {
     small.len() <= large.len() && small.iter().all(|class| large.binary_search(class).is_ok())
 }
 
-/// Goes through `items` by start and takes out a violation whenever too many run at once.
+/// Goes through `items` by start and takes out a violation whenever too many run at once,
+/// at the moment when most of them do: just before one of them ends.
 fn sweep(
     problem: &Problem,
     items: &[usize],
@@ -67,16 +68,32 @@ fn sweep(
     found: &mut Vec<HallViolation>,
 ) {
     let mut running: Vec<usize> = Vec::new();
+    let mut take = |running: &mut Vec<usize>| {
+        // All of them run when the last of them has started.
+        if let Some(at) = running
+            .iter()
+            .map(|item| problem.items[*item].core.start)
+            .max()
+        {
+            found.push(violation(problem, running, set, at));
+        }
+        for item in running.drain(..) {
+            taken[item] = true;
+        }
+    };
     for item in items {
         let at = problem.items[*item].core.start;
+        let ends = running
+            .iter()
+            .any(|other| problem.items[*other].core.end <= at);
+        if ends && running.len() > room {
+            take(&mut running);
+        }
         running.retain(|other| problem.items[*other].core.end > at);
         running.push(*item);
-        if running.len() > room {
-            found.push(violation(problem, &running, set, at));
-            for item in running.drain(..) {
-                taken[item] = true;
-            }
-        }
+    }
+    if running.len() > room {
+        take(&mut running);
     }
 }
 

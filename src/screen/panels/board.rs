@@ -178,7 +178,7 @@ impl<'a> Marks<'a> {
     }
 }
 
-/// The marks of a piece: `!` pinned, `=` fastened, `*` moved since opened, `x` clash.
+/// The marks of a piece: `!` pinned, `=` fastened, `*` moved since opened, `&` clash.
 fn marks(model: &Model, piece: &Piece, marks: &Marks<'_>) -> String {
     let opened = model.desk.opened().request(&piece.request.id);
     let moved = opened.is_some_and(|before| before.start != piece.span.start);
@@ -186,7 +186,7 @@ fn marks(model: &Model, piece: &Piece, marks: &Marks<'_>) -> String {
         ("!", piece.pin.is_some()),
         ("=", piece.fastened),
         ("*", moved),
-        ("x", marks.clashing.contains(&*piece.id)),
+        ("&", marks.clashing.contains(&*piece.id)),
     ]
     .into_iter()
     .filter_map(|(mark, set)| set.then_some(mark))

@@ -170,11 +170,7 @@ fn facts(model: &Model, here: usize) -> String {
     let timetable = model.timetable();
     let zone = timetable.settings.zone;
     let piece = &model.rows.pieces[here];
-    let mut text = format!(
-        "{}-{}",
-        zone.civil(piece.span.start).format("%a %d %b %H:%M"),
-        zone.time(piece.span.end)
-    );
+    let mut text = words::span(piece.span, zone);
     if let Some(resource) = model.rows.on[here] {
         text.push_str(&format!(" on {}", timetable.resources().all[resource].id));
     }

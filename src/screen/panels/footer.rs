@@ -16,7 +16,7 @@ pub(in crate::screen) fn draw(model: &Model, buffer: &mut Buffer, area: Rect) ->
     }
     if let Mode::Leave = model.mode {
         let text = format!(
-            "{} not saved: s saves and leaves, y leaves without saving, anything else stays",
+            "{} not saved: s saves and leaves, y leaves without, any other key stays",
             match model.desk.unsaved() {
                 1 => "1 edit".to_string(),
                 count => format!("{count} edits"),
@@ -96,6 +96,22 @@ fn typed(model: &Model, input: &tui_input::Input, buffer: &mut Buffer, area: Rec
     Position::new(area.x + 1 + column as u16, area.y)
 }
 
+/// What is hinted at, the most needed first.
+const HINTS: [Action; 12] = [
+    Action::Help,
+    Action::Carry,
+    Action::Undo,
+    Action::Save,
+    Action::Leave,
+    Action::Find,
+    Action::Command,
+    Action::NextPeak,
+    Action::Pin,
+    Action::Fasten,
+    Action::Withdraw,
+    Action::Close,
+];
+
 /// As many of the usual keys as fit; help always does.
 fn hints(model: &Model, room: usize) -> String {
     let key = |action: Action| {
@@ -105,10 +121,12 @@ fn hints(model: &Model, room: usize) -> String {
             key => key.to_string(),
         })
     };
-    let mut text = format!("{} help", key(Action::Help));
-    for entry in ACTIONS.iter().filter(|entry| entry.action != Action::Help) {
-        if let Some(hint) = entry.hint {
-            let more = format!("  {} {hint}", key(entry.action));
+    let mut text = String::new();
+    for action in HINTS {
+        let entry = ACTIONS.iter().find(|entry| entry.action == action);
+        if let Some(hint) = entry.and_then(|entry| entry.hint) {
+            let gap = if text.is_empty() { "" } else { "  " };
+            let more = format!("{gap}{} {hint}", key(action));
             if width(&text) + width(&more) <= room {
                 text.push_str(&more);
             }

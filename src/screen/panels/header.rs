@@ -63,7 +63,10 @@ pub(in crate::screen) fn draw(model: &Model, buffer: &mut Buffer, area: Rect) {
     };
     if let Some(settled) = settled {
         let load = &settled.survey().load;
-        let peaks = words::peaks(load.most, &load.peaks(), settings.zone);
+        let mut peaks = words::peaks(load.most, &load.peaks(), settings.zone);
+        if settled.receipt().floor() > load.most {
+            peaks.push_str("; no two of { } can share");
+        }
         let room = usize::from(area.width).saturating_sub(usize::from(x) + 3 + width(&saved) + 1);
         x = put(
             buffer,

@@ -9,7 +9,7 @@ use ratatui::buffer::Buffer;
 use ratatui::layout::Rect;
 
 /// Signs on the board.
-const SIGNS: [(&str, &str); 11] = [
+const SIGNS: [(&str, &str); 12] = [
     ("[ ]", "a piece"),
     (
         "{ }",
@@ -20,9 +20,10 @@ const SIGNS: [(&str, &str); 11] = [
     ("!", "pinned: stays on its resource"),
     ("=", "fastened: stays at its start"),
     ("*", "moved since the file was opened"),
-    ("x", "clash: one person in two pieces at once"),
+    ("&", "clash: one person in two pieces at once"),
     (":", "kept free before or after a piece"),
     (".  /", "not open; closed for a while"),
+    ("^2 v5", "so many rows are above and below what is shown"),
     ("# -", "the load; the floor, below which no plan can go"),
 ];
 
