@@ -220,8 +220,9 @@ class Timetable:
         if len(named) != len(stated) or len(tables) != len(kinds):
             raise Bad("an id occurs twice")
 
-        def make(id_, kind, own, number=0):
-            base = tables.get(kind, {})
+        def make(id_, kind, own, number=0, member=True):
+            # Only a member takes from its kind what it does not state.
+            base = tables.get(kind, {}) if member else {}
 
             def get(key):
                 return own[key] if key in own else base.get(key)
@@ -264,7 +265,7 @@ class Timetable:
                 done.add(id_)
         for r in stated:
             if r["id"] not in done:
-                out.append(make(r["id"], r.get("kind"), r))
+                out.append(make(r["id"], r.get("kind"), r, member=False))
         return out
 
     # ------------------------------------------------------------ meaning
