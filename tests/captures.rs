@@ -3,7 +3,7 @@
 //! anew.
 
 use crate::terminal::{Terminal, size_of};
-use crate::tools::file;
+use crate::tools::{file, folder_with};
 use std::fmt::Write;
 
 /// The screen as text, then its styles.
@@ -53,7 +53,8 @@ fn dump(screen: &vt100::Screen) -> String {
 }
 
 fn capture(name: &str, sample: &str, size: (u16, u16), no_color: bool, keys: &[(&str, &str)]) {
-    let path = file(&format!("sample-timetables/{sample}.toml"));
+    let folder = folder_with(&[&format!("sample-timetables/{sample}.toml")]);
+    let path = folder.path().join(format!("{sample}.toml"));
     let mut environment = vec![("TERM", "xterm-256color")];
     if no_color {
         environment.push(("NO_COLOR", "1"));

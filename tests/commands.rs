@@ -59,7 +59,6 @@ fn the_exit_code_says_what_is_known() {
         (vec!["cuont", &proved], 2),
         (vec!["--help"], 0),
         (vec!["why", &proved], 2),
-        (vec!["count", &proved, "--unsaved"], 2),
         (vec!["audit", &proved], 3),
         (vec![proved.as_str()], 0),
     ] {

@@ -4,7 +4,7 @@ use crate::tools::{file, folder_with};
 use fewest::clock::{Instant, Span, Zone};
 use fewest::desk::Desk;
 use fewest::document;
-use fewest::edit::{Change, Context, Edit, parse, print};
+use fewest::edit::{Change, Context, Edit, Field, parse, print};
 use proptest::prelude::*;
 use std::path::Path;
 use std::sync::Arc;
@@ -13,6 +13,10 @@ const NOW: Instant = Instant(1_799_000_000);
 
 fn desk(path: &Path) -> Desk {
     Desk::open(path).unwrap_or_else(|trouble| panic!("{trouble}"))
+}
+
+fn save(desk: &mut Desk, other: Option<&Path>) -> Result<(), fewest::desk::Trouble> {
+    desk.save(other, NOW, &mut |_| {})
 }
 
 /// Makes a line's edit; `Err` with the words of the refusal.
@@ -205,7 +209,7 @@ fn another_name_never_overwrites_a_file() {
     make(&mut desk, "fasten a").unwrap();
     let other = folder.path().join("other.toml");
     std::fs::write(&other, "# precious\n").unwrap();
-    let said = desk.save(Some(&other), NOW).unwrap_err().to_string();
+    let said = save(&mut desk, Some(&other)).unwrap_err().to_string();
     assert!(
         said.contains("there is a file of that name already"),
         "{said}"
@@ -214,9 +218,9 @@ fn another_name_never_overwrites_a_file() {
     // Under its own name it is the same as saving.
     let own = desk.path.clone();
     std::fs::write(&own, "# theirs\n").unwrap();
-    assert!(desk.save(Some(&own), NOW).is_err());
+    assert!(save(&mut desk, Some(&own)).is_err());
     std::fs::write(&own, SMALL).unwrap();
-    desk.save(Some(&own), NOW).unwrap();
+    save(&mut desk, Some(&own)).unwrap();
 }
 
 #[test]
@@ -245,6 +249,112 @@ fn requests_in_braces_are_edited_in_place() {
         consistent(&desk);
     }
     assert_eq!(desk.document().text(), text);
+}
+
+#[test]
+fn requests_and_resources_are_added_set_and_dropped() {
+    let text = SMALL.replace("settled_until = 2027-01-01T00:00:00\n", "");
+    for (line, old, new) in [
+        (
+            "add geo-9 from 2027-01-12 09:00 to 11:00 size 40 needs \"hearing loop\",stage title \"Geo \\\"9\\\"\"",
+            "length = \"1h\"\n",
+            "length = \"1h\"\n\n[[request]]\nid = \"geo-9\"\ntitle = 'Geo \"9\"'\nstart = 2027-01-12T09:00:00\nend = 2027-01-12T11:00:00\nsize = 40\nneeds = [\"hearing loop\", \"stage\"]\n",
+        ),
+        (
+            "add resource annexe kind big seats 40",
+            "length = \"1h\"\n",
+            "length = \"1h\"\n\n[[resource]]\nid = \"annexe\"\nkind = \"big\"\nseats = 40\n",
+        ),
+        (
+            "set a size 210",
+            "end   =   2027-01-11T11:00:00",
+            "end   =   2027-01-11T11:00:00\nsize = 210",
+        ),
+        ("set b length 2h", "length = \"90m\"", "length = \"2h\""),
+        (
+            "set hall seats 180",
+            "because = \"repair\" }] # once",
+            "because = \"repair\" }] # once\nseats = 180",
+        ),
+        (
+            "set big-1 turnaround 5m",
+            "length = \"1h\"\n",
+            "length = \"1h\"\n\n[[resource]]\nid = \"big-1\"\nkind = \"big\"\nturnaround = \"5m\"\n",
+        ),
+        (
+            "drop a",
+            "[[request]]\nid = \"a\"\nstart = 2027-01-11T09:00:00 # early\nend   =   2027-01-11T11:00:00\n# a note inside\n\n",
+            "# a note inside\n\n",
+        ),
+        (
+            "drop old",
+            "[[request]]\nid = \"old\"\nstart = 2026-12-30T10:00:00\nlength = \"1h\"\n",
+            "",
+        ),
+    ] {
+        let (_folder, mut desk) = small(&text);
+        if line.starts_with("set b") {
+            make(&mut desk, "loosen b").unwrap();
+        }
+        let before = desk.document().text().to_string();
+        make(&mut desk, line).unwrap_or_else(|said| panic!("{line}: {said}"));
+        let at = before.rfind(old).unwrap();
+        let expected = format!("{}{new}{}", &before[..at], &before[at + old.len()..]);
+        assert_eq!(desk.document().text(), expected, "{line}");
+        consistent(&desk);
+        desk.undo().unwrap();
+        assert_eq!(desk.document().text(), before, "undo {line}");
+        consistent(&desk);
+        desk.redo().unwrap();
+        assert_eq!(desk.document().text(), expected, "redo {line}");
+        consistent(&desk);
+    }
+    let (_folder, mut desk) = small(&text);
+    for (line, says) in [
+        (
+            "add a from 2027-01-12 09:00 to 11:00",
+            "a is the name of something already; choose another",
+        ),
+        (
+            "add big-2 from 2027-01-12 09:00 to 11:00",
+            "big-2 is the name of something already; choose another",
+        ),
+        (
+            "add x from 2027-01-12 09:00 to 08:00",
+            "column 12: the end must come after the start",
+        ),
+        ("set a seats 3", "a request has no seats"),
+        ("set hall size 3", "a resource has no size"),
+        ("set a only cellar", "there is no resource or kind cellar"),
+        (
+            "set a colour red",
+            "column 7: \"colour\" cannot be set; known are: title, size, needs, people, only, never, weight, length, setup, turnaround, seats, offers",
+        ),
+        (
+            "set a size many",
+            "column 12: \"many\" does not fit size; here belongs a whole number, or none",
+        ),
+        ("set b length 3h", "b is fastened; first: loosen b"),
+        (
+            "drop big-1",
+            "big-1 is a member of a kind; close it, or change the kind's count in the file",
+        ),
+        (
+            "drop nothing",
+            "column 6: nothing is called \"nothing\"; the file lists them",
+        ),
+        (
+            "set a title \"open",
+            "column 13: a quotation mark is never closed",
+        ),
+    ] {
+        assert_eq!(make(&mut desk, line).expect_err(line), says, "{line}");
+    }
+    make(&mut desk, "pin a on hall").unwrap();
+    assert_eq!(
+        make(&mut desk, "drop hall").unwrap_err(),
+        "a speaks of hall in its pin, only or never; change that first"
+    );
 }
 
 #[test]
@@ -339,7 +449,7 @@ fn a_step_of_two_edits_is_undone_as_one_and_undo_works_across_a_save() {
         ["pin a on hall", "move a to 2027-01-11 08:00"].map(|line| desk.parse(line, NOW).unwrap());
     desk.make(edits.to_vec()).unwrap();
     assert_eq!(desk.unsaved(), 1);
-    desk.save(None, NOW).unwrap();
+    save(&mut desk, None).unwrap();
     assert_eq!(desk.unsaved(), 0);
     let saved = std::fs::read_to_string(&desk.path).unwrap();
     desk.undo().unwrap();
@@ -363,14 +473,14 @@ fn a_file_that_someone_else_changed_is_not_overwritten() {
     let (folder, mut desk) = small(SMALL);
     make(&mut desk, "fasten a").unwrap();
     std::fs::write(&desk.path, "# theirs\n").unwrap();
-    let trouble = desk.save(None, NOW).unwrap_err().to_string();
+    let trouble = save(&mut desk, None).unwrap_err().to_string();
     assert!(
         trouble.contains("changed by someone else meanwhile"),
         "{trouble}"
     );
     assert_eq!(std::fs::read_to_string(&desk.path).unwrap(), "# theirs\n");
     let other = folder.path().join("mine.toml");
-    desk.save(Some(&other), NOW).unwrap();
+    save(&mut desk, Some(&other)).unwrap();
     assert!(
         std::fs::read_to_string(&other)
             .unwrap()
@@ -383,6 +493,72 @@ fn moment() -> impl Strategy<Value = Instant> {
     prop_oneof![
         (0i64..4_000_000_000).prop_map(Instant),
         (0i64..10_800).prop_map(|s| Instant(1_824_938_000 + s)),
+    ]
+}
+
+fn fresh() -> impl Strategy<Value = Arc<str>> {
+    prop::sample::select(vec!["new-1", "new-2", "resource", "none", "ä.b_c"])
+        .prop_map(Arc::<str>::from)
+}
+
+fn known_or_fresh() -> impl Strategy<Value = Arc<str>> {
+    fresh().prop_map(|id| if &*id == "none" { "hall".into() } else { id })
+}
+
+/// Each key once, as the language wants it.
+fn once(fields: Vec<Field>) -> Vec<Field> {
+    let mut kept: Vec<Field> = Vec::new();
+    for field in fields {
+        if kept.iter().all(|other| other.key() != field.key()) {
+            kept.push(field);
+        }
+    }
+    kept
+}
+
+fn field() -> impl Strategy<Value = Field> {
+    let word = || {
+        prop::sample::select(vec![
+            "stage",
+            "two words",
+            "none",
+            "a,b",
+            "qu\"ote\\",
+            "because",
+            "ä",
+        ])
+        .prop_map(Arc::<str>::from)
+    };
+    let list = move || {
+        prop::collection::vec(word(), 0..4).prop_map(|list| {
+            let mut kept: Vec<Arc<str>> = Vec::new();
+            for item in list {
+                if !kept.contains(&item) {
+                    kept.push(item);
+                }
+            }
+            kept
+        })
+    };
+    let names = || {
+        prop::sample::subsequence(vec!["hall", "big", "big-1"], 0..3)
+            .prop_map(|list| list.into_iter().map(Arc::<str>::from).collect::<Vec<_>>())
+    };
+    let number = || prop::option::of(0u64..1000);
+    let length = || prop::option::of(0i64..90_000);
+    prop_oneof![
+        "[ -~äß]{0,20}".prop_map(|title| Field::Title(title.into())),
+        number().prop_map(Field::Size),
+        number().prop_map(Field::Seats),
+        list().prop_map(Field::Needs),
+        list().prop_map(Field::People),
+        list().prop_map(Field::Offers),
+        names().prop_map(Field::Only),
+        names().prop_map(Field::Never),
+        (1u32..100).prop_map(Field::Weight),
+        (1i64..90_000).prop_map(Field::Length),
+        length().prop_map(Field::Setup),
+        length().prop_map(Field::Turnaround),
     ]
 }
 
@@ -403,6 +579,26 @@ fn change() -> impl Strategy<Value = Change> {
         id().prop_map(Change::Restore),
         (resource(), span()).prop_map(|(resource, span)| Change::Close { resource, span }),
         (resource(), span()).prop_map(|(resource, span)| Change::Reopen { resource, span }),
+        (fresh(), span(), prop::collection::vec(field(), 0..4)).prop_map(|(id, span, fields)| {
+            Change::Add {
+                id,
+                span,
+                fields: once(fields),
+            }
+        }),
+        (
+            fresh(),
+            prop::option::of(prop::sample::select(vec!["big", "group"])),
+            prop::collection::vec(field(), 0..3)
+        )
+            .prop_map(|(id, kind, fields)| Change::AddResource {
+                id,
+                kind: kind.map(Into::into),
+                fields: once(fields)
+            }),
+        (prop_oneof![id(), resource(), known_or_fresh()], field())
+            .prop_map(|(id, field)| Change::Set { id, field }),
+        prop_oneof![id(), resource(), known_or_fresh()].prop_map(Change::Drop),
         Just(Change::Undo),
         Just(Change::Redo),
     ]
@@ -415,7 +611,11 @@ proptest! {
         because in prop::option::of("[ -~äß\"\\\\]{0,30}"),
         zone in prop::sample::select(vec!["Europe/Lisbon", "America/New_York", "Australia/Lord_Howe", "Asia/Tokyo"]),
     ) {
-        let text = SMALL.replace("Europe/Lisbon", zone);
+        let mut text = SMALL.replace("Europe/Lisbon", zone);
+        // `set` and `drop` speak of what is there already.
+        for id in ["new-1", "new-2", "resource", "ä.b_c"] {
+            text.push_str(&format!("[[request]]\nid = \"{id}\"\nstart = 2027-01-12T10:00:00\nlength = \"1h\"\n"));
+        }
         let read = document::read("small", text.as_bytes()).unwrap();
         let edit = Edit { what, because: because.map(Into::into) };
         let line = print(&edit, Zone::named(zone).unwrap());
@@ -465,7 +665,7 @@ fn the_samples_survive_edits_unchanged_elsewhere() {
     );
     let mut desk = desk(&path);
     make(&mut desk, "move eels by +10m").unwrap();
-    desk.save(None, NOW).unwrap();
+    save(&mut desk, None).unwrap();
     let after = std::fs::read_to_string(&path).unwrap();
     let changed: Vec<_> = before
         .lines()

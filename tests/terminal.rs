@@ -311,16 +311,25 @@ fn the_terminal_is_given_back_on_signals_and_edits_are_kept() {
         terminal.signal(signal);
         assert_eq!(terminal.end(), code, "{signal}");
         assert!(terminal.restored(), "{signal}");
-        let rescued = folder.path().join("three-day-event.rescued.txt");
-        assert_eq!(
-            std::fs::read_to_string(&rescued).unwrap(),
-            "fasten eels because \"agreed\"\n"
+        // The journal has it; the next session offers it.
+        assert!(folder.path().join("three-day-event.journal").exists());
+        let count = fewest(&["count", &path]);
+        assert!(
+            crate::tools::err(&count).contains("1 edit not saved in a journal"),
+            "{count:?}"
         );
-        assert_eq!(
-            fewest(&["apply", &path, rescued.to_str().unwrap()])
-                .status
-                .code(),
-            Some(0)
+        let mut terminal = Terminal::open(&[&path], (80, 24), &XTERM);
+        terminal.wait_for("1 edit not saved last time: Enter takes them in");
+        terminal.press("\r");
+        terminal.wait_for("1 edit taken in");
+        terminal.wait_for("1 edit not saved");
+        terminal.press("qs");
+        assert_eq!(terminal.end(), 0);
+        let saved = std::fs::read_to_string(&path).unwrap();
+        assert!(saved.contains("fastened = true"));
+        assert!(
+            !folder.path().join("three-day-event.journal").exists(),
+            "spent"
         );
     }
 }

@@ -32,10 +32,15 @@ pub enum Action {
     Withdraw,
     Close,
     Reopen,
+    Add,
+    Set,
+    Drop,
     Undo,
     Redo,
     Save,
     Find,
+    Findings,
+    Days,
     Command,
     Help,
     Leave,
@@ -83,7 +88,7 @@ const CHANGE: &str = "Changing";
 const DESK: &str = "The desk";
 
 /// Everything that can be done, in the order of the help.
-pub const ACTIONS: [Entry; 30] = [
+pub const ACTIONS: [Entry; 35] = [
     entry(
         Action::Left,
         "left",
@@ -205,6 +210,22 @@ pub const ACTIONS: [Entry; 30] = [
         "find a piece by id, title or person",
     ),
     entry(
+        Action::Days,
+        "days",
+        &["d"],
+        LOOK,
+        None,
+        "the days, each with its load and what is in use",
+    ),
+    entry(
+        Action::Findings,
+        "findings",
+        &["i"],
+        LOOK,
+        None,
+        "what is doubtful, has no place, or clashes",
+    ),
+    entry(
         Action::Carry,
         "carry",
         &["enter"],
@@ -259,6 +280,30 @@ pub const ACTIONS: [Entry; 30] = [
         CHANGE,
         None,
         "reopen the row's resource (asks from when to when)",
+    ),
+    entry(
+        Action::Add,
+        "add",
+        &["a"],
+        CHANGE,
+        None,
+        "add a request: a form of its fields",
+    ),
+    entry(
+        Action::Set,
+        "set",
+        &["e"],
+        CHANGE,
+        None,
+        "edit the fields of the piece, or of the row's resource",
+    ),
+    entry(
+        Action::Drop,
+        "drop",
+        &["D"],
+        CHANGE,
+        None,
+        "take the request out of the file altogether",
     ),
     entry(
         Action::Undo,

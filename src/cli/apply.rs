@@ -2,7 +2,7 @@
 
 use super::{Outcome, Search, count::exit_code, notes};
 use crate::clock::Instant;
-use crate::desk::Desk;
+use crate::desk::{Access, Desk, whoami};
 use crate::edit::Change;
 use crate::store;
 use crate::text::clean;
@@ -31,10 +31,31 @@ pub(super) fn apply(file: &Path, script: &Path, search: Search) -> Outcome {
     let Ok(text) = String::from_utf8(bytes) else {
         return Outcome::bad(format!("{name}: this is not UTF-8"));
     };
-    let mut desk = match Desk::open(file) {
-        Ok(desk) => desk,
+    let files = std::sync::Arc::new(store::RealFiles);
+    let (mut desk, said) = match Desk::open_to_edit(file, &whoami(), files) {
+        Ok(opened) => opened,
         Err(trouble) => return Outcome::bad(trouble),
     };
+    if let Access::Theirs(who) = desk.access() {
+        return Outcome::bad(format!("refused: {who} has it open; nothing was changed"));
+    }
+    let mut mentioned: String = said.iter().map(|line| format!("{line}\n")).collect();
+    let taken_in = search.unsaved && desk.leftover().is_some();
+    if taken_in {
+        let (taken, rest) = desk.take_in_leftover();
+        mentioned.push_str(&format!(
+            "{} taken in\n",
+            words::count_words(taken, "unsaved edit")
+        ));
+        if !rest.is_empty() {
+            mentioned.push_str("what could not be taken in is kept beside the file\n");
+        }
+    } else if let Some(leftover) = desk.leftover() {
+        let count = words::count_words(leftover.records, "edit");
+        mentioned.push_str(&format!(
+            "{count} not saved in a journal beside the file; --unsaved takes them in\n"
+        ));
+    }
     let now = Instant(chrono::Utc::now().timestamp());
     let mut made = 0;
     for (at, line) in text.lines().enumerate() {
@@ -71,8 +92,11 @@ pub(super) fn apply(file: &Path, script: &Path, search: Search) -> Outcome {
         Err(outcome) => return outcome,
     };
     desk.receive(std::sync::Arc::clone(&settled));
-    if let Err(trouble) = desk.save(None, now) {
+    if let Err(trouble) = desk.save(None, now, &mut |_| {}) {
         return Outcome::bad(trouble);
+    }
+    if taken_in {
+        desk.close_journal();
     }
     let resources = desk.timetable().resources().all.len();
     let state = words::state(
@@ -84,7 +108,7 @@ pub(super) fn apply(file: &Path, script: &Path, search: Search) -> Outcome {
     let edits = if made == 1 { "edit" } else { "edits" };
     Outcome {
         out: format!("{made} {edits} made and saved\n{state}\n"),
-        err: notes(&desk, file),
+        err: mentioned + &notes(&desk, file),
         code: exit_code(&settled),
     }
 }

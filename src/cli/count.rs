@@ -60,10 +60,11 @@ struct ClashOut<'a> {
 }
 
 pub(super) fn count(file: &Path, json: bool, search: Search) -> Outcome {
-    let desk = match Desk::open(file) {
+    let mut desk = match Desk::open(file) {
         Ok(desk) => desk,
         Err(trouble) => return Outcome::bad(trouble),
     };
+    let unsaved = super::unsaved(&mut desk, search.unsaved);
     let settled = match search.run(desk.job()) {
         Ok(settled) => settled,
         Err(outcome) => return outcome,
@@ -79,7 +80,7 @@ pub(super) fn count(file: &Path, json: bool, search: Search) -> Outcome {
     };
     Outcome {
         out,
-        err: notes(&desk, file),
+        err: unsaved + &notes(&desk, file),
         code: exit_code(&settled),
     }
 }

@@ -119,6 +119,9 @@ pub struct Search {
     /// The same seed and steps give the same answer on one thread
     #[arg(long, default_value_t = 1, value_name = "K")]
     seed: u64,
+    /// Takes in edits that a session on the screen did not save
+    #[arg(long)]
+    unsaved: bool,
     /// Threads: floors and plans are searched side by side on two or more
     #[arg(long, value_name = "T", value_parser = clap::value_parser!(u16).range(1..=64))]
     threads: Option<u16>,
@@ -199,12 +202,7 @@ pub fn run(args: impl IntoIterator<Item = std::ffi::OsString>) -> Outcome {
 fn later(args: &[std::ffi::OsString]) -> Option<&'static str> {
     const COMMANDS: [&str; 6] = ["why", "ease", "issue", "differs", "handouts", "spoken"];
     let first = args.get(1)?;
-    let command = COMMANDS.into_iter().find(|command| *first == **command);
-    command.or_else(|| {
-        args.iter()
-            .any(|arg| arg == "--unsaved")
-            .then_some("--unsaved")
-    })
+    COMMANDS.into_iter().find(|command| *first == **command)
 }
 
 impl Default for Search {
@@ -214,6 +212,7 @@ impl Default for Search {
             steps: None,
             seed: 1,
             threads: None,
+            unsaved: false,
         }
     }
 }
@@ -242,6 +241,29 @@ impl Search {
         let until = until.ok_or_else(|| Outcome::bad("--seconds is too large"))?;
         job.run(self.budget(), &crate::engine::Until(until), &mut |_| {})
             .map_err(Outcome::fault)
+    }
+}
+
+/// Takes unsaved edits in or mentions them; the line for standard error.
+fn unsaved(desk: &mut crate::desk::Desk, take_in: bool) -> String {
+    if !take_in {
+        return match desk.peek_unsaved() {
+            0 => String::new(),
+            count => format!(
+                "{} not saved in a journal beside the file; --unsaved takes them in\n",
+                crate::words::count_words(count, "edit")
+            ),
+        };
+    }
+    match desk.take_in_unsaved() {
+        (taken, all) if taken < all => {
+            format!("{taken} of {all} unsaved edits taken in, the next does not fit\n")
+        }
+        (0, _) => String::new(),
+        (taken, _) => format!(
+            "{} taken in\n",
+            crate::words::count_words(taken, "unsaved edit")
+        ),
     }
 }
 

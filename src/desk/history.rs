@@ -1,7 +1,7 @@
 //! Steps that were made, and those that were taken back.
 
 use crate::claim::Plan;
-use crate::document::Patch;
+use crate::document::{Document, Patch};
 use crate::edit::Edit;
 use crate::timetable::Timetable;
 use std::sync::Arc;
@@ -13,9 +13,18 @@ pub struct Step {
     pub edits: Vec<Edit>,
     pub(super) before: Timetable,
     pub(super) after: Timetable,
-    pub(super) patches: Vec<Patch>,
+    pub(super) text: TextChange,
     /// The plan that stood before it: undoing brings that back too.
     pub(super) reference: Option<Arc<Plan>>,
+}
+
+/// What a step did to the text.
+#[derive(Clone, Debug)]
+pub(super) enum TextChange {
+    /// Patches that can be taken back.
+    Patches(Vec<Patch>),
+    /// The whole text before and after; only what is replayed as text has it.
+    Whole(Box<(Document, Document)>),
 }
 
 /// A line of steps with a position in it.
@@ -53,6 +62,11 @@ impl History {
         (self.saved, self.ever) = (Some(self.at), true);
     }
 
+    /// Where in the line we are.
+    pub(super) fn position(&self) -> usize {
+        self.at
+    }
+
     /// The position that the file shows; the beginning as long as nothing was ever saved.
     fn saved_at(&self) -> Option<usize> {
         if self.ever { self.saved } else { Some(0) }
@@ -68,6 +82,11 @@ impl History {
     pub(super) fn since_saved(&self) -> impl Iterator<Item = &Step> {
         let from = self.saved_at().unwrap_or(0).min(self.at);
         self.steps[from..self.at].iter()
+    }
+
+    /// The step at a position, made or taken back.
+    pub(super) fn at(&self, position: usize) -> Option<&Step> {
+        self.steps.get(position)
     }
 
     pub(super) fn made(&self) -> &[Step] {

@@ -5,10 +5,13 @@
 //! Imports everything below `words`.
 
 mod history;
+mod safety;
 mod settle;
 mod solver;
 
 pub use history::Step;
+use history::TextChange;
+pub use safety::{Access, Disk, Leftover, whoami};
 pub use settle::{Settled, Survey, settle};
 pub use solver::{Event, Job, Solver};
 
@@ -16,7 +19,8 @@ use crate::claim::Plan;
 use crate::clock::{Instant, Zone};
 use crate::document::{self, Document, Mistake, Mistakes, PlanFile, State, issued_path, plan_path};
 use crate::edit::{self, Change, Edit, Refused};
-use crate::store;
+use crate::store::journal::Record;
+use crate::store::{Files, Locking, RealFiles, lock};
 use crate::timetable::Timetable;
 use crate::words;
 use std::collections::HashMap;
@@ -41,6 +45,9 @@ pub enum Trouble {
     /// Somebody else wrote it since it was read.
     #[error("changed by someone else meanwhile; keep yours with :save OTHER.toml ({0})")]
     Changed(String),
+    /// Another desk has it.
+    #[error("read only: {0} has it open; keep yours with :save OTHER.toml")]
+    Locked(String),
     /// There is a file of that name that is not the one opened.
     #[error("there is a file of that name already; choose another ({0})")]
     Exists(String),
@@ -79,6 +86,9 @@ pub struct Desk {
     settled: Option<Arc<Settled>>,
     /// The generation whose plan file is still to be written.
     plan_due: Option<u64>,
+    files: Arc<dyn Files>,
+    access: Access,
+    safety: safety::Safety,
 }
 
 impl Desk {
@@ -87,12 +97,21 @@ impl Desk {
     /// # Errors
     /// [`Trouble`], with every mistake in the file.
     pub fn open(path: &Path) -> Result<Desk, Trouble> {
-        let bytes = store::read_bounded(path, document::MOST_BYTES)
+        Desk::open_through(path, Arc::new(RealFiles))
+    }
+
+    /// The same, through a layer over the files.
+    ///
+    /// # Errors
+    /// [`Trouble`], with every mistake in the file.
+    pub fn open_through(path: &Path, files: Arc<dyn Files>) -> Result<Desk, Trouble> {
+        let bytes = files
+            .read(path, document::MOST_BYTES)
             .map_err(|error| Trouble::io(path, error))?;
         let name = path.display().to_string();
         let read = document::read(&name, &bytes).map_err(Trouble::Mistakes)?;
         let plan_file = |path: PathBuf| {
-            let bytes = store::read_bounded(&path, document::MOST_BYTES).ok()?;
+            let bytes = files.read(&path, document::MOST_BYTES).ok()?;
             PlanFile::read(
                 &path.display().to_string(),
                 std::str::from_utf8(&bytes).ok()?,
@@ -129,6 +148,9 @@ impl Desk {
             generation: 0,
             settled: None,
             plan_due: None,
+            files,
+            access: Access::Unasked,
+            safety: safety::Safety::default(),
         })
     }
 
@@ -168,14 +190,16 @@ impl Desk {
         }
     }
 
-    /// The edits since the file was last saved, as lines.
-    pub fn unsaved_lines(&self) -> Vec<String> {
+    /// The steps since the file was last saved, each as its lines.
+    fn unsaved_steps(&self) -> Vec<Vec<String>> {
         let zone = self.timetable.settings.zone;
-        self.history
-            .since_saved()
-            .flat_map(|step| &step.edits)
-            .map(|edit| edit::print(edit, zone))
-            .collect()
+        let lines = |step: &Step| {
+            step.edits
+                .iter()
+                .map(|edit| edit::print(edit, zone))
+                .collect()
+        };
+        self.history.since_saved().map(lines).collect()
     }
 
     /// The work for the solver as things stand.
@@ -223,6 +247,7 @@ impl Desk {
     pub fn make(&mut self, edits: Vec<Edit>) -> Result<(), Refused> {
         match edits.first().map(|edit| &edit.what) {
             None => return Ok(()),
+            Some(_) if matches!(self.access, Access::Theirs(_)) => return Err(self.read_only()),
             Some(Change::Undo) => return self.undo(),
             Some(Change::Redo) => return self.redo(),
             Some(_) => {}
@@ -246,11 +271,22 @@ impl Desk {
             edits: edits_made,
             before,
             after: self.timetable.clone(),
-            patches,
+            text: TextChange::Patches(patches),
             reference: self.reference.clone(),
         });
         self.generation += 1;
+        if let Some(step) = self.history.made().last() {
+            let edits = step.edits.clone();
+            self.note_step(&edits);
+        }
         Ok(())
+    }
+
+    fn read_only(&self) -> Refused {
+        match &self.access {
+            Access::Theirs(who) => Refused::ReadOnly(who.clone()),
+            _ => Refused::Nothing("do"),
+        }
     }
 
     /// Turns a swap into the two pins it means.
@@ -295,10 +331,14 @@ impl Desk {
     /// [`Refused::Nothing`] at the beginning.
     pub fn undo(&mut self) -> Result<(), Refused> {
         let step = self.history.back().ok_or(Refused::Nothing("undo"))?;
-        self.document.take_back(&step.patches);
+        match &step.text {
+            TextChange::Patches(patches) => self.document.take_back(patches),
+            TextChange::Whole(texts) => self.document = texts.0.clone(),
+        }
         self.timetable = step.before.clone();
         self.reference = step.reference.clone();
         self.generation += 1;
+        self.note_walk(self.history.position(), true);
         Ok(())
     }
 
@@ -308,9 +348,13 @@ impl Desk {
     /// [`Refused::Nothing`] at the end.
     pub fn redo(&mut self) -> Result<(), Refused> {
         let step = self.history.forward().ok_or(Refused::Nothing("redo"))?;
-        self.document.repeat(&step.patches);
+        match &step.text {
+            TextChange::Patches(patches) => self.document.repeat(patches),
+            TextChange::Whole(texts) => self.document = texts.1.clone(),
+        }
         self.timetable = step.after.clone();
         self.generation += 1;
+        self.note_walk(self.history.position() - 1, false);
         Ok(())
     }
 
@@ -334,13 +378,24 @@ impl Desk {
     }
 
     /// Saves, here or under another name. The plan file follows with the next settled
-    /// answer of this state, or at once when there is one.
+    /// answer of this state, or at once when there is one. `announce` gets the journal's
+    /// record of the save before the file is replaced, and makes it last.
     ///
     /// # Errors
     /// [`Trouble`]; the edits are then still here.
-    pub fn save(&mut self, other: Option<&Path>, now: Instant) -> Result<(), Trouble> {
+    pub fn save(
+        &mut self,
+        other: Option<&Path>,
+        now: Instant,
+        announce: &mut dyn FnMut(Record),
+    ) -> Result<(), Trouble> {
         let path = other.unwrap_or(&self.path).to_path_buf();
         let name = crate::text::clean(&path.display().to_string()).into_owned();
+        if let Access::Theirs(who) = &self.access
+            && other.is_none()
+        {
+            return Err(Trouble::Locked(who.clone()));
+        }
         let same = path == self.path
             || std::fs::canonicalize(&path).ok().is_some_and(|there| {
                 std::fs::canonicalize(&self.path).is_ok_and(|ours| ours == there)
@@ -349,19 +404,37 @@ impl Desk {
             return Err(Trouble::Exists(name));
         }
         if same
-            && let Ok(bytes) = store::read_bounded(&path, document::MOST_BYTES)
+            && let Ok(bytes) = self.files.read(&path, document::MOST_BYTES)
             && document::hash(&bytes) != self.on_disk
         {
             return Err(Trouble::Changed(name));
         }
         let bytes = self.document.bytes();
-        store::write_atomically(&path, &bytes).map_err(|error| Trouble::io(&path, error))?;
+        announce(Record::Saved(document::hash(&bytes)));
+        self.files
+            .replace(&path, &bytes)
+            .map_err(|error| Trouble::io(&path, error))?;
+        if !same {
+            self.move_to(&path);
+        }
         self.path = path;
         self.on_disk = document::hash(&bytes);
         self.saved_text = self.document.text().into();
         self.history.saved();
+        self.new_epoch();
         self.plan_due = Some(self.generation);
         self.write_plan(now)
+    }
+
+    /// The desk goes on under another name: the lock and the journal go with it.
+    fn move_to(&mut self, path: &Path) {
+        self.close_journal();
+        self.safety = safety::Safety::default();
+        self.access = match lock(path, &whoami()) {
+            Ok(Locking::Ours(lock)) => Access::Ours(lock),
+            Ok(Locking::Theirs(who)) => Access::Theirs(who),
+            Err(error) => Access::Nowhere(error.to_string()),
+        };
     }
 
     /// Writes the plan file if one is due and its answer is here.
@@ -387,7 +460,8 @@ impl Desk {
             words::unplaced(&self.timetable, unplaced)
         });
         let path = plan_path(&self.path);
-        store::write_atomically(&path, text.as_bytes())
+        self.files
+            .replace(&path, text.as_bytes())
             .map_err(|error| Trouble::io(&path, error))?;
         // A better answer of the same state is written again when leaving or saving.
         self.plan_due = None;

@@ -52,8 +52,8 @@ impl Document {
     /// The line, from 1, on which a table begins.
     pub fn line_of(&self, table: &Touched) -> Option<usize> {
         let (places, at) = match table {
-            Touched::Request(at) => (&self.requests, *at),
-            Touched::Named(at) => (&self.named, *at),
+            Touched::Request(at) | Touched::RequestGone(at) => (&self.requests, *at),
+            Touched::Named(at) | Touched::NamedGone(at) => (&self.named, *at),
             Touched::Kind(at) => (&self.kinds, *at),
         };
         let start = places.get(at)?.start;
@@ -62,8 +62,8 @@ impl Document {
 
     fn places(&mut self, table: &Touched) -> (&mut Vec<Range<usize>>, usize) {
         match table {
-            Touched::Request(at) => (&mut self.requests, *at),
-            Touched::Named(at) => (&mut self.named, *at),
+            Touched::Request(at) | Touched::RequestGone(at) => (&mut self.requests, *at),
+            Touched::Named(at) | Touched::NamedGone(at) => (&mut self.named, *at),
             Touched::Kind(at) => (&mut self.kinds, *at),
         }
     }

@@ -22,8 +22,13 @@ pub struct Patch {
 }
 
 impl Patch {
+    /// Place, length and new text, for a plain replacement of bytes.
+    pub fn plain(&self) -> (usize, usize, String) {
+        (self.at, self.old.len(), self.new.clone())
+    }
+
     /// The patch that takes this one back.
-    fn inverse(&self) -> Patch {
+    pub fn inverse(&self) -> Patch {
         Patch {
             at: self.at,
             old: self.new.clone(),
@@ -48,6 +53,12 @@ impl Document {
         let mut patches = Vec::new();
         for table in touched {
             match table {
+                Touched::RequestGone(at) => patches.extend(self.take_out(&Touched::Request(*at))),
+                Touched::NamedGone(at) => patches.extend(self.take_out(&Touched::Named(*at))),
+                Touched::Request(at) if before.requests.len() < after.requests.len() => {
+                    let keys = new_request_keys(&after.requests[*at], zone);
+                    patches.push(self.add(table, "request", &keys));
+                }
                 Touched::Request(at) => {
                     for (key, value) in
                         request_changes(&before.requests[*at], &after.requests[*at], zone)
@@ -61,6 +72,12 @@ impl Document {
                         patches.push(self.add(table, "resource", &named_keys(now, zone)));
                         continue;
                     };
+                    for (key, value) in named_changes(then, now) {
+                        patches.extend(self.set(table, "resource", key, value.map(Set::Whole)));
+                    }
+                    if then.common.closed == now.common.closed {
+                        continue;
+                    }
                     let closed = |named: &Named| named.common.closed.clone().unwrap_or_default();
                     let (was, is) = (closed(then), closed(now));
                     for value in closure_changes(&was, &is, zone) {
@@ -96,7 +113,7 @@ impl Document {
         let moved = |byte: usize| byte + patch.new.len() - patch.old.len();
         let (places, own) = self.places(&patch.table);
         if patch.removes.is_some() {
-            places.truncate(own);
+            places.remove(own);
         } else if patch.adds.is_none() {
             places[own].end = moved(places[own].end);
         }
@@ -108,7 +125,7 @@ impl Document {
         ] {
             let same = std::mem::discriminant(&table) == std::mem::discriminant(&changed);
             for (at, place) in places.iter_mut().enumerate() {
-                let own = same && at == own && patch.adds.is_none();
+                let own = same && at == own && patch.adds.is_none() && patch.removes.is_none();
                 if !own && place.start >= end {
                     *place = moved(place.start)..moved(place.end);
                 }
@@ -116,7 +133,8 @@ impl Document {
         }
         if let Some(place) = &patch.adds {
             let place = patch.at + place.start..patch.at + place.end;
-            self.places(&patch.table).0.push(place);
+            let (places, own) = self.places(&patch.table);
+            places.insert(own, place);
         }
     }
 
@@ -142,6 +160,38 @@ impl Document {
             table: table.clone(),
             adds: None,
             removes: None,
+        };
+        self.apply(&patch);
+        Some(patch)
+    }
+
+    /// Takes a table out: its lines, and the blank line after (or before) them.
+    fn take_out(&mut self, table: &Touched) -> Option<Patch> {
+        let (places, own) = self.places(table);
+        let place = places.get(own)?.clone();
+        let text = &self.text;
+        let range = if text[place.clone()].starts_with('{') {
+            with_comma(text, place.clone())
+        } else {
+            let line_start = text[..place.start]
+                .rfind('\n')
+                .map_or(0, |newline| newline + 1);
+            let line_end = text[place.end..]
+                .find('\n')
+                .map_or(text.len(), |newline| place.end + newline + 1);
+            let blank = ["\r\n", "\n"]
+                .into_iter()
+                .find(|blank| text[line_end..].starts_with(blank));
+            line_start..line_end + blank.map_or(0, str::len)
+        };
+        let inside = place.start - range.start..place.end - range.start;
+        let patch = Patch {
+            at: range.start,
+            old: text[range].into(),
+            new: String::new(),
+            table: table.clone(),
+            adds: None,
+            removes: Some(inside),
         };
         self.apply(&patch);
         Some(patch)
@@ -440,6 +490,40 @@ fn request_changes(
             after.pin.as_ref().map(|pin| Value::from(pin.as_ref())),
         ));
     }
+    let number = |value: Option<u64>| value.map(|value| Value::from(value as i64));
+    let length = |value: Option<i64>| value.map(|value| Value::from(print_length(value)));
+    let text = |text: &Arc<str>| (!text.is_empty()).then(|| Value::from(text.as_ref()));
+    let mut note = |key, differs: bool, value: Option<Value>| {
+        if differs {
+            changes.push((key, value));
+        }
+    };
+    note("title", before.title != after.title, text(&after.title));
+    note("size", before.size != after.size, number(after.size));
+    let weight = (after.weight > 1).then(|| Value::from(i64::from(after.weight)));
+    note("weight", before.weight != after.weight, weight);
+    note(
+        "needs",
+        before.needs != after.needs,
+        list_value(&after.needs),
+    );
+    note(
+        "people",
+        before.people != after.people,
+        list_value(&after.people),
+    );
+    note("only", before.only != after.only, list_value(&after.only));
+    note(
+        "never",
+        before.never != after.never,
+        list_value(&after.never),
+    );
+    note("setup", before.setup != after.setup, length(after.setup));
+    note(
+        "turnaround",
+        before.turnaround != after.turnaround,
+        length(after.turnaround),
+    );
     for (key, was, is) in [
         ("fastened", before.fastened, after.fastened),
         ("withdrawn", before.withdrawn, after.withdrawn),
@@ -451,10 +535,84 @@ fn request_changes(
     changes
 }
 
+/// A list, or nothing when it is empty.
+fn list_value(list: &[Arc<str>]) -> Option<Value> {
+    (!list.is_empty())
+        .then(|| Value::Array(list.iter().map(|text| Value::from(text.as_ref())).collect()))
+}
+
+/// The keys of a new request.
+fn new_request_keys(request: &Request, zone: Zone) -> Vec<(&'static str, Value)> {
+    let mut keys = vec![("id", Value::from(request.id.as_ref()))];
+    let plain = Request::plain(&request.id, request.span());
+    let changes = request_changes(&plain, request, zone);
+    let (title, rest): (Vec<_>, Vec<_>) = changes.into_iter().partition(|(key, _)| *key == "title");
+    let mut add = |list: Vec<(&'static str, Option<Value>)>| {
+        keys.extend(
+            list.into_iter()
+                .filter_map(|(key, value)| Some((key, value?))),
+        );
+    };
+    add(title);
+    add(vec![
+        ("start", Some(moment_value(request.start, zone))),
+        ("end", Some(moment_value(request.span().end, zone))),
+    ]);
+    add(rest);
+    keys
+}
+
+/// The keys of a named resource that differ, closures aside.
+fn named_changes(before: &Named, after: &Named) -> Vec<(&'static str, Option<Value>)> {
+    let (was, is) = (&before.common, &after.common);
+    let length = |value: Option<i64>| value.map(|value| Value::from(print_length(value)));
+    let list = |list: &Vec<Arc<str>>| {
+        Value::Array(list.iter().map(|text| Value::from(text.as_ref())).collect())
+    };
+    let mut changes = Vec::new();
+    let mut note = |key, differs: bool, value: Option<Value>| {
+        if differs {
+            changes.push((key, value));
+        }
+    };
+    note(
+        "title",
+        was.title != is.title,
+        is.title.as_ref().map(|title| Value::from(title.as_ref())),
+    );
+    note(
+        "seats",
+        was.seats != is.seats,
+        is.seats.map(|seats| Value::from(seats as i64)),
+    );
+    note(
+        "offers",
+        was.offers != is.offers,
+        is.offers.as_ref().map(list),
+    );
+    note("setup", was.setup != is.setup, length(is.setup));
+    note(
+        "turnaround",
+        was.turnaround != is.turnaround,
+        length(is.turnaround),
+    );
+    changes
+}
+
 fn named_keys(named: &Named, zone: Zone) -> Vec<(&'static str, Value)> {
     let text = |text: &Arc<str>| Value::from(text.as_ref());
     let mut keys = vec![("id", text(&named.id))];
     keys.extend(named.kind.as_ref().map(|kind| ("kind", text(kind))));
+    let nothing = Named {
+        id: Arc::clone(&named.id),
+        kind: None,
+        common: crate::timetable::Common::default(),
+    };
+    keys.extend(
+        named_changes(&nothing, named)
+            .into_iter()
+            .filter_map(|(key, value)| Some((key, value?))),
+    );
     keys.extend(
         named
             .common

@@ -1,5 +1,6 @@
 //! Applying an edit to a timetable.
 
+use super::field::Field;
 use super::{Change, Edit};
 use crate::clock::{Instant, YEARS};
 use crate::timetable::{Closure, Common, Count, Kind, Listed, Named, Request, Timetable, subtract};
@@ -56,6 +57,37 @@ pub enum Refused {
     /// The year is out of bounds.
     #[error("that is outside the years {} to {}", YEARS.start(), YEARS.end())]
     Year,
+    /// The name is used.
+    #[error("{0} is the name of something already; choose another")]
+    Taken(Arc<str>),
+    /// A name in only or never that is unknown.
+    #[error("there is no resource or kind {0}")]
+    UnknownName(Arc<str>),
+    /// A field that belongs to the other sort of thing.
+    #[error("a {what} has no {key}")]
+    NoSuchField {
+        /// Request or resource.
+        what: &'static str,
+        /// The key.
+        key: &'static str,
+    },
+    /// Something else names it.
+    #[error("{by} speaks of {id} in its pin, only or never; change that first")]
+    SpokenOf {
+        /// What was to be dropped.
+        id: Arc<str>,
+        /// A request that names it.
+        by: Arc<str>,
+    },
+    /// A member cannot be dropped, its kind counts it.
+    #[error("{0} is a member of a kind; close it, or change the kind's count in the file")]
+    Member(Arc<str>),
+    /// Without it, what is said of others would mean something else.
+    #[error("{0} is the last of its kind; close it instead")]
+    LastOne(Arc<str>),
+    /// Another desk writes.
+    #[error("read only: {0} has it open")]
+    ReadOnly(String),
     /// Undo without history, and the like.
     #[error("there is nothing to {0}")]
     Nothing(&'static str),
@@ -70,6 +102,10 @@ pub enum Touched {
     Named(usize),
     /// The kind at that place, which is new, so that the resources implied so far stay.
     Kind(usize),
+    /// The request that was at that place is gone.
+    RequestGone(usize),
+    /// The named resource that was at that place is gone.
+    NamedGone(usize),
 }
 
 /// Applies a change to the timetable and says what it touched. `Swap`, `Undo` and `Redo`
@@ -152,6 +188,71 @@ pub fn apply(timetable: &mut Timetable, edit: &Edit) -> Result<Vec<Touched>, Ref
             *closed = left;
             Ok(())
         }),
+        Change::Add { id, span, fields } => {
+            free(timetable, id)?;
+            within_years(timetable, span.start)?;
+            within_years(timetable, span.end)?;
+            let mut request = Request::plain(id, *span);
+            for field in fields {
+                set_request(timetable, &mut request, field)?;
+            }
+            timetable.push(request);
+            Ok(vec![Touched::Request(timetable.requests.len() - 1)])
+        }
+        Change::AddResource { id, kind, fields } => {
+            free(timetable, id)?;
+            if let Some(kind) = kind.as_ref().filter(|kind| !is_kind(timetable, kind)) {
+                free(timetable, kind)?;
+            }
+            let mut common = Common::default();
+            for field in fields {
+                set_common(&mut common, field)?;
+            }
+            let mut touched = state_the_implied_kind(timetable);
+            let at = timetable.named.len();
+            timetable.named.push(Arc::new(Named {
+                id: Arc::clone(id),
+                kind: kind.clone(),
+                common,
+            }));
+            timetable.listed.push(Listed::Named(at));
+            timetable.refresh();
+            touched.push(Touched::Named(at));
+            Ok(touched)
+        }
+        Change::Set { id, field } => match timetable.position(id) {
+            Some(at) => {
+                unbegun(timetable, at)?;
+                let mut request = Request::clone(&timetable.requests[at]);
+                set_request(timetable, &mut request, field)?;
+                within_years(timetable, request.span().end)?;
+                if request == *timetable.requests[at] {
+                    return Err(already(&request, "so"));
+                }
+                timetable.replace(at, request);
+                if matches!(field, Field::Only(_) | Field::Never(_)) {
+                    timetable.refresh();
+                }
+                Ok(vec![Touched::Request(at)])
+            }
+            None => {
+                let (mut before, mut after) = (Common::default(), Common::default());
+                let touched = with_named(timetable, id, |common| {
+                    before.clone_from(common);
+                    set_common(common, field)?;
+                    after.clone_from(common);
+                    Ok(())
+                })?;
+                if before == after {
+                    return Err(Refused::Already {
+                        piece: Arc::clone(id),
+                        state: "so",
+                    });
+                }
+                Ok(touched)
+            }
+        },
+        Change::Drop(id) => drop_it(timetable, id),
         Change::Swap(first, _) => Err(Refused::NoPlace(Arc::clone(first))),
         Change::Undo => Err(Refused::Nothing("undo")),
         Change::Redo => Err(Refused::Nothing("redo")),
@@ -241,57 +342,205 @@ fn moved(
     })
 }
 
-/// Changes the closures of a resource. A member without a table of its own gets one; where
-/// neither kind nor resource is stated, the implied kind is stated first.
+/// Changes the closures of a resource.
 fn closures(
     timetable: &mut Timetable,
     resource: &Arc<str>,
     how: impl FnOnce(&mut Vec<Closure>) -> Result<(), Refused>,
 ) -> Result<Vec<Touched>, Refused> {
-    let (mut closed, kind) = match timetable.resources().get(resource) {
-        Some(known) => (known.hours.closed().to_vec(), known.kind.clone()),
-        // A member of a kind that grows as needed may be closed before it is first used.
+    let known = timetable.resources().get(resource);
+    let mut closed = known.map_or_else(Vec::new, |known| known.hours.closed().to_vec());
+    with_named(timetable, resource, |common| {
+        how(&mut closed)?;
+        common.closed = Some(closed);
+        Ok(())
+    })
+}
+
+/// Changes what a resource states. A member without a table of its own gets one; where
+/// neither kind nor resource is stated, the implied kind is stated first.
+fn with_named(
+    timetable: &mut Timetable,
+    resource: &Arc<str>,
+    how: impl FnOnce(&mut Common) -> Result<(), Refused>,
+) -> Result<Vec<Touched>, Refused> {
+    let kind = match timetable.resources().get(resource) {
+        Some(known) => known.kind.clone(),
+        // A member of a kind that grows as needed may be spoken of before it is first used.
         None => match timetable.open_kind_of(resource) {
-            Some(kind) => (Vec::new(), Some(kind)),
+            Some(kind) => Some(kind),
             None if is_kind(timetable, resource) => {
                 return Err(Refused::IsKind(Arc::clone(resource)));
             }
             None => return Err(Refused::UnknownResource(Arc::clone(resource))),
         },
     };
-    how(&mut closed)?;
-    let mut touched = Vec::new();
     if let Some(at) = timetable
         .named
         .iter()
         .position(|named| named.id == *resource)
     {
         let mut named = Named::clone(&timetable.named[at]);
-        named.common.closed = Some(closed);
+        how(&mut named.common)?;
         timetable.named[at] = Arc::new(named);
-        touched.push(Touched::Named(at));
-    } else {
-        if timetable.listed.is_empty() {
-            timetable.kinds.push(Arc::new(Kind {
-                id: Arc::clone(&timetable.settings.noun.one),
-                count: Count::AsNeeded,
-                common: Common::default(),
-            }));
-            timetable.listed.push(Listed::Kind(0));
-            touched.push(Touched::Kind(0));
-        }
-        let at = timetable.named.len();
-        timetable.named.push(Arc::new(Named {
-            id: Arc::clone(resource),
-            kind,
-            common: Common {
-                closed: Some(closed),
-                ..Common::default()
-            },
-        }));
-        timetable.listed.push(Listed::Named(at));
-        touched.push(Touched::Named(at));
+        timetable.refresh();
+        return Ok(vec![Touched::Named(at)]);
     }
+    let mut common = Common::default();
+    how(&mut common)?;
+    let mut touched = state_the_implied_kind(timetable);
+    let at = timetable.named.len();
+    timetable.named.push(Arc::new(Named {
+        id: Arc::clone(resource),
+        kind,
+        common,
+    }));
+    timetable.listed.push(Listed::Named(at));
+    touched.push(Touched::Named(at));
     timetable.refresh();
     Ok(touched)
+}
+
+/// With neither kind nor resource stated there is an implied kind; before anything else is
+/// stated it must be, or it would be gone.
+fn state_the_implied_kind(timetable: &mut Timetable) -> Vec<Touched> {
+    if !timetable.listed.is_empty() {
+        return Vec::new();
+    }
+    timetable.kinds.push(Arc::new(Kind {
+        id: Arc::clone(&timetable.settings.noun.one),
+        count: Count::AsNeeded,
+        common: Common::default(),
+    }));
+    timetable.listed.push(Listed::Kind(0));
+    vec![Touched::Kind(0)]
+}
+
+/// Whether a name is still free.
+fn free(timetable: &Timetable, id: &Arc<str>) -> Result<(), Refused> {
+    let taken = timetable.position(id).is_some()
+        || timetable.resources().get(id).is_some()
+        || timetable.open_kind_of(id).is_some()
+        || is_kind(timetable, id);
+    if taken {
+        Err(Refused::Taken(Arc::clone(id)))
+    } else {
+        Ok(())
+    }
+}
+
+fn set_request(timetable: &Timetable, request: &mut Request, field: &Field) -> Result<(), Refused> {
+    let known = |names: &[Arc<str>]| {
+        let unknown = names.iter().find(|name| {
+            timetable.resources().get(name).is_none()
+                && !is_kind(timetable, name)
+                && timetable.open_kind_of(name).is_none()
+        });
+        unknown.map_or(Ok(()), |name| Err(Refused::UnknownName(Arc::clone(name))))
+    };
+    match field {
+        Field::Title(title) => request.title = Arc::clone(title),
+        Field::Size(size) => request.size = *size,
+        Field::Needs(needs) => request.needs.clone_from(needs),
+        Field::People(people) => request.people.clone_from(people),
+        Field::Only(only) => {
+            known(only)?;
+            request.only.clone_from(only);
+        }
+        Field::Never(never) => {
+            known(never)?;
+            request.never.clone_from(never);
+        }
+        Field::Weight(weight) => request.weight = *weight,
+        Field::Length(_) if request.fastened => {
+            return Err(Refused::Fastened(Arc::clone(&request.id)));
+        }
+        Field::Length(length) => request.length = *length,
+        Field::Setup(setup) => request.setup = *setup,
+        Field::Turnaround(turnaround) => request.turnaround = *turnaround,
+        Field::Seats(_) | Field::Offers(_) => {
+            return Err(Refused::NoSuchField {
+                what: "request",
+                key: field.key(),
+            });
+        }
+    }
+    Ok(())
+}
+
+fn set_common(common: &mut Common, field: &Field) -> Result<(), Refused> {
+    match field {
+        Field::Title(title) => {
+            common.title = Some(Arc::clone(title)).filter(|title| !title.is_empty())
+        }
+        Field::Seats(seats) => common.seats = *seats,
+        Field::Offers(offers) => common.offers = Some(offers.clone()),
+        Field::Setup(setup) => common.setup = *setup,
+        Field::Turnaround(turnaround) => common.turnaround = *turnaround,
+        other => {
+            return Err(Refused::NoSuchField {
+                what: "resource",
+                key: other.key(),
+            });
+        }
+    }
+    Ok(())
+}
+
+fn drop_it(timetable: &mut Timetable, id: &Arc<str>) -> Result<Vec<Touched>, Refused> {
+    if let Some(at) = timetable.position(id) {
+        unbegun(timetable, at)?;
+        timetable.remove(at);
+        return Ok(vec![Touched::RequestGone(at)]);
+    }
+    let Some(at) = timetable.named.iter().position(|named| named.id == *id) else {
+        return Err(if timetable.resources().get(id).is_some() {
+            Refused::Member(Arc::clone(id))
+        } else {
+            Refused::UnknownResource(Arc::clone(id))
+        });
+    };
+    let names = |request: &&Arc<Request>| {
+        request
+            .pin
+            .iter()
+            .chain(&request.only)
+            .chain(&request.never)
+            .any(|name| name == id)
+    };
+    if let Some(by) = timetable.requests.iter().find(names) {
+        return Err(Refused::SpokenOf {
+            id: Arc::clone(id),
+            by: Arc::clone(&by.id),
+        });
+    }
+    let only_one = timetable.listed.len() == 1;
+    let named = timetable.named.remove(at);
+    let alone = named.kind.as_ref().is_some_and(|kind| {
+        !is_kind(timetable, kind)
+            && timetable.requests.iter().any(|request| {
+                request
+                    .only
+                    .iter()
+                    .chain(&request.never)
+                    .any(|name| name == kind)
+            })
+    });
+    if only_one || alone {
+        // The last of its kind, or of all: what is said of the rest would change its meaning.
+        timetable.named.insert(at, named);
+        return Err(Refused::LastOne(Arc::clone(id)));
+    }
+    timetable
+        .listed
+        .retain(|listed| *listed != Listed::Named(at));
+    for listed in &mut timetable.listed {
+        if let Listed::Named(place) = listed
+            && *place > at
+        {
+            *place -= 1;
+        }
+    }
+    timetable.refresh();
+    Ok(vec![Touched::NamedGone(at)])
 }

@@ -4,10 +4,12 @@
 //! Imports `clock`, `text` and `timetable`.
 
 mod apply;
+mod field;
 mod parse;
 mod print;
 
 pub use apply::{Refused, Touched, apply};
+pub use field::{Field, print_list};
 pub use parse::{Context, Misread, parse};
 pub use print::print;
 
@@ -66,10 +68,61 @@ pub enum Change {
         /// Half-open.
         span: Span,
     },
+    /// Somebody asks for time.
+    Add {
+        /// Its id, not used before.
+        id: Arc<str>,
+        /// Its time.
+        span: Span,
+        /// What else is said of it.
+        fields: Vec<Field>,
+    },
+    /// There is one resource more.
+    AddResource {
+        /// Its id, not used before.
+        id: Arc<str>,
+        /// The kind it belongs to, by name.
+        kind: Option<Arc<str>>,
+        /// What else is said of it.
+        fields: Vec<Field>,
+    },
+    /// Says something else of a request or a resource.
+    Set {
+        /// Which.
+        id: Arc<str>,
+        /// What.
+        field: Field,
+    },
+    /// Take a request or a resource out of the file.
+    Drop(Arc<str>),
     /// Take the last step back.
     Undo,
     /// Do again what was taken back.
     Redo,
+}
+
+impl Change {
+    /// The request it is about, where it is about one.
+    pub fn subject(&self) -> Option<&Arc<str>> {
+        match self {
+            Change::Move { piece, .. }
+            | Change::Pin { piece, .. }
+            | Change::Unpin(piece)
+            | Change::Fasten(piece)
+            | Change::Loosen(piece)
+            | Change::Swap(piece, _)
+            | Change::Withdraw(piece)
+            | Change::Restore(piece)
+            | Change::Add { id: piece, .. }
+            | Change::Set { id: piece, .. }
+            | Change::Drop(piece) => Some(piece),
+            Change::Close { .. }
+            | Change::Reopen { .. }
+            | Change::AddResource { .. }
+            | Change::Undo
+            | Change::Redo => None,
+        }
+    }
 }
 
 impl From<Change> for Edit {

@@ -1,5 +1,6 @@
 //! Reading one line of the edit language.
 
+use super::field::{Field, KEYS, unquote};
 use super::{Change, Edit};
 use crate::clock::{DAY, Instant, Resolved, Span, Zone, parse_civil, parse_date, parse_length};
 use crate::text::{clean, is_id, nearest};
@@ -27,13 +28,13 @@ pub struct Misread {
     pub message: String,
 }
 
-const VERBS: [&str; 12] = [
-    "move", "pin", "unpin", "fasten", "loosen", "swap", "withdraw", "restore", "close", "reopen",
-    "undo", "redo",
+const VERBS: [&str; 15] = [
+    "add", "set", "drop", "move", "pin", "unpin", "fasten", "loosen", "swap", "withdraw",
+    "restore", "close", "reopen", "undo", "redo",
 ];
 
 /// Words of the language that this program does not act on yet.
-const LATER: [&str; 6] = ["split", "join", "add", "set", "drop", "settle"];
+const LATER: [&str; 3] = ["split", "join", "settle"];
 
 /// Reads one line. Relative times (`by +30m`, `now`, a time without a date) are resolved
 /// against the context.
@@ -96,6 +97,13 @@ pub fn parse(line: &str, context: Context<'_>) -> Result<Edit, Misread> {
                 Change::Reopen { resource, span }
             }
         }
+        "add" => add(&mut words, context)?,
+        "set" => {
+            let id = words.known(context)?;
+            let field = words.field()?;
+            Change::Set { id, field }
+        }
+        "drop" => Change::Drop(words.known(context)?),
         "undo" => Change::Undo,
         "redo" => Change::Redo,
         later if LATER.contains(&later) => {
@@ -112,6 +120,39 @@ pub fn parse(line: &str, context: Context<'_>) -> Result<Edit, Misread> {
     let because = words.because()?;
     words.finish()?;
     Ok(Edit { what, because })
+}
+
+/// `add ID from ... to ...` or `add ID from ... for 1h30m`, and `add resource ID ...`.
+fn add(words: &mut Words<'_>, context: Context<'_>) -> Result<Change, Misread> {
+    let id = words.id("a new id")?;
+    if &*id == "resource" && words.words.peek().is_some_and(|word| word.text != "from") {
+        let id = words.id("a new id")?;
+        let mut kind = None;
+        if words.words.peek().is_some_and(|word| word.text == "kind") {
+            words.keyword("kind")?;
+            kind = Some(words.id("the id of a kind")?);
+        }
+        return Ok(Change::AddResource {
+            id,
+            kind,
+            fields: words.fields()?,
+        });
+    }
+    words.keyword("from")?;
+    let column = words.column();
+    let start = words.moment(context, None)?;
+    let end = match words.either("to", "for")? {
+        "to" => words.moment(context, Some(context.timetable.settings.zone.date(start)))?,
+        _ => start + words.shift()?,
+    };
+    if end <= start {
+        return Err(words.misread_at(column, "the end must come after the start".into()));
+    }
+    Ok(Change::Add {
+        id,
+        span: Span { start, end },
+        fields: words.fields()?,
+    })
 }
 
 #[derive(Clone, Copy)]
@@ -144,33 +185,41 @@ impl<'a> Words<'a> {
                 message: "control characters are not allowed in an edit".into(),
             });
         }
-        // The reason is quoted and may hold anything, so it is cut off before words are.
-        let spaced = |(at, word): &(usize, &str)| {
-            let after = line[at + word.len()..].chars().next();
-            line[..*at].ends_with([' ', '\t']) && after.is_some_and(char::is_whitespace)
-        };
-        let reason = line.match_indices("because").find(spaced);
-        let cut = reason.map_or(line.len(), |(at, _)| at - 1);
-        let because = line.get(cut + 1..).filter(|_| cut < line.len());
         let column = |byte: usize| line[..byte].chars().count() + 1;
-        let mut words = Vec::new();
-        let mut from = None;
-        for (at, c) in line[..cut].char_indices().chain([(cut, ' ')]) {
-            match (c.is_whitespace(), from) {
+        let mut words: Vec<Word<'a>> = Vec::new();
+        let (mut from, mut quoted, mut escaped) = (None, false, false);
+        let mut because = None;
+        for (at, c) in line.char_indices().chain([(line.len(), ' ')]) {
+            match (c.is_whitespace() && !quoted, from) {
                 (false, None) => from = Some(at),
                 (true, Some(start)) => {
+                    let text = &line[start..at];
+                    from = None;
+                    if text == "because" && !words.is_empty() {
+                        because = Some((column(start), &line[start..]));
+                        break;
+                    }
                     words.push(Word {
-                        text: &line[start..at],
+                        text,
                         column: column(start),
                     });
-                    from = None;
                 }
                 _ => {}
             }
+            if c == '"' && !escaped {
+                quoted = !quoted;
+            }
+            escaped = quoted && c == '\\' && !escaped;
+        }
+        if let Some(start) = from.filter(|_| quoted) {
+            return Err(Misread {
+                column: column(start),
+                message: "a quotation mark is never closed".into(),
+            });
         }
         Ok(Words {
             words: words.into_iter().peekable(),
-            because: because.map(|text| (column(cut + 1), text)),
+            because,
             end,
         })
     }
@@ -251,6 +300,71 @@ impl<'a> Words<'a> {
         }
     }
 
+    /// The id of a request or resource that the timetable knows.
+    fn known(&mut self, context: Context<'_>) -> Result<Arc<str>, Misread> {
+        let word = self.next("the id of a request or a resource")?;
+        let timetable = context.timetable;
+        let resource = || {
+            timetable
+                .resources()
+                .get(word.text)
+                .map(|resource| Arc::clone(&resource.id))
+        };
+        let request = timetable
+            .request(word.text)
+            .map(|request| Arc::clone(&request.id));
+        let open = || timetable.open_kind_of(word.text).map(|_| word.text.into());
+        request.or_else(resource).or_else(open).ok_or_else(|| {
+            let requests = timetable.requests.iter().map(|request| request.id.as_ref());
+            let resources = timetable
+                .resources()
+                .all
+                .iter()
+                .map(|resource| resource.id.as_ref());
+            let hint = nearest(word.text, requests.chain(resources)).map_or_else(
+                || "the file lists them".to_string(),
+                |near| format!("did you mean \"{near}\"?"),
+            );
+            word.misread(format!(
+                "nothing is called \"{}\"; {hint}",
+                clean(word.text)
+            ))
+        })
+    }
+
+    /// A key and its value.
+    fn field(&mut self) -> Result<Field, Misread> {
+        let key = self.next(&format!("one of: {}", KEYS.join(", ")))?;
+        if !KEYS.contains(&key.text) {
+            let hint = nearest(key.text, KEYS.into_iter()).map_or_else(
+                || format!("known are: {}", KEYS.join(", ")),
+                |near| format!("did you mean \"{near}\"?"),
+            );
+            return Err(key.misread(format!("\"{}\" cannot be set; {hint}", clean(key.text))));
+        }
+        let value = self.next("its value")?;
+        Field::read(key.text, value.text).map_err(|wanted| {
+            value.misread(format!(
+                "\"{}\" does not fit {}; here belongs {wanted}",
+                clean(value.text),
+                key.text
+            ))
+        })
+    }
+
+    /// All keys and values that follow, each key once.
+    fn fields(&mut self) -> Result<Vec<Field>, Misread> {
+        let mut fields: Vec<Field> = Vec::new();
+        while let Some(word) = self.words.peek().copied() {
+            let field = self.field()?;
+            if fields.iter().any(|other| other.key() == field.key()) {
+                return Err(word.misread(format!("\"{}\" is said twice", field.key())));
+            }
+            fields.push(field);
+        }
+        Ok(fields)
+    }
+
     /// `2027-01-11 10:30`, `10:30` on `date`, or `now`.
     fn moment(
         &mut self,
@@ -300,8 +414,7 @@ impl<'a> Words<'a> {
         };
         let quoted = text.strip_prefix("because").map(str::trim);
         quoted
-            .and_then(|text| text.strip_prefix('"')?.strip_suffix('"'))
-            .and_then(unescape)
+            .and_then(unquote)
             .map(|reason| Some(reason.into()))
             .ok_or_else(|| Misread {
                 column,
@@ -338,18 +451,4 @@ fn settle(
             after.format("%H:%M")
         )),
     }
-}
-
-/// Undoes the escapes of [`super::print`]; `None` when one is incomplete or a quote is bare.
-fn unescape(text: &str) -> Option<String> {
-    let mut plain = String::with_capacity(text.len());
-    let mut chars = text.chars();
-    while let Some(c) = chars.next() {
-        match c {
-            '\\' => plain.push(chars.next()?),
-            '"' => return None,
-            c => plain.push(c),
-        }
-    }
-    Some(plain)
 }

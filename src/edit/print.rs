@@ -1,5 +1,6 @@
 //! Writing an edit as one line.
 
+use super::field::{Field, quote};
 use super::{Change, Edit};
 use crate::clock::Zone;
 
@@ -29,12 +30,33 @@ pub fn print(edit: &Edit, zone: Zone) -> String {
                 zone.print(span.end)
             )
         }
+        Change::Add { id, span, fields } => {
+            let (start, end) = (zone.print(span.start), zone.print(span.end));
+            format!("add {id} from {start} to {end}{}", fields_text(fields))
+        }
+        Change::AddResource { id, kind, fields } => {
+            let kind = kind
+                .as_ref()
+                .map(|kind| format!(" kind {kind}"))
+                .unwrap_or_default();
+            format!("add resource {id}{kind}{}", fields_text(fields))
+        }
+        Change::Set { id, field } => {
+            format!("set {id}{}", fields_text(std::slice::from_ref(field)))
+        }
+        Change::Drop(id) => format!("drop {id}"),
         Change::Undo => "undo".into(),
         Change::Redo => "redo".into(),
     };
     if let Some(because) = &edit.because {
-        let escaped = because.replace('\\', "\\\\").replace('"', "\\\"");
-        line.push_str(&format!(" because \"{escaped}\""));
+        line.push_str(&format!(" because {}", quote(because)));
     }
     line
+}
+
+fn fields_text(fields: &[Field]) -> String {
+    fields
+        .iter()
+        .map(|field| format!(" {} {}", field.key(), field.print()))
+        .collect()
 }

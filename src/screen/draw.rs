@@ -28,6 +28,9 @@ pub fn draw(model: &Model, frame: &mut Frame<'_>) {
             cursor = Position::new(area.x, area.y);
         }
         Mode::Find(find) => cursor = panels::find::draw(model, find, buffer, whole),
+        Mode::Form(form) => cursor = panels::form::draw(model, form, buffer, whole),
+        Mode::Findings(at) => cursor = panels::findings::draw(model, *at, buffer, whole),
+        Mode::Days(at) => cursor = panels::days::draw(model, *at, buffer, whole),
         _ => {}
     }
     if let Some(typing) = panels::footer::draw(model, buffer, areas.footer) {
@@ -65,6 +68,16 @@ pub(super) fn put(
         style,
     );
     x + width(&text) as u16
+}
+
+/// Empties an area of whatever was drawn there.
+pub(super) fn blank(buffer: &mut Buffer, area: Rect) {
+    let area = area.intersection(*buffer.area());
+    for y in area.top()..area.bottom() {
+        for x in area.left()..area.right() {
+            buffer[(x, y)].reset();
+        }
+    }
 }
 
 /// Every character outside ASCII as a question mark, one a cell.

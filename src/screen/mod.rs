@@ -4,6 +4,7 @@
 //! Imports everything below.
 
 mod draw;
+mod form;
 mod layout;
 mod model;
 mod panels;
@@ -20,9 +21,11 @@ pub use update::{Effect, Msg, update};
 
 use crate::actions::Keys;
 use crate::cli::{Look, Outcome};
-use crate::desk::Desk;
+use crate::desk::{Desk, whoami};
+use crate::store::RealFiles;
 use crate::text::clean;
 use std::path::Path;
+use std::sync::Arc;
 
 /// Opens a timetable on the screen and stays until it is left.
 pub fn open(file: &Path, look: &Look) -> Outcome {
@@ -30,8 +33,14 @@ pub fn open(file: &Path, look: &Look) -> Outcome {
         Ok(setup) => setup,
         Err(message) => return Outcome::bad(message),
     };
-    match Desk::open(file) {
-        Ok(desk) => run::run(Model::new(desk, setup), look.break_after_first_frame),
+    match Desk::open_to_edit(file, &whoami(), Arc::new(RealFiles)) {
+        Ok((desk, notes)) => {
+            let mut model = Model::new(desk, setup);
+            if let Some(note) = notes.first() {
+                model.say(note.clone(), true);
+            }
+            run::run(model, look.break_after_first_frame)
+        }
         Err(trouble) => Outcome::bad(trouble),
     }
 }

@@ -106,6 +106,16 @@ pub enum Mode {
     Help(usize),
     /// The question before leaving.
     Leave,
+    /// The question about edits that an earlier session did not save.
+    Leftover,
+    /// The question about a file that someone else has changed.
+    Changed,
+    /// What is doubtful or cannot be, scrolled by so many lines.
+    Findings(usize),
+    /// The days, with the chosen one.
+    Days(usize),
+    /// A form of fields for one request or resource.
+    Form(Box<super::form::Form>),
 }
 
 /// The state.
@@ -178,6 +188,9 @@ impl Model {
                 format!("{count} doubtful times in the file; fewest count lists them"),
                 true,
             );
+        }
+        if model.desk.leftover().is_some() {
+            model.mode = Mode::Leftover;
         }
         model.refresh();
         model

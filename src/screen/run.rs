@@ -1,11 +1,11 @@
 //! The only module that touches the terminal.
 
 use super::model::Model;
-use super::update::{Effect, Msg, update};
+use super::update::{Effect, Msg, Resolve, update};
 use crate::cli::Outcome;
 use crate::clock::Instant;
-use crate::desk::{Event, Solver};
-use crate::store;
+use crate::desk::{Access, Disk, Event, Solver};
+use crate::store::Scribe;
 use crossterm::event::{DisableBracketedPaste, EnableBracketedPaste, KeyEventKind};
 use crossterm::terminal::{
     BeginSynchronizedUpdate, EndSynchronizedUpdate, EnterAlternateScreen, LeaveAlternateScreen,
@@ -40,6 +40,7 @@ const PLAN_WITHIN: Duration = Duration::from_secs(3);
 
 /// Runs the screen until it is left.
 pub(super) fn run(mut model: Model, break_after_first_frame: bool) -> Outcome {
+    model.now = Instant(chrono::Utc::now().timestamp());
     // NO_COLOR makes the library reset what it should reverse; our own palettes take care of
     // colour, so its output is forced on.
     crossterm::style::force_color_output(true);
@@ -56,12 +57,17 @@ pub(super) fn run(mut model: Model, break_after_first_frame: bool) -> Outcome {
         Ok(screen) => screen,
         Err(error) => return Outcome::bad(format!("the screen cannot be opened: {error}")),
     };
-    listen_for_input(wake);
+    watch_the_file(&model.desk.path, &wake);
+    listen_for_input(wake.clone());
     if let Ok(size) = screen.size() {
         update(&mut model, Msg::Resize(size.width, size.height));
     }
     solver.submit(model.desk.job());
+    let scribe = (model.desk.leftover().is_none()).then(|| start_scribe(&mut model, &wake));
     let mut loop_ = Loop {
+        scribe,
+        wake,
+        given_up: false,
         model,
         solver,
         screen,
@@ -70,7 +76,7 @@ pub(super) fn run(mut model: Model, break_after_first_frame: bool) -> Outcome {
         waiting: Some(Watch::now() + FIRST_ANSWER_WITHIN),
     };
     let code = loop_.turn(break_after_first_frame);
-    let err = loop_.rescue(code);
+    loop_.close(code);
     if code == GONE {
         // Nothing may be written to a terminal that is no more, not even by a destructor.
         std::mem::forget(loop_.screen);
@@ -79,7 +85,6 @@ pub(super) fn run(mut model: Model, break_after_first_frame: bool) -> Outcome {
     }
     Outcome {
         code,
-        err,
         ..Outcome::default()
     }
 }
@@ -87,7 +92,19 @@ pub(super) fn run(mut model: Model, break_after_first_frame: bool) -> Outcome {
 /// The exit code when the terminal is gone.
 const GONE: u8 = 128 + SIGHUP as u8;
 
+fn start_scribe(model: &mut Model, wake: &Sender<Wake>) -> Scribe {
+    let told = wake.clone();
+    Scribe::start(model.desk.journal_writer(), 0, move |written| {
+        let _ = told.send(Wake::Msg(Msg::Written(written)));
+    })
+}
+
 struct Loop {
+    /// Writes the journal; absent while edits of an earlier session wait for a decision.
+    scribe: Option<Scribe>,
+    wake: Sender<Wake>,
+    /// Whether unsaved edits were given up on purpose.
+    given_up: bool,
     model: Model,
     solver: Solver,
     screen: Screen,
@@ -129,10 +146,25 @@ impl Loop {
             self.waiting = None;
         }
         while let Some(next) = wake {
-            self.model.now = Instant(chrono::Utc::now().timestamp());
+            if !matches!(next, Wake::Msg(Msg::Tick | Msg::Stirred)) {
+                self.model.now = Instant(chrono::Utc::now().timestamp());
+            }
             let effects = match next {
                 Wake::Signal(signal) => return Some(128 + signal as u8),
                 Wake::Gone => return Some(GONE),
+                Wake::Msg(Msg::Stirred) => {
+                    if !self.model.desk.look_at_disk() {
+                        wake = self.woken.try_recv().ok();
+                        continue;
+                    }
+                    self.dirty = true;
+                    self.follow()
+                }
+                Wake::Msg(Msg::Tick) => {
+                    // Only a now line that moves is worth a frame.
+                    self.dirty |= self.now_moves();
+                    Vec::new()
+                }
                 Wake::Msg(msg) => {
                     if matches!(msg, Msg::Solver(Event::Settled(_))) {
                         self.waiting = None;
@@ -141,6 +173,7 @@ impl Loop {
                     update(&mut self.model, msg)
                 }
             };
+            self.write_journal();
             for effect in effects {
                 if let Some(code) = self.perform(effect) {
                     return Some(code);
@@ -163,12 +196,64 @@ impl Loop {
                 self.waiting = Some(Watch::now() + ANSWER_WITHIN);
             }
             Effect::Save { other, leave } => {
-                let result = self.model.desk.save(other.as_deref(), self.model.now);
-                let name = self.model.desk.path.display().to_string();
-                let result = result
-                    .map(|()| format!("saved {name}"))
-                    .map_err(|trouble| trouble.to_string());
-                let effects = update(&mut self.model, Msg::Saved { result, leave });
+                self.model.desk.look_at_disk();
+                let own = other
+                    .as_ref()
+                    .is_none_or(|other| *other == self.model.desk.path);
+                if own && self.model.desk.disk() == Disk::Changed {
+                    self.model.mode = super::model::Mode::Changed;
+                    return None;
+                }
+                let effects = self.save(other.as_deref(), leave);
+                return effects.into_iter().find_map(|effect| self.perform(effect));
+            }
+            Effect::Leftover { take_in } => {
+                let result = if take_in {
+                    let (taken, rest) = self.model.desk.take_in_leftover();
+                    let taken = crate::words::count_words(taken, "edit");
+                    if rest.is_empty() {
+                        Ok(format!("{taken} taken in; u undoes them one by one"))
+                    } else {
+                        Err(format!(
+                            "{taken} taken in; the rest cannot be read and is kept beside the file"
+                        ))
+                    }
+                } else {
+                    let kept = self.model.desk.set_leftover_aside();
+                    kept.map(|name| format!("they are kept in {name}"))
+                        .map_err(|error| error.to_string())
+                };
+                if self.model.desk.leftover().is_none() {
+                    self.scribe = Some(start_scribe(&mut self.model, &self.wake));
+                    self.write_journal();
+                }
+                let effects = update(&mut self.model, Msg::Done(result));
+                return effects.into_iter().find_map(|effect| self.perform(effect));
+            }
+            Effect::Resolve(how) => {
+                let effects = match how {
+                    Resolve::Mine => match self.model.desk.keep_mine() {
+                        Ok(said) => {
+                            let effects = self.save(None, false);
+                            self.model.say(said, false);
+                            effects
+                        }
+                        Err(trouble) => {
+                            self.model.say(trouble.to_string(), true);
+                            Vec::new()
+                        }
+                    },
+                    Resolve::Theirs | Resolve::Both => {
+                        let result = self.model.desk.take_theirs(how == Resolve::Both);
+                        // The journal begins anew, from their version.
+                        self.scribe = Some(start_scribe(&mut self.model, &self.wake));
+                        self.write_journal();
+                        update(
+                            &mut self.model,
+                            Msg::Done(result.map_err(|trouble| trouble.to_string())),
+                        )
+                    }
+                };
                 return effects.into_iter().find_map(|effect| self.perform(effect));
             }
             Effect::WritePlan => {
@@ -180,6 +265,7 @@ impl Loop {
                 }
             }
             Effect::Quit => {
+                self.given_up = true;
                 self.finish_plan();
                 return Some(0);
             }
@@ -240,19 +326,72 @@ impl Loop {
         self.screen.backend_mut().flush()
     }
 
-    /// Edits that would be lost because we were told to go are kept beside the timetable as a
-    /// script; says where.
-    fn rescue(&self, code: u8) -> String {
-        if code == 0 || self.model.desk.unsaved() == 0 {
-            return String::new();
+    /// Hands what was done to the journal's thread.
+    fn write_journal(&mut self) {
+        if let Some(scribe) = &self.scribe {
+            for record in self.model.desk.take_records() {
+                scribe.add(record);
+            }
         }
-        let path = self.model.desk.path.with_extension("rescued.txt");
-        let lines = self.model.desk.unsaved_lines().join("\n") + "\n";
-        let before = store::read_bounded(&path, 1 << 26).unwrap_or_default();
-        let bytes = [before, lines.into_bytes()].concat();
-        match store::write_atomically(&path, &bytes) {
-            Ok(()) => format!("edits that were not saved are in {}\n", path.display()),
-            Err(error) => format!("edits could not be kept: {}: {error}\n", path.display()),
+    }
+
+    fn save(&mut self, other: Option<&std::path::Path>, leave: bool) -> Vec<Effect> {
+        let scribe = &self.scribe;
+        let before = self.model.desk.path.clone();
+        let result = self.model.desk.save(other, self.model.now, &mut |record| {
+            if let Some(scribe) = scribe {
+                scribe.add(record);
+                // A journal that cannot be written must not keep anyone from saving.
+                let _ = scribe.wait();
+            }
+        });
+        if self.model.desk.path != before {
+            self.scribe = Some(start_scribe(&mut self.model, &self.wake));
+            watch_the_file(&self.model.desk.path, &self.wake);
+        }
+        let name = crate::text::clean(&self.model.desk.path.display().to_string()).into_owned();
+        let result = result
+            .map(|()| format!("saved {name}"))
+            .map_err(|trouble| trouble.to_string());
+        update(&mut self.model, Msg::Saved { result, leave })
+    }
+
+    /// The file is not what it was: a desk that only reads follows it, another says so.
+    fn follow(&mut self) -> Vec<Effect> {
+        let reads_only = matches!(self.model.desk.access(), Access::Theirs(_));
+        if reads_only && self.model.desk.disk() == Disk::Changed {
+            // Half a moment later it may be whole.
+            let said = match self.model.desk.follow_disk() {
+                Ok(()) => Ok("the file was saved by the other desk".to_string()),
+                Err(_) => Err("the file cannot be read at the moment".to_string()),
+            };
+            return update(&mut self.model, Msg::Done(said));
+        }
+        update(&mut self.model, Msg::Stirred)
+    }
+
+    /// Whether the present moment has moved to another column in sight.
+    fn now_moves(&mut self) -> bool {
+        let now = Instant(chrono::Utc::now().timestamp());
+        let columns = i64::from(self.model.areas().time.width);
+        let column =
+            |at| Some(self.model.view.column(at)).filter(|column| (0..columns).contains(column));
+        let moves = column(now) != column(self.model.now);
+        if moves {
+            self.model.now = now;
+        }
+        moves
+    }
+
+    /// Before leaving: what was done is on the disk, and a journal that has nothing the file
+    /// lacks goes away.
+    fn close(&mut self, code: u8) {
+        self.write_journal();
+        if let Some(scribe) = &self.scribe {
+            let _ = scribe.wait();
+            if self.model.desk.unsaved() == 0 || (code == 0 && self.given_up) {
+                self.model.desk.close_journal();
+            }
         }
     }
 }
@@ -338,4 +477,35 @@ fn listen_for_signals(wake: &Sender<Wake>) -> std::io::Result<()> {
         }
     });
     Ok(())
+}
+
+/// How often the file is looked at, and how often the time.
+const LOOK_EVERY: Duration = Duration::from_secs(1);
+const TICK_EVERY: u32 = 20;
+
+/// Tells when the file's size or time of change differs from before, and now and then that
+/// time passes.
+fn watch_the_file(path: &std::path::Path, wake: &Sender<Wake>) {
+    let stamp = |path: &std::path::Path| {
+        let there = std::fs::metadata(path).ok()?;
+        Some((there.len(), there.modified().ok()))
+    };
+    let (path, wake) = (path.to_path_buf(), wake.clone());
+    std::thread::spawn(move || {
+        let mut before = stamp(&path);
+        for round in 1u32.. {
+            std::thread::sleep(LOOK_EVERY);
+            let now = stamp(&path);
+            let stirred = now != before;
+            before = now;
+            let told = match (stirred, round.is_multiple_of(TICK_EVERY)) {
+                (true, _) => wake.send(Wake::Msg(Msg::Stirred)),
+                (false, true) => wake.send(Wake::Msg(Msg::Tick)),
+                (false, false) => continue,
+            };
+            if told.is_err() {
+                return;
+            }
+        }
+    });
 }

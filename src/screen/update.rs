@@ -5,8 +5,9 @@ use super::layout::RowKind;
 use super::model::{Carry, Find, Mode, Model};
 use crate::actions::Action;
 use crate::clock::Instant;
-use crate::desk::{Event, Job};
+use crate::desk::{Disk, Event, Job};
 use crate::edit::{Change, Edit};
+use crate::store::Written;
 use crate::text::clean;
 use crate::words::Progress;
 use crossterm::event::{KeyCode, KeyEvent, KeyModifiers};
@@ -27,6 +28,14 @@ pub enum Msg {
     Resize(u16, u16),
     /// The solver says something.
     Solver(Event),
+    /// The journal's thread says something.
+    Written(Written),
+    /// The file on the disk is not what it was.
+    Stirred,
+    /// A while has passed.
+    Tick,
+    /// Something outside has been done; the desk may have another state.
+    Done(Result<String, String>),
     /// A save has ended; on success, perhaps the program may leave.
     Saved {
         /// What went wrong, if something did.
@@ -50,12 +59,30 @@ pub enum Effect {
     },
     /// The plan that a save waited for is here.
     WritePlan,
+    /// Take in the edits of an earlier session, or leave them in a file of their own.
+    Leftover {
+        /// Whether to take them in.
+        take_in: bool,
+    },
+    /// Someone else changed the file: what becomes of theirs and ours.
+    Resolve(Resolve),
     /// Leave.
     Quit,
     /// Back to the shell until it brings us to the front again.
     Suspend,
     /// Draw everything anew.
     Redraw,
+}
+
+/// What becomes of two versions.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Resolve {
+    /// Ours replaces theirs, which is kept beside it.
+    Mine,
+    /// Theirs is taken over, ours is kept as a script.
+    Theirs,
+    /// Ours is made once more on theirs.
+    Both,
 }
 
 /// One message, one new state.
@@ -71,6 +98,32 @@ pub fn update(model: &mut Model, msg: Msg) -> Vec<Effect> {
             Vec::new()
         }
         Msg::Solver(event) => heard(model, event),
+        Msg::Written(written) => {
+            model.desk.written(&written);
+            Vec::new()
+        }
+        Msg::Stirred => {
+            match (model.desk.access(), model.desk.disk()) {
+                (_, Disk::Same) => {}
+                (_, Disk::Changed) => model.say(
+                    "someone else has changed the file; saving will ask what to do",
+                    true,
+                ),
+                (_, Disk::Gone) => model.say("the file has gone; saving writes it anew", true),
+            }
+            Vec::new()
+        }
+        Msg::Tick => Vec::new(),
+        Msg::Done(result) => {
+            match result {
+                Ok(said) => model.say(said, false),
+                Err(said) => model.say(said, true),
+            }
+            model.mode = Mode::Board;
+            model.progress = Progress::Searching;
+            model.refresh();
+            vec![Effect::Submit(Box::new(model.desk.job()))]
+        }
         Msg::Saved {
             result: Ok(_),
             leave: true,
@@ -146,9 +199,31 @@ fn keyed(model: &mut Model, key: KeyEvent) -> Vec<Effect> {
             vec![Effect::Suspend]
         }
         (_, Some(Action::Redraw)) => vec![Effect::Redraw],
+        (Mode::Form(_), _) => super::form::keyed(model, key),
         (Mode::Command(_), _) => commanding(model, key),
         (Mode::Find(_), _) => finding(model, key),
         (Mode::Leave, _) => leaving(model, key),
+        (Mode::Leftover, _) => match key.code {
+            KeyCode::Enter => vec![Effect::Leftover { take_in: true }],
+            KeyCode::Char('k') => vec![Effect::Leftover { take_in: false }],
+            _ => Vec::new(),
+        },
+        (Mode::Changed, _) => {
+            model.mode = Mode::Board;
+            match key.code {
+                KeyCode::Char('m') => vec![Effect::Resolve(Resolve::Mine)],
+                KeyCode::Char('t') => vec![Effect::Resolve(Resolve::Theirs)],
+                KeyCode::Char('b') => vec![Effect::Resolve(Resolve::Both)],
+                _ => {
+                    model.say("nothing was saved", false);
+                    Vec::new()
+                }
+            }
+        }
+        (Mode::Findings(_) | Mode::Days(_), action) => {
+            super::panels::listed(model, key, action);
+            Vec::new()
+        }
         (Mode::Help(_), action) => {
             helped(model, action);
             Vec::new()
@@ -184,6 +259,10 @@ fn pasted(model: &mut Model, text: &str) {
             insert(&mut find.input);
             look_up(model);
         }
+        Mode::Form(form) => {
+            let chosen = form.chosen;
+            insert(&mut form.fields[chosen].input);
+        }
         _ => model.say(
             "pasted text goes into the command line only; : opens it",
             false,
@@ -191,7 +270,7 @@ fn pasted(model: &mut Model, text: &str) {
     }
 }
 
-fn typed(input: &mut Input, key: KeyEvent) {
+pub(super) fn typed(input: &mut Input, key: KeyEvent) {
     let control = key.modifiers.contains(KeyModifiers::CONTROL);
     let request = match key.code {
         KeyCode::Char('w') if control => InputRequest::DeletePrevWord,
@@ -238,15 +317,21 @@ fn leaving(model: &mut Model, key: KeyEvent) -> Vec<Effect> {
     model.mode = Mode::Board;
     match key.code {
         KeyCode::Char('y') => vec![Effect::Quit],
-        KeyCode::Char('s') => vec![Effect::Save {
-            other: None,
-            leave: true,
-        }],
+        KeyCode::Char('s') => save(model, true),
         _ => {
             model.say("still here", false);
             Vec::new()
         }
     }
+}
+
+/// Saves, unless someone else has changed the file: then it asks.
+fn save(model: &mut Model, leave: bool) -> Vec<Effect> {
+    if model.desk.disk() == Disk::Same {
+        return vec![Effect::Save { other: None, leave }];
+    }
+    model.mode = Mode::Changed;
+    Vec::new()
 }
 
 fn leave(model: &mut Model) -> Vec<Effect> {
@@ -278,10 +363,7 @@ fn commanding(model: &mut Model, key: KeyEvent) -> Vec<Effect> {
             model.mode = Mode::Help(0);
             Vec::new()
         }
-        ("save", "") => vec![Effect::Save {
-            other: None,
-            leave: false,
-        }],
+        ("save", "") => save(model, false),
         ("save", other) => vec![Effect::Save {
             other: Some(PathBuf::from(other.trim())),
             leave: false,
@@ -385,7 +467,7 @@ fn look_up(model: &mut Model) {
 }
 
 /// Makes edits as one step and has the result solved.
-fn make(model: &mut Model, edits: Vec<Edit>) -> Vec<Effect> {
+pub(super) fn make(model: &mut Model, edits: Vec<Edit>) -> Vec<Effect> {
     match model.desk.make(edits) {
         Ok(()) => {
             model.progress = Progress::Searching;
@@ -431,12 +513,11 @@ fn acting(model: &mut Model, action: Action) -> Vec<Effect> {
         Action::Command => model.mode = Mode::Command(Input::default()),
         Action::Help => model.mode = Mode::Help(0),
         Action::Leave => return leave(model),
-        Action::Save => {
-            return vec![Effect::Save {
-                other: None,
-                leave: false,
-            }];
-        }
+        Action::Save => return save(model, false),
+        Action::Add | Action::Set => super::form::open(model, action == Action::Add),
+        Action::Drop => return drop_request(model),
+        Action::Findings => model.mode = Mode::Findings(0),
+        Action::Days => super::panels::days::open(model),
         Action::Undo => return make(model, vec![Change::Undo.into()]),
         Action::Redo => return make(model, vec![Change::Redo.into()]),
         Action::Carry => lift(model),
@@ -613,6 +694,15 @@ fn toggle(model: &mut Model, action: Action) -> Vec<Effect> {
         _ => Change::Withdraw(id),
     };
     make(model, vec![change.into()])
+}
+
+/// Takes the request in hand out of the file.
+fn drop_request(model: &mut Model) -> Vec<Effect> {
+    let Some(here) = in_hand(model) else {
+        return Vec::new();
+    };
+    let id = Arc::clone(&model.rows.pieces[here].request.id);
+    make(model, vec![Change::Drop(id).into()])
 }
 
 /// Opens the command line with a closure of the row's resource, ready to be put right.

@@ -1,6 +1,16 @@
-//! Writing files so that nobody ever finds half of one.
+//! Files so that nobody ever finds half of one and no edit is lost: atomic writing, the
+//! journal, the lock, and the layer that can fail on purpose in tests.
 //!
-//! Imports nothing from the crate.
+//! Imports `text`.
+
+mod files;
+pub mod journal;
+mod lock;
+mod scribe;
+
+pub use files::{Files, Out, RealFiles};
+pub use lock::{Lock, Locking, lock, lock_path};
+pub use scribe::{Scribe, Written};
 
 use std::fs::{self, File};
 use std::io::{self, Write};
@@ -35,11 +45,7 @@ fn write_beside(path: &Path, bytes: &[u8]) -> io::Result<()> {
     }
     file.as_file().sync_all()?;
     file.persist(&path).map_err(|error| error.error)?;
-    // The rename itself must reach the disk too; where folders cannot be synced it is as safe
-    // as it can be.
-    if let Ok(folder) = File::open(&folder) {
-        let _ = folder.sync_all();
-    }
+    files::sync_folder(&path);
     Ok(())
 }
 

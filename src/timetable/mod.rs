@@ -110,6 +110,27 @@ impl Timetable {
         }
     }
 
+    /// Adds a request at the end.
+    pub fn push(&mut self, request: Request) {
+        Arc::make_mut(&mut self.ids)
+            .entry(Arc::clone(&request.id))
+            .or_insert(self.requests.len());
+        self.requests.push(Arc::new(request));
+        self.refresh();
+    }
+
+    /// Takes a request out; those after it move up.
+    pub fn remove(&mut self, at: usize) {
+        self.requests.remove(at);
+        let ids = self
+            .requests
+            .iter()
+            .enumerate()
+            .map(|(at, request)| (Arc::clone(&request.id), at));
+        self.ids = Arc::new(ids.collect());
+        self.refresh();
+    }
+
     /// Every piece there is to place or has been withdrawn, in file order.
     pub fn pieces(&self) -> Vec<Piece> {
         self.requests.iter().map(Piece::of_request).collect()

@@ -7,7 +7,7 @@ mod reason;
 mod state;
 
 pub use reason::{finding, unfit, unplaced};
-pub use state::{Progress, count_of, doubled, peaks, span, state, state_name};
+pub use state::{Progress, count_of, count_words, doubled, peaks, span, state, state_name};
 
 /// A cautious line for everything that speaks of people and rooms: the figures are the
 /// file's own.

@@ -21,6 +21,11 @@ pub fn count_of(count: usize, noun: &Noun) -> String {
     format!("{count} {}", clean(word))
 }
 
+/// `1 edit`, `2 edits`: a word of our own with a plain plural.
+pub fn count_words(count: usize, word: &str) -> String {
+    format!("{count} {word}{}", if count == 1 { "" } else { "s" })
+}
+
 /// What is known of an answer, in one line.
 pub fn state(receipt: &Receipt, resources: usize, noun: &Noun, progress: Progress) -> String {
     let in_use = count_of(receipt.in_use(), noun);

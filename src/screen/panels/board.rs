@@ -34,6 +34,7 @@ pub(in crate::screen) fn draw(model: &Model, buffer: &mut Buffer, areas: &Areas)
             here,
         );
         background(model, buffer, line, row);
+        now_line(model, buffer, line);
         // What is in hand comes last, so that nothing hides it.
         let (mut mine, rest): (Vec<usize>, Vec<usize>) = row
             .pieces
@@ -148,8 +149,17 @@ fn background(model: &Model, buffer: &mut Buffer, line: Rect, row: &Row) {
     }
 }
 
+/// A dotted line at the present moment, when that is in sight.
+fn now_line(model: &Model, buffer: &mut Buffer, line: Rect) {
+    let column = model.view.column(model.now);
+    if (0..i64::from(line.width)).contains(&column) {
+        put(buffer, line, column as u16, 0, "'", model.setup.theme.floor);
+    }
+}
+
 /// Which pieces wear which mark.
 struct Marks<'a> {
+    unsafe_yet: crate::lookup::FastSet<&'a str>,
     counted: HashSet<&'a str>,
     clashing: HashSet<&'a str>,
 }
@@ -158,12 +168,14 @@ impl<'a> Marks<'a> {
     fn of(model: &'a Model) -> Marks<'a> {
         let Some(settled) = model.shown().0 else {
             return Marks {
+                unsafe_yet: model.desk.not_yet_safe(),
                 counted: HashSet::new(),
                 clashing: HashSet::new(),
             };
         };
         let clashes = &settled.survey().clashes;
         Marks {
+            unsafe_yet: model.desk.not_yet_safe(),
             counted: settled
                 .answer()
                 .floor_pieces()
@@ -178,7 +190,7 @@ impl<'a> Marks<'a> {
     }
 }
 
-/// The marks of a piece: `!` pinned, `=` fastened, `*` moved since opened, `&` clash.
+/// The marks of a piece: `?` not yet safe on the disk, `!` pinned, `=` fastened, `*` moved since opened, `&` clash.
 fn marks(model: &Model, piece: &Piece, marks: &Marks<'_>) -> String {
     let opened = model.desk.opened().request(&piece.request.id);
     let moved = opened.is_some_and(|before| before.start != piece.span.start);
@@ -186,6 +198,7 @@ fn marks(model: &Model, piece: &Piece, marks: &Marks<'_>) -> String {
         ("!", piece.pin.is_some()),
         ("=", piece.fastened),
         ("*", moved),
+        ("?", marks.unsafe_yet.contains(&*piece.request.id)),
         ("&", marks.clashing.contains(&*piece.id)),
     ]
     .into_iter()

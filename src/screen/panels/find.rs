@@ -1,6 +1,6 @@
 //! Finding a piece: what is typed, and what matches.
 
-use crate::screen::draw::put;
+use crate::screen::draw::{blank, put};
 use crate::screen::model::{Find, Model};
 use crate::text::{clean, fit};
 use ratatui::buffer::Buffer;
@@ -23,11 +23,7 @@ pub(in crate::screen) fn draw(
         whole.width,
         height,
     );
-    for y in area.top()..area.bottom() {
-        for x in area.left()..area.right() {
-            buffer[(x, y)].reset();
-        }
-    }
+    blank(buffer, area);
     let heading = format!(
         " Find a piece by id, title or person: {} found (Enter goes there, Esc leaves)",
         find.matches.len()

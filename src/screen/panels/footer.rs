@@ -1,7 +1,7 @@
 //! The last line: what is typed, what was said, or the keys that matter now.
 
 use crate::actions::{ACTIONS, Action};
-use crate::screen::draw::put;
+use crate::screen::draw::{blank, put};
 use crate::screen::model::{Mode, Model};
 use crate::text::{clean, width};
 use ratatui::buffer::Buffer;
@@ -10,10 +10,7 @@ use ratatui::layout::{Position, Rect};
 /// Draws it; returns where the cursor belongs when something is typed or asked here.
 pub(in crate::screen) fn draw(model: &Model, buffer: &mut Buffer, area: Rect) -> Option<Position> {
     let theme = &model.setup.theme;
-    buffer.set_style(area, ratatui::style::Style::reset());
-    for x in area.left()..area.right() {
-        buffer[(x, area.y)].reset();
-    }
+    blank(buffer, area);
     if let Mode::Leave = model.mode {
         let text = format!(
             "{} not saved: s saves and leaves, y leaves without, any other key stays",
@@ -25,6 +22,10 @@ pub(in crate::screen) fn draw(model: &Model, buffer: &mut Buffer, area: Rect) ->
         let x = put(buffer, area, 0, 0, &text, theme.warning);
         return Some(Position::new(area.x + x, area.y));
     }
+    if let Some(question) = question(model) {
+        let x = put(buffer, area, 0, 0, &question, theme.warning);
+        return Some(Position::new(area.x + x, area.y));
+    }
     if let Some(message) = &model.message {
         let style = if message.warning {
             theme.warning
@@ -34,9 +35,7 @@ pub(in crate::screen) fn draw(model: &Model, buffer: &mut Buffer, area: Rect) ->
         if let Mode::Command(input) = &model.mode {
             // What is wrong above, what was typed below it.
             let above = Rect::new(area.x, area.y.saturating_sub(1), area.width, 1);
-            for x in above.left()..above.right() {
-                buffer[(x, above.y)].reset();
-            }
+            blank(buffer, above);
             put(buffer, above, 0, 0, &message.text, style);
             return Some(typed(model, input, buffer, area));
         }
@@ -67,6 +66,22 @@ pub(in crate::screen) fn draw(model: &Model, buffer: &mut Buffer, area: Rect) ->
             );
             None
         }
+    }
+}
+
+/// What must be decided before anything else.
+fn question(model: &Model) -> Option<String> {
+    match &model.mode {
+        Mode::Leftover => model.desk.leftover().map(|leftover| {
+            format!(
+                "{} not saved last time: Enter takes them in, k keeps them apart",
+                crate::words::count_words(leftover.records, "edit")
+            )
+        }),
+        Mode::Changed => {
+            Some("changed by someone else: m mine, t theirs, b both, any other key: not now".into())
+        }
+        _ => None,
     }
 }
 

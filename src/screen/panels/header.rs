@@ -1,6 +1,7 @@
 //! Title, what is known, the day, what is not saved.
 
 use crate::audit::Knowledge;
+use crate::desk::{Access, Disk};
 use crate::screen::draw::put;
 use crate::screen::model::{Mode, Model};
 use crate::text::{fit, width};
@@ -56,11 +57,7 @@ pub(in crate::screen) fn draw(model: &Model, buffer: &mut Buffer, area: Rect) {
         .format("%a %d %b %Y")
         .to_string();
     let mut x = put(buffer, area, 0, 1, &day, theme.title);
-    let saved = match model.desk.unsaved() {
-        0 => "saved".to_string(),
-        1 => "1 edit not saved".into(),
-        count => format!("{count} edits not saved"),
-    };
+    let (saved, calm) = standing(model);
     if let Some(settled) = settled {
         let load = &settled.survey().load;
         let mut peaks = words::peaks(load.most, &load.peaks(), settings.zone);
@@ -77,11 +74,30 @@ pub(in crate::screen) fn draw(model: &Model, buffer: &mut Buffer, area: Rect) {
             theme.label,
         );
     }
-    let style = if saved == "saved" {
-        theme.hint
-    } else {
-        theme.warning
-    };
+    let style = if calm { theme.hint } else { theme.warning };
     let right = area.width.saturating_sub(width(&saved) as u16).max(x + 1);
     put(buffer, area, right, 1, &saved, style);
+}
+
+/// What becomes of the edits, and whether that is as it should be.
+fn standing(model: &Model) -> (String, bool) {
+    if let Access::Theirs(who) = model.desk.access() {
+        return (format!("read only: {}", crate::text::cut(who, 30)), false);
+    }
+    let unsaved = match model.desk.unsaved() {
+        0 if model.desk.disk() == Disk::Same => return ("saved".into(), true),
+        0 => return ("changed on disk".into(), false),
+        count => crate::words::count_words(count, "edit"),
+    };
+    if let Some(why) = model.desk.unsafe_because() {
+        return (
+            format!("{unsaved} NOT SAFE: {}", crate::text::cut(why, 30)),
+            false,
+        );
+    }
+    if model.desk.disk() == Disk::Same {
+        (format!("{unsaved} not saved"), false)
+    } else {
+        (format!("{unsaved}, changed on disk"), false)
+    }
 }

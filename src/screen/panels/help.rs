@@ -1,7 +1,7 @@
 //! All keys, from the table of actions, and what the signs on the board mean.
 
 use crate::actions::ACTIONS;
-use crate::screen::draw::put;
+use crate::screen::draw::{blank, put};
 use crate::screen::model::Model;
 use crate::text::fit;
 use crate::words::CAUTION;
@@ -9,7 +9,7 @@ use ratatui::buffer::Buffer;
 use ratatui::layout::Rect;
 
 /// Signs on the board.
-const SIGNS: [(&str, &str); 12] = [
+const SIGNS: [(&str, &str); 14] = [
     ("[ ]", "a piece"),
     (
         "{ }",
@@ -17,6 +17,8 @@ const SIGNS: [(&str, &str); 12] = [
     ),
     ("< >", "the piece in hand"),
     ("( )", "the piece that is carried"),
+    ("?", "not yet safe on the disk (a moment after each edit)"),
+    ("'", "now"),
     ("!", "pinned: stays on its resource"),
     ("=", "fastened: stays at its start"),
     ("*", "moved since the file was opened"),
@@ -39,11 +41,7 @@ pub(in crate::screen) fn draw(model: &Model, buffer: &mut Buffer, whole: Rect, t
         whole.width,
         whole.height.saturating_sub(1),
     );
-    for y in area.top()..area.bottom() {
-        for x in area.left()..area.right() {
-            buffer[(x, y)].reset();
-        }
-    }
+    blank(buffer, area);
     let mut lines: Vec<(String, bool)> = Vec::with_capacity(LINES);
     let mut group = "";
     for entry in &ACTIONS {

@@ -1,9 +1,65 @@
 //! The parts of the screen. Each draws one area from the state and changes nothing.
 
 pub(super) mod board;
+pub(super) mod days;
 pub(super) mod detail;
 pub(super) mod find;
+pub(super) mod findings;
 pub(super) mod footer;
+pub(super) mod form;
 pub(super) mod header;
 pub(super) mod help;
 pub(super) mod load;
+
+use super::model::{Mode, Model};
+use crate::actions::Action;
+use crossterm::event::{KeyCode, KeyEvent};
+
+/// A key in one of the panels that list something: up and down, Enter goes, all else leaves.
+pub(super) fn listed(model: &mut Model, key: KeyEvent, action: Option<Action>) {
+    let count = match model.mode {
+        Mode::Findings(_) => findings::lines(model).len(),
+        _ => days::days(model).len(),
+    };
+    let (Mode::Findings(chosen) | Mode::Days(chosen)) = &mut model.mode else {
+        return;
+    };
+    let page = usize::from(model.size.1) / 2;
+    match action {
+        Some(Action::Up) => *chosen = chosen.saturating_sub(1),
+        Some(Action::Down) => *chosen += 1,
+        Some(Action::PageUp) => *chosen = chosen.saturating_sub(page),
+        Some(Action::PageDown) => *chosen += page,
+        Some(Action::First) => *chosen = 0,
+        Some(Action::Last) => *chosen = count,
+        _ if key.code == KeyCode::Enter => return go(model),
+        _ => {
+            model.mode = Mode::Board;
+            return;
+        }
+    }
+    *chosen = (*chosen).min(count.saturating_sub(1));
+}
+
+fn go(model: &mut Model) {
+    match std::mem::replace(&mut model.mode, Mode::Board) {
+        Mode::Findings(chosen) => {
+            let line = findings::lines(model).into_iter().nth(chosen);
+            if let Some(piece) = line
+                .and_then(|(_, id)| id)
+                .and_then(|id| model.rows.find(&id))
+            {
+                model.show_day(model.rows.pieces[piece].span.start);
+                model.take(piece);
+            }
+        }
+        Mode::Days(chosen) => {
+            if let Some(day) = days::days(model).into_iter().nth(chosen) {
+                model.at = day.first;
+                model.show_day(day.first);
+                model.take_at(day.first);
+            }
+        }
+        _ => {}
+    }
+}

@@ -1,0 +1,149 @@
+//! The days strip: each day with its load, the floor, what is in use; Enter goes there.
+
+use crate::clock::{DAY, Instant, Span};
+use crate::screen::draw::{blank, put};
+use crate::screen::model::{Mode, Model};
+use crate::text::fit;
+use chrono::NaiveDate;
+use ratatui::buffer::Buffer;
+use ratatui::layout::{Position, Rect};
+use std::collections::{BTreeMap, BTreeSet};
+
+/// One day.
+pub(in crate::screen) struct Day {
+    pub(in crate::screen) date: NaiveDate,
+    pub(in crate::screen) first: Instant,
+    load: usize,
+    in_use: usize,
+    pieces: usize,
+}
+
+/// The days on which something starts or runs, in order.
+pub(in crate::screen) fn days(model: &Model) -> Vec<Day> {
+    let zone = model.timetable().settings.zone;
+    let mut found: BTreeMap<NaiveDate, (Instant, usize, BTreeSet<usize>)> = BTreeMap::new();
+    for (at, piece) in model
+        .rows
+        .pieces
+        .iter()
+        .enumerate()
+        .filter(|(_, piece)| !piece.withdrawn)
+    {
+        let last = zone.date(piece.span.end - 1);
+        for date in zone
+            .date(piece.span.start)
+            .iter_days()
+            .take_while(|date| *date <= last)
+            .take(400)
+        {
+            let start = piece.span.start.max(zone.midnight(date));
+            let day = found.entry(date).or_insert((start, 0, BTreeSet::new()));
+            day.0 = day.0.min(start);
+            day.1 += 1;
+            day.2.extend(model.rows.on[at]);
+        }
+    }
+    let load = model.shown().0.map(|settled| &settled.survey().load);
+    found
+        .into_iter()
+        .map(|(date, (first, pieces, resources))| {
+            let start = zone.midnight(date);
+            let end = date
+                .succ_opt()
+                .map_or(start + DAY, |next| zone.midnight(next));
+            let load = load.map_or(0, |load| load.most_within(Span { start, end }));
+            Day {
+                date,
+                first,
+                load,
+                in_use: resources.len(),
+                pieces,
+            }
+        })
+        .collect()
+}
+
+/// Opens the strip on the day in hand.
+pub(in crate::screen) fn open(model: &mut Model) {
+    let today = model.timetable().settings.zone.date(model.at);
+    let at = days(model)
+        .iter()
+        .position(|day| day.date >= today)
+        .unwrap_or(0);
+    model.mode = Mode::Days(at);
+}
+
+/// Draws over the lower part of the screen; returns where the cursor belongs.
+pub(in crate::screen) fn draw(
+    model: &Model,
+    chosen: usize,
+    buffer: &mut Buffer,
+    whole: Rect,
+) -> Position {
+    let theme = &model.setup.theme;
+    let days = days(model);
+    let height = (days.len() as u16 + 1)
+        .max(4)
+        .min(whole.height * 2 / 3)
+        .min(whole.height.saturating_sub(1));
+    let area = Rect::new(
+        whole.x,
+        whole.height.saturating_sub(1 + height),
+        whole.width,
+        height,
+    );
+    blank(buffer, area);
+    let floor = model
+        .shown()
+        .0
+        .map_or(0, |settled| settled.receipt().floor());
+    let heading = format!(
+        " Days: in use, load (floor of the whole: {floor}), pieces. Enter goes there, Esc leaves"
+    );
+    put(
+        buffer,
+        area,
+        0,
+        0,
+        &fit(&heading, usize::from(area.width)),
+        theme.axis,
+    );
+    let room = usize::from(height).saturating_sub(1).max(1);
+    let skip = (chosen + 1).saturating_sub(room);
+    let most = days
+        .iter()
+        .map(|day| day.in_use)
+        .max()
+        .unwrap_or(1)
+        .max(floor)
+        .max(1);
+    let bar_room = usize::from(area.width).saturating_sub(46).min(60);
+    for (y, (at, day)) in (1..).zip(days.iter().enumerate().skip(skip).take(room)) {
+        let (mark, style) = if at == chosen {
+            (">", theme.label_here)
+        } else {
+            (" ", theme.label)
+        };
+        let text = format!(
+            "{mark}{}  {:>3} in use  load {:>3}  {:>4} pieces  ",
+            day.date.format("%a %d %b"),
+            day.in_use,
+            day.load,
+            day.pieces
+        );
+        let x = put(buffer, area, 0, y, &text, style);
+        let cells = |count: usize| count * bar_room / most;
+        put(buffer, area, x, y, &"#".repeat(cells(day.load)), theme.load);
+        let idle = cells(day.in_use).saturating_sub(cells(day.load));
+        put(
+            buffer,
+            area,
+            x + cells(day.load) as u16,
+            y,
+            &"+".repeat(idle),
+            theme.open,
+        );
+    }
+    let y = (chosen.saturating_sub(skip) as u16 + 1).min(height.saturating_sub(1));
+    Position::new(area.x, area.y + y)
+}

@@ -1,0 +1,110 @@
+//! What is doubtful in the file, what cannot be, what has no place, who clashes.
+
+use crate::edit::Touched;
+use crate::screen::draw::{blank, put};
+use crate::screen::model::Model;
+use crate::text::{clean, fit};
+use crate::timetable::findings;
+use crate::words;
+use ratatui::buffer::Buffer;
+use ratatui::layout::{Position, Rect};
+use std::sync::Arc;
+
+/// Every line, with the piece it is about.
+pub(in crate::screen) fn lines(model: &Model) -> Vec<(String, Option<Arc<str>>)> {
+    let timetable = model.desk.timetable();
+    let line_of = |id: &str| {
+        let at = timetable.position(id)?;
+        model.desk.document().line_of(&Touched::Request(at))
+    };
+    let at = |id: &str| line_of(id).map_or_else(String::new, |line| format!("line {line}: "));
+    let mut lines = Vec::new();
+    for warning in &model.desk.warnings {
+        let (line, _) = warning.line_and_column(model.desk.document().text());
+        lines.push((format!("line {line}: {}", warning.message), None));
+    }
+    for finding in findings(timetable) {
+        let text = format!(
+            "{}{}",
+            at(&finding.piece),
+            words::finding(timetable, &finding)
+        );
+        lines.push((text, Some(finding.piece)));
+    }
+    if let Some(settled) = model.desk.settled() {
+        for unplaced in &settled.answer().plan.unplaced {
+            let text = format!(
+                "{}{} has no place: {}",
+                at(&unplaced.piece),
+                unplaced.piece,
+                words::unplaced(timetable, unplaced)
+            );
+            lines.push((text, Some(Arc::clone(&unplaced.piece))));
+        }
+        for clash in &settled.survey().clashes {
+            let text = format!(
+                "{} is in {} and {} at once",
+                clean(&clash.person),
+                clash.first,
+                clash.second
+            );
+            lines.push((text, Some(Arc::clone(&clash.first))));
+        }
+    }
+    lines
+}
+
+/// Draws over the lower part of the screen; returns where the cursor belongs.
+pub(in crate::screen) fn draw(
+    model: &Model,
+    chosen: usize,
+    buffer: &mut Buffer,
+    whole: Rect,
+) -> Position {
+    let theme = &model.setup.theme;
+    let height = (whole.height / 2)
+        .max(6)
+        .min(whole.height.saturating_sub(1));
+    let area = Rect::new(
+        whole.x,
+        whole.height.saturating_sub(1 + height),
+        whole.width,
+        height,
+    );
+    blank(buffer, area);
+    let lines = lines(model);
+    let heading = format!(
+        " {}: Enter goes to one, Esc leaves",
+        words::count_words(lines.len(), "finding")
+    );
+    put(
+        buffer,
+        area,
+        0,
+        0,
+        &fit(&heading, usize::from(area.width)),
+        theme.axis,
+    );
+    if lines.is_empty() {
+        put(
+            buffer,
+            area,
+            1,
+            1,
+            "nothing is doubtful, everything has a place, nobody clashes",
+            theme.label,
+        );
+    }
+    let room = usize::from(height).saturating_sub(1).max(1);
+    let skip = (chosen + 1).saturating_sub(room);
+    for (y, (at, (text, _))) in (1..).zip(lines.iter().enumerate().skip(skip).take(room)) {
+        let (mark, style) = if at == chosen {
+            (">", theme.label_here)
+        } else {
+            (" ", theme.label)
+        };
+        put(buffer, area, 0, y, &format!("{mark}{text}"), style);
+    }
+    let y = (chosen.saturating_sub(skip) as u16 + 1).min(height.saturating_sub(1));
+    Position::new(area.x, area.y + y)
+}
