@@ -147,6 +147,12 @@ impl Terminal {
             && last(b"\x1b[?25h") >= last(b"\x1b[?25l")
     }
 
+    /// Kills it without a word.
+    pub(crate) fn kill(&mut self) {
+        self.signal("-KILL");
+        let _ = self.child.wait();
+    }
+
     fn signal(&self, name: &str) {
         let pid = self.child.process_id().unwrap().to_string();
         assert!(
@@ -165,7 +171,7 @@ impl Drop for Terminal {
     }
 }
 
-const XTERM: [(&str, &str); 1] = [("TERM", "xterm-256color")];
+pub(crate) const XTERM: [(&str, &str); 1] = [("TERM", "xterm-256color")];
 
 fn event() -> (tempfile::TempDir, String) {
     let folder = folder_with(&["sample-timetables/three-day-event.toml"]);
