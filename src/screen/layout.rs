@@ -1,7 +1,7 @@
 //! Which piece is in which row.
 
 use crate::claim::Plan;
-use crate::clock::Span;
+use crate::clock::{Instant, Span, merge};
 use crate::engine::partition;
 use crate::lookup::FastMap;
 use crate::timetable::{Piece, Timetable};
@@ -115,6 +115,44 @@ impl Rows {
     pub fn find(&self, id: &str) -> Option<usize> {
         self.pieces.iter().position(|piece| *piece.id == *id)
     }
+}
+
+/// Stretches of at least two hours in which nothing is open and nothing runs, to whole hours:
+/// the board folds them away.
+pub(super) fn folds(timetable: &Timetable, pieces: &[Piece]) -> Vec<Span> {
+    const SHORTEST: i64 = 2 * 3600;
+    let mut seen: Vec<*const crate::timetable::Hours> = Vec::new();
+    let mut open: Vec<Span> = Vec::new();
+    for resource in &timetable.resources().all {
+        let hours = Arc::as_ptr(&resource.hours);
+        if seen.contains(&hours) {
+            continue;
+        }
+        seen.push(hours);
+        match resource.hours.known_windows() {
+            Some(windows) => open.extend(windows),
+            None => return Vec::new(),
+        }
+    }
+    let mut open = merge(open);
+    let inside = |span: Span| {
+        let next = open.partition_point(|window| window.start <= span.start);
+        next > 0 && open[next - 1].end >= span.end
+    };
+    let outside: Vec<Span> = pieces
+        .iter()
+        .map(|piece| piece.span)
+        .filter(|span| !inside(*span))
+        .collect();
+    if !outside.is_empty() {
+        open.extend(outside);
+        open = merge(open);
+    }
+    let closed = open.windows(2).map(|pair| Span {
+        start: Instant((pair[0].end.0 + 3599).div_euclid(3600) * 3600),
+        end: Instant(pair[1].start.0.div_euclid(3600) * 3600),
+    });
+    closed.filter(|span| span.seconds() >= SHORTEST).collect()
 }
 
 /// Rows for pieces that may overlap: as few as will show them all.

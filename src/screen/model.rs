@@ -162,7 +162,7 @@ const PREVIEWS: u64 = 1 << 63;
 impl Model {
     /// The screen of an open timetable.
     pub fn new(desk: Desk, setup: Setup) -> Model {
-        let view = View::showing(Span::lasting(Instant(0), 3600), 60);
+        let view = View::showing(Span::lasting(Instant(0), 3600), 60, Arc::from([]));
         let mut model = Model {
             desk,
             setup,
@@ -257,6 +257,8 @@ impl Model {
             _ => None,
         };
         self.rows = Rows::of(self.timetable(), plan, !current, over);
+        let folds = super::layout::folds(self.timetable(), &self.rows.pieces);
+        self.view = self.view.clone().with_folds(folds.into());
         self.row = self.row.min(self.rows.rows.len().saturating_sub(1));
         self.here = held.and_then(|id| self.rows.find(&id));
         if !self.seen && (current || self.desk.settled().is_none()) {
@@ -298,7 +300,8 @@ impl Model {
             end = end.max(piece.span.end);
         }
         let start = Instant(start.0.div_euclid(3600) * 3600);
-        self.view = View::showing(Span { start, end }, self.areas().time.width);
+        let folds = super::layout::folds(self.timetable(), &self.rows.pieces);
+        self.view = View::showing(Span { start, end }, self.areas().time.width, folds.into());
         self.fitted = true;
     }
 
@@ -388,6 +391,12 @@ pub struct Areas {
     pub footer: Rect,
 }
 
+/// From this width on there is a side.
+const WIDE: u16 = 120;
+
+/// Columns of the side.
+const SIDE: u16 = 40;
+
 /// Below this size there is only a line that says so.
 pub(super) const LEAST: (u16, u16) = (40, 12);
 
@@ -396,8 +405,16 @@ impl Areas {
         if columns < LEAST.0 || rows < LEAST.1 {
             return Areas::default();
         }
+        // From about 120 columns on what is in hand has a place of its own at the side.
+        let side = if columns >= WIDE { SIDE } else { 0 };
+        let whole = columns;
+        let columns = columns - side;
         let load = if rows >= 36 { 6 } else { 3 };
-        let detail = if rows >= 30 { 6 } else { 4.min(rows / 5) };
+        let detail = match rows {
+            _ if side > 0 => 0,
+            30.. => 6,
+            _ => 4.min(rows / 5),
+        };
         let board = rows - 2 - 1 - load - detail - 1;
         let mut y = 0;
         let mut next = |height: u16| {
@@ -406,7 +423,18 @@ impl Areas {
             area
         };
         let (header, axis, board) = (next(2), next(1), next(board));
-        let (load, detail, footer) = (next(load), next(detail), next(1));
+        let (load, mut detail, footer) = (next(load), next(detail), next(1));
+        let header = Rect {
+            width: whole,
+            ..header
+        };
+        let footer = Rect {
+            width: whole,
+            ..footer
+        };
+        if side > 0 {
+            detail = Rect::new(columns, axis.y, side, rows - 3);
+        }
         let label = label.min(columns / 2);
         let time = Rect::new(
             label,

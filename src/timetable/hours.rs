@@ -99,6 +99,12 @@ impl Hours {
         hours
     }
 
+    /// The open windows over the time the timetable speaks of; `None` when it is always open
+    /// (or the time is too long to be worked out at once).
+    pub fn known_windows(&self) -> Option<&[Span]> {
+        self.known.map(|_| self.windows.as_slice())
+    }
+
     /// Whether it is always open and never closed.
     pub fn unlimited(&self) -> bool {
         self.opening.is_none() && self.closed.is_empty()

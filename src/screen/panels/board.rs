@@ -86,24 +86,21 @@ fn axis(model: &Model, buffer: &mut Buffer, areas: &Areas) {
     );
     let line = Rect::new(areas.time.x, area.y, areas.time.width, 1);
     let mut free_from = 0;
-    let mut last_date = None;
+    let mut last_date = zone.date(model.view.left - model.view.step());
     for column in 0..line.width {
-        let span = model.view.span_of(column);
-        let civil = zone.civil(span.start);
-        let whole_hour =
-            civil.and_utc().timestamp() % 3600 < model.view.step() && span.start.0 % 60 == 0;
-        let midnight = civil.and_utc().timestamp().rem_euclid(86_400) < model.view.step();
-        if column < free_from || !(midnight || (whole_hour && model.view.step() <= 3600)) {
+        let civil = zone.civil(model.view.span_of(column).start);
+        let another_day = civil.date() != last_date && (column > 0 || model.view.step() > 3600);
+        last_date = civil.date();
+        let since_hour = civil.and_utc().timestamp().rem_euclid(3600);
+        let whole_hour = since_hour < model.view.step() && model.view.step() <= 3600;
+        if column < free_from || !(another_day || whole_hour) {
             continue;
         }
-        let date = civil.date();
-        let name_the_day = midnight || (last_date.is_some_and(|last| last != date));
-        let text = if name_the_day {
+        let text = if another_day {
             civil.format("%a%d").to_string()
         } else {
             civil.format("%H").to_string()
         };
-        last_date = Some(date);
         if usize::from(column) + text.len() > usize::from(line.width) {
             break;
         }

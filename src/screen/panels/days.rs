@@ -63,6 +63,39 @@ pub(in crate::screen) fn days(model: &Model) -> Vec<Day> {
         .collect()
 }
 
+/// The days as a short list, for the side of a wide screen.
+pub(in crate::screen) fn list(model: &Model, buffer: &mut Buffer, area: Rect) {
+    let theme = &model.setup.theme;
+    let today = model.timetable().settings.zone.date(model.at);
+    let days = days(model);
+    let room = usize::from(area.height).saturating_sub(1);
+    let here = days.iter().position(|day| day.date >= today).unwrap_or(0);
+    let skip = (here + 1).saturating_sub(room);
+    put(
+        buffer,
+        area,
+        1,
+        0,
+        "day         in use  load  pieces",
+        theme.title,
+    );
+    for (y, day) in (1..area.height).zip(days.iter().skip(skip)) {
+        let (mark, style) = if day.date == today {
+            (">", theme.label_here)
+        } else {
+            (" ", theme.label)
+        };
+        let text = format!(
+            "{mark}{}  {:>6}  {:>4}  {:>6}",
+            day.date.format("%a %d %b"),
+            day.in_use,
+            day.load,
+            day.pieces
+        );
+        put(buffer, area, 0, y, &text, style);
+    }
+}
+
 /// Opens the strip on the day in hand.
 pub(in crate::screen) fn open(model: &mut Model) {
     let today = model.timetable().settings.zone.date(model.at);

@@ -4,7 +4,7 @@ use crate::clock::Span;
 use crate::screen::draw::put;
 use crate::screen::layout::RowKind;
 use crate::screen::model::{Carry, Mode, Model};
-use crate::text::{clean, cut};
+use crate::text::{clean, cut, width};
 use crate::timetable::{Piece, may_use, occupied};
 use crate::words;
 use ratatui::buffer::Buffer;
@@ -17,21 +17,56 @@ pub(in crate::screen) fn draw(model: &Model, buffer: &mut Buffer, area: Rect) {
         Some(here) => of_piece(model, here),
         None => of_row(model),
     };
-    for (y, (text, style)) in (0..area.height).zip(lines) {
-        let style = match style {
-            Tone::Head => theme.title,
-            Tone::Plain => Style::new(),
-            Tone::Warn => theme.warning,
-        };
-        put(
-            buffer,
-            area,
-            1,
-            y,
-            &cut(&text, usize::from(area.width).saturating_sub(2)),
-            style,
-        );
+    let style = |tone| match tone {
+        Tone::Head => theme.title,
+        Tone::Plain => Style::new(),
+        Tone::Warn => theme.warning,
+    };
+    let room = usize::from(area.width).saturating_sub(2);
+    if area.height <= 8 {
+        for (y, (text, tone)) in (0..area.height).zip(lines) {
+            put(buffer, area, 1, y, &cut(&text, room), style(tone));
+        }
+        return;
     }
+    // At the side there is room for whole sentences, and for the days below them.
+    let wrapped = lines
+        .iter()
+        .flat_map(|(text, tone)| wrap(text, room).into_iter().map(|line| (line, *tone)));
+    let mut y = 0;
+    for (text, tone) in wrapped.take(usize::from(area.height)) {
+        put(buffer, area, 1, y, &text, style(tone));
+        y += 1;
+    }
+    let rest = Rect {
+        y: area.y + y + 1,
+        height: area.height.saturating_sub(y + 1),
+        ..area
+    };
+    if rest.height > 2 {
+        super::days::list(model, buffer, rest);
+    }
+}
+
+/// A sentence in lines of so many cells, broken between words where that is possible.
+fn wrap(text: &str, room: usize) -> Vec<String> {
+    let mut lines = vec![String::new()];
+    for word in text.split(' ') {
+        let Some(line) = lines.last_mut() else {
+            continue;
+        };
+        let gap = usize::from(!line.is_empty());
+        if line.is_empty() || width(line) + gap + width(word) <= room {
+            if gap == 1 {
+                line.push(' ');
+            }
+            line.push_str(word);
+        } else {
+            lines.push(word.to_string());
+        }
+    }
+    lines.retain(|line| !line.is_empty());
+    lines
 }
 
 #[derive(Clone, Copy)]
