@@ -258,15 +258,19 @@ impl Desk {
             edits_made.extend(self.resolve(edit)?);
         }
         let mut timetable = before.clone();
-        let mut document = self.document.clone();
         let mut patches = Vec::new();
         for edit in &edits_made {
             let earlier = timetable.clone();
-            let touched = edit::apply(&mut timetable, edit)?;
-            patches.extend(document.follow(&earlier, &timetable, &touched));
+            match edit::apply(&mut timetable, edit) {
+                Ok(touched) => patches.extend(self.document.follow(&earlier, &timetable, &touched)),
+                Err(refused) => {
+                    // All or nothing: the text goes back to where it was.
+                    self.document.take_back(&patches);
+                    return Err(refused);
+                }
+            }
         }
         self.timetable = timetable;
-        self.document = document;
         self.history.push(Step {
             edits: edits_made,
             before,

@@ -5,6 +5,7 @@ use crate::claim::Answer;
 use crate::clock::Span;
 use crate::document::State;
 use crate::engine::Problem;
+use crate::lookup::FastSet;
 use crate::overlap::{Clash, Load, clashes, load};
 use crate::timetable::{Piece, Timetable};
 use std::sync::Arc;
@@ -22,6 +23,8 @@ pub struct Survey {
     pub load: Load,
     /// One person in two places.
     pub clashes: Vec<Clash>,
+    /// The pieces in any clash.
+    pub clashing: FastSet<Arc<str>>,
 }
 
 impl Survey {
@@ -34,9 +37,14 @@ impl Survey {
             .map(|(at, _)| at);
         let cores: Vec<(usize, Span)> = present.zip(problem.cores()).collect();
         let spans: Vec<Span> = cores.iter().map(|(_, span)| *span).collect();
+        let clashes = clashes(&pieces);
+        let both = clashes
+            .iter()
+            .flat_map(|clash| [&clash.first, &clash.second]);
         Survey {
             load: load(&spans),
-            clashes: clashes(&pieces),
+            clashing: both.cloned().collect(),
+            clashes,
             cores,
             timetable,
             pieces,
@@ -51,6 +59,7 @@ pub struct Settled {
     pub(super) answer: Answer,
     receipt: Receipt,
     survey: Arc<Survey>,
+    counted: FastSet<Arc<str>>,
 }
 
 /// Has audit check an answer.
@@ -64,6 +73,7 @@ pub fn settle(
 ) -> Result<Settled, Vec<Refusal>> {
     let receipt = audit::check(&survey.timetable, &answer)?;
     Ok(Settled {
+        counted: answer.floor_pieces().iter().cloned().collect(),
         generation,
         answer,
         receipt,
@@ -85,6 +95,11 @@ impl Settled {
     /// What audit found.
     pub fn receipt(&self) -> &Receipt {
         &self.receipt
+    }
+
+    /// Whether the floor counts a piece.
+    pub fn counts(&self, piece: &str) -> bool {
+        self.counted.contains(piece)
     }
 
     /// What holds whatever the plan.

@@ -152,6 +152,8 @@ pub struct Model {
     /// What `now` means.
     pub now: Instant,
     seen: bool,
+    /// The days, as far as anyone asked.
+    pub(super) days: std::cell::OnceCell<Vec<super::panels::days::Day>>,
     /// Whether the view shows a whole day and should go on doing so at another size.
     pub fitted: bool,
 }
@@ -180,6 +182,7 @@ impl Model {
             progress: Progress::Searching,
             now: Instant(0),
             seen: false,
+            days: std::cell::OnceCell::new(),
             fitted: true,
         };
         if !model.desk.warnings.is_empty() {
@@ -257,6 +260,7 @@ impl Model {
             _ => None,
         };
         self.rows = Rows::of(self.timetable(), plan, !current, over);
+        self.days.take();
         let folds = super::layout::folds(self.timetable(), &self.rows.pieces);
         self.view = self.view.clone().with_folds(folds.into());
         self.row = self.row.min(self.rows.rows.len().saturating_sub(1));

@@ -30,7 +30,7 @@ enum Wake {
 type Screen = Terminal<CrosstermBackend<BufWriter<Stdout>>>;
 
 /// How long a first answer is waited for before a frame shows the edit without it.
-const ANSWER_WITHIN: Duration = Duration::from_millis(12);
+const ANSWER_WITHIN: Duration = Duration::from_millis(8);
 
 /// The same before the very first frame.
 const FIRST_ANSWER_WITHIN: Duration = Duration::from_millis(80);

@@ -104,8 +104,14 @@ impl Timetable {
 
     /// Replaces one request; resources are worked out again where some are made as needed.
     pub fn replace(&mut self, at: usize, request: Request) {
-        self.requests[at] = Arc::new(request);
-        if self.resources.open_ended {
+        let before = std::mem::replace(&mut self.requests[at], Arc::new(request));
+        let now = &self.requests[at];
+        // How many there must be follows from times, buffers and names; nothing else.
+        let same = before.span() == now.span()
+            && (before.setup, before.turnaround) == (now.setup, now.turnaround)
+            && before.withdrawn == now.withdrawn
+            && (&before.pin, &before.only, &before.never) == (&now.pin, &now.only, &now.never);
+        if self.resources.open_ended && !same {
             self.refresh();
         }
     }

@@ -14,10 +14,13 @@ use fewest::clock::{Instant, Span};
 use fewest::desk::{Desk, Event, Solver};
 use fewest::engine::{bound_and_count, partition};
 use fewest::screen::{Depth, Effect, Model, Msg, Setup, Theme, draw, update};
+use fewest::store::RealFiles;
+use fewest::store::journal::{Record, Writer, journal_path};
 use ratatui::Terminal;
-use ratatui::backend::TestBackend;
+use ratatui::backend::{CrosstermBackend, TestBackend};
 use std::fmt::Write;
 use std::hint::black_box;
+use std::sync::Arc;
 use std::sync::mpsc::{Receiver, channel};
 use std::time::{Duration, Instant as Watch};
 
@@ -183,6 +186,35 @@ impl Running {
         }
     }
 
+    /// A key as the program's loop takes it: an answer that comes within 8 ms is part of the
+    /// frame, else the frame shows the edit alone and the answer comes in the next.
+    fn key_within(&mut self, code: KeyCode) {
+        let watch = Watch::now();
+        for effect in update(
+            &mut self.model,
+            Msg::Key(KeyEvent::new(code, KeyModifiers::NONE)),
+        ) {
+            if let Effect::Submit(job) = effect {
+                self.solver.submit(*job);
+            }
+        }
+        while !self.model.desk.is_current() {
+            let left = Duration::from_millis(8).saturating_sub(watch.elapsed());
+            match self.told.recv_timeout(left) {
+                Ok(event) => _ = update(&mut self.model, Msg::Solver(event)),
+                Err(_) => return,
+            }
+        }
+    }
+
+    /// Waits for the answer to what was done last.
+    fn catch_up(&mut self) {
+        while !self.model.desk.is_current() {
+            let event = self.told.recv().unwrap();
+            update(&mut self.model, Msg::Solver(event));
+        }
+    }
+
     /// A key, and the first answer to what it did.
     fn key(&mut self, code: KeyCode) {
         let effects = update(
@@ -248,9 +280,158 @@ fn edit_to_frame(_: &mut Criterion) {
     }
 }
 
+/// A place in a vector of times.
+fn share(times: &mut [Duration], percent: usize) -> f64 {
+    times.sort_unstable();
+    times[(times.len() - 1) * percent / 100].as_secs_f64() * 1e3
+}
+
+/// A writer that only counts.
+#[derive(Clone, Default)]
+struct Count(std::rc::Rc<std::cell::Cell<usize>>);
+
+impl std::io::Write for Count {
+    fn write(&mut self, bytes: &[u8]) -> std::io::Result<usize> {
+        self.0.set(self.0.get() + bytes.len());
+        Ok(bytes.len())
+    }
+
+    fn flush(&mut self) -> std::io::Result<()> {
+        Ok(())
+    }
+}
+
+fn screen(_: &mut Criterion) {
+    println!(
+        "\n10,000 requests on 300 unlike rooms (first frame at most 150 ms; key to frame at most 16 ms at p99)"
+    );
+    let text = timetable(10_000, true);
+    let mut first = Vec::new();
+    for _ in 0..7 {
+        let folder = tempfile::tempdir().unwrap();
+        let path = folder.path().join("speed.toml");
+        std::fs::write(&path, &text).unwrap();
+        let watch = Watch::now();
+        let theme = Theme::named("daylight", Depth::Palette).unwrap().unwrap();
+        let setup = Setup {
+            theme,
+            keys: Keys::default(),
+            ascii: false,
+        };
+        let (desk, _) = Desk::open_to_edit(&path, "bench", Arc::new(RealFiles)).unwrap();
+        let model = Model::new(desk, setup);
+        let mut running = Running::new(model);
+        update(&mut running.model, Msg::Resize(120, 40));
+        let opened = watch.elapsed();
+        let job = running.model.desk.job();
+        running.perform(vec![Effect::Submit(Box::new(job))]);
+        let mut terminal = Terminal::new(TestBackend::new(120, 40)).unwrap();
+        terminal.draw(|frame| draw(&running.model, frame)).unwrap();
+        first.push((watch.elapsed(), opened));
+    }
+    first.sort_unstable();
+    let (whole, opened) = first[first.len() / 2];
+    println!(
+        "first frame with its answer: median {:.0} ms (opened after {:.0} ms)",
+        whole.as_secs_f64() * 1e3,
+        opened.as_secs_f64() * 1e3
+    );
+
+    let (_folder, model) = model(&text);
+    let mut running = Running::new(model);
+    let count = Count::default();
+    let mut terminal = Terminal::with_options(
+        CrosstermBackend::new(count.clone()),
+        ratatui::TerminalOptions {
+            viewport: ratatui::Viewport::Fixed(ratatui::layout::Rect::new(0, 0, 120, 40)),
+        },
+    )
+    .unwrap();
+    update(&mut running.model, Msg::Resize(120, 40));
+    let job = running.model.desk.job();
+    running.perform(vec![Effect::Submit(Box::new(job))]);
+    let mut bytes = |running: &Running| {
+        let before = count.0.get();
+        terminal.draw(|frame| draw(&running.model, frame)).unwrap();
+        count.0.get() - before
+    };
+    let whole = bytes(&running);
+    let idle = bytes(&running);
+    let (mut keys, mut steps, mut edits) = (Vec::new(), Vec::new(), Vec::new());
+    let mut numbers = Numbers(9);
+    for _ in 0..300 {
+        let code =
+            [KeyCode::Left, KeyCode::Right, KeyCode::Up, KeyCode::Down][numbers.below(4) as usize];
+        let watch = Watch::now();
+        running.key(code);
+        steps.push(bytes(&running));
+        keys.push(watch.elapsed());
+    }
+    for _ in 0..100 {
+        let watch = Watch::now();
+        running.key_within(KeyCode::Char('f'));
+        edits.push(bytes(&running));
+        keys.push(watch.elapsed());
+        running.catch_up();
+        bytes(&running);
+        running.key(KeyCode::Char('u'));
+        bytes(&running);
+        running.key(KeyCode::Right);
+        bytes(&running);
+    }
+    steps.sort_unstable();
+    edits.sort_unstable();
+    println!(
+        "key to frame: median {:.2} ms, p99 {:.2} ms",
+        share(&mut keys, 50),
+        share(&mut keys, 99)
+    );
+    println!(
+        "bytes per 120x40 frame: first {whole}, idle {idle}, cursor step median {} (most {}), edit median {} (most {})",
+        steps[steps.len() / 2],
+        steps[steps.len() - 1],
+        edits[edits.len() / 2],
+        edits[edits.len() - 1]
+    );
+}
+
+fn journal(_: &mut Criterion) {
+    let folder = tempfile::tempdir_in(".").unwrap();
+    let path = folder.path().join("speed.toml");
+    std::fs::write(&path, timetable(1_000, false)).unwrap();
+    let (desk, _) = Desk::open_to_edit(&path, "bench", Arc::new(RealFiles)).unwrap();
+    let hash = desk.document().hash();
+    drop(desk);
+    let mut writer = Writer::new(Arc::new(RealFiles), journal_path(&path), hash);
+    let mut times = Vec::new();
+    for edit in 0..10_000 {
+        let line = if edit % 2 == 0 {
+            format!("fasten r{}", edit / 2 % 1_000)
+        } else {
+            format!("loosen r{}", edit / 2 % 1_000)
+        };
+        let watch = Watch::now();
+        writer.add(&Record::Step(vec![line])).unwrap();
+        times.push(watch.elapsed());
+    }
+    println!(
+        "\njournal, one edit with sync: median {:.3} ms, p99 {:.3} ms",
+        share(&mut times, 50),
+        share(&mut times, 99)
+    );
+    let watch = Watch::now();
+    let (mut desk, _) = Desk::open_to_edit(&path, "bench", Arc::new(RealFiles)).unwrap();
+    let (taken, rest) = desk.take_in_leftover();
+    println!(
+        "opening with {taken} edits to replay: {:.0} ms (at most 1,000)",
+        watch.elapsed().as_secs_f64() * 1e3
+    );
+    assert!(taken == 10_000 && rest.is_empty());
+}
+
 criterion_group! {
     name = benches;
     config = Criterion::default().sample_size(20).measurement_time(Duration::from_secs(2)).without_plots();
-    targets = alike, edit_to_frame
+    targets = alike, edit_to_frame, screen, journal
 }
 criterion_main!(benches);

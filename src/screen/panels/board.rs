@@ -1,6 +1,8 @@
 //! Resources against time, a bar per piece. Shapes first, colours second.
 
 use crate::clock::Span;
+use crate::desk::Settled;
+use crate::lookup::FastSet;
 use crate::screen::draw::put;
 use crate::screen::layout::{Row, RowKind};
 use crate::screen::model::{Areas, Mode, Model};
@@ -9,7 +11,6 @@ use crate::timetable::{Piece, occupied};
 use ratatui::buffer::Buffer;
 use ratatui::layout::{Position, Rect};
 use ratatui::style::Style;
-use std::collections::HashSet;
 
 /// Draws axis and rows; returns where the focus is.
 pub(in crate::screen) fn draw(model: &Model, buffer: &mut Buffer, areas: &Areas) -> Position {
@@ -156,34 +157,26 @@ fn now_line(model: &Model, buffer: &mut Buffer, line: Rect) {
 
 /// Which pieces wear which mark.
 struct Marks<'a> {
-    unsafe_yet: crate::lookup::FastSet<&'a str>,
-    counted: HashSet<&'a str>,
-    clashing: HashSet<&'a str>,
+    unsafe_yet: FastSet<&'a str>,
+    settled: Option<&'a Settled>,
 }
 
 impl<'a> Marks<'a> {
     fn of(model: &'a Model) -> Marks<'a> {
-        let Some(settled) = model.shown().0 else {
-            return Marks {
-                unsafe_yet: model.desk.not_yet_safe(),
-                counted: HashSet::new(),
-                clashing: HashSet::new(),
-            };
-        };
-        let clashes = &settled.survey().clashes;
         Marks {
             unsafe_yet: model.desk.not_yet_safe(),
-            counted: settled
-                .answer()
-                .floor_pieces()
-                .iter()
-                .map(|id| &**id)
-                .collect(),
-            clashing: clashes
-                .iter()
-                .flat_map(|clash| [&*clash.first, &*clash.second])
-                .collect(),
+            settled: model.shown().0.map(|settled| &**settled),
         }
+    }
+
+    fn counted(&self, piece: &Piece) -> bool {
+        self.settled
+            .is_some_and(|settled| settled.counts(&piece.id))
+    }
+
+    fn clashing(&self, piece: &Piece) -> bool {
+        self.settled
+            .is_some_and(|settled| settled.survey().clashing.contains(&piece.id))
     }
 }
 
@@ -196,7 +189,7 @@ fn marks(model: &Model, piece: &Piece, marks: &Marks<'_>) -> String {
         ("=", piece.fastened),
         ("*", moved),
         ("?", marks.unsafe_yet.contains(&*piece.request.id)),
-        ("&", marks.clashing.contains(&*piece.id)),
+        ("&", marks.clashing(piece)),
     ]
     .into_iter()
     .filter_map(|(mark, set)| set.then_some(mark))
@@ -229,14 +222,14 @@ fn bar(model: &Model, buffer: &mut Buffer, line: Rect, row: &Row, at: usize, kno
         return;
     }
     let carried = matches!(&model.mode, Mode::Carry(carry) if carry.id == piece.id);
-    let counted = known.counted.contains(&*piece.id);
+    let counted = known.counted(piece);
     let (open, close, style) = if carried {
         ("(", ")", theme.bar_carried)
     } else if model.here == Some(at) {
         ("<", ">", theme.bar_here)
     } else if row.kind == RowKind::Withdrawn {
         ("[", "]", theme.bar_withdrawn)
-    } else if known.clashing.contains(&*piece.id) {
+    } else if known.clashing(piece) {
         (
             if counted { "{" } else { "[" },
             if counted { "}" } else { "]" },

@@ -10,6 +10,7 @@ use ratatui::layout::{Position, Rect};
 use std::collections::{BTreeMap, BTreeSet};
 
 /// One day.
+#[derive(Clone, Debug)]
 pub(in crate::screen) struct Day {
     pub(in crate::screen) date: NaiveDate,
     pub(in crate::screen) first: Instant,
@@ -18,8 +19,12 @@ pub(in crate::screen) struct Day {
     pieces: usize,
 }
 
-/// The days on which something starts or runs, in order.
-pub(in crate::screen) fn days(model: &Model) -> Vec<Day> {
+/// The days on which something starts or runs, in order; worked out when first asked for.
+pub(in crate::screen) fn days(model: &Model) -> &[Day] {
+    model.days.get_or_init(|| work_out(model))
+}
+
+fn work_out(model: &Model) -> Vec<Day> {
     let zone = model.timetable().settings.zone;
     let mut found: BTreeMap<NaiveDate, (Instant, usize, BTreeSet<usize>)> = BTreeMap::new();
     for (at, piece) in model

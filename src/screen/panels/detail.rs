@@ -186,7 +186,7 @@ fn head(model: &Model, piece: &Piece) -> (String, Tone) {
     let counted = model
         .shown()
         .0
-        .is_some_and(|settled| settled.answer().floor_pieces().contains(&piece.id));
+        .is_some_and(|settled| settled.counts(&piece.id));
     if counted {
         states.push("{ } counted in the floor".into());
     }

@@ -54,10 +54,10 @@ fn go(model: &mut Model) {
             }
         }
         Mode::Days(chosen) => {
-            if let Some(day) = days::days(model).into_iter().nth(chosen) {
-                model.at = day.first;
-                model.show_day(day.first);
-                model.take_at(day.first);
+            if let Some(first) = days::days(model).get(chosen).map(|day| day.first) {
+                model.at = first;
+                model.show_day(first);
+                model.take_at(first);
             }
         }
         _ => {}
