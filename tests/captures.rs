@@ -60,7 +60,7 @@ fn capture(name: &str, sample: &str, size: (u16, u16), no_color: bool, keys: &[(
         environment.push(("NO_COLOR", "1"));
     }
     let mut terminal = Terminal::open(&[path.to_str().unwrap()], size, &environment);
-    terminal.wait_for("in use, at least 9: proved");
+    terminal.wait("the count", |text| text.contains("proved"));
     terminal.wait_for("? help");
     for (keys, shows) in keys {
         terminal.press(keys);
@@ -130,10 +130,40 @@ fn carrying_finding_and_help_as_people_see_them() {
         &[("/eel", "found (Enter goes there")],
     );
     capture(
+        "form-80x24-no-color",
+        "three-day-event",
+        (80, 24),
+        true,
+        &[("e", "Enter makes the changes")],
+    );
+    capture(
+        "days-80x24-no-color",
+        "exam-fortnight",
+        (80, 24),
+        true,
+        &[("d", "Days: in use")],
+    );
+    capture(
         "help-80x24-no-color",
         "three-day-event",
         (80, 24),
         true,
         &[("?", "Keys and signs")],
+    );
+}
+
+#[test]
+fn the_depot_as_people_see_it() {
+    for (no_color, suffix) in [(false, "colour"), (true, "no-color")] {
+        let name = format!("depot-80x24-{suffix}");
+        capture(&name, "depot-shift-change", (80, 24), no_color, &[]);
+    }
+    let findings = [("i", "tow-3 has no possible crew")];
+    capture(
+        "findings-80x24-no-color",
+        "depot-shift-change",
+        (80, 24),
+        true,
+        &findings,
     );
 }

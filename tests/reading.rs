@@ -90,3 +90,42 @@ proptest! {
         }
     }
 }
+
+proptest! {
+    /// Any CSV, and bounded mutations of a real one: taken in or refused; what is taken in is
+    /// a timetable that can be read.
+    #[test]
+    fn mutated_csv_never_breaks_the_intake(
+        cuts in prop::collection::vec((0usize..400, 0usize..20, "[\\x00-\\x7f]{0,5}"), 0..6),
+        wild in prop::option::of("\\PC{0,80}"),
+    ) {
+        use fewest::intake::{Columns, read_csv, set_aside_csv, timetable_text};
+        let mut text = wild.unwrap_or_default();
+        if text.is_empty() {
+            for row in 0..6 {
+                text.push_str(&format!("a{row},Title {row},2027-01-11 {:02}:00,2027-01-11 {:02}:30,{row},x;y,\"Hall {row}, big\"\n", 8 + row, 9 + row));
+            }
+        }
+        for (at, length, new) in cuts {
+            let at = (0..=at.min(text.len())).rev().find(|at| text.is_char_boundary(*at)).unwrap_or(0);
+            let end = (at + length).min(text.len());
+            let end = (end..=text.len()).find(|end| text.is_char_boundary(*end)).unwrap_or(text.len());
+            text.replace_range(at..end, &new);
+        }
+        let named = |name: &str| Some(name.to_string());
+        let columns = Columns {
+            id: vec!["id".into()], title: named("t"), start: "s".into(), end: named("e"), length: None, size: named("n"),
+            people: named("p"), resource: named("r"), day: None, minutes_from: None, only: Vec::new(),
+            blank: vec!["-".into()], as_issued: false, separator: b',',
+            zone: fewest::clock::Zone::named("Europe/Lisbon").unwrap(),
+        };
+        if let Ok(intake) = read_csv(format!("id,t,s,e,n,p,r\n{text}").as_bytes(), &columns) {
+            let written = timetable_text(&intake, "csv", None, columns.zone);
+            if let Err(mistakes) = document::read("csv", written.as_bytes()) {
+                prop_assert!(false, "{}", mistakes);
+            }
+            let aside = set_aside_csv(&intake).unwrap();
+            prop_assert!(!aside.windows(2).any(|pair| pair[0] == b',' && b"=+@".contains(&pair[1])));
+        }
+    }
+}

@@ -6,7 +6,7 @@ use fewest::audit::Knowledge;
 use fewest::claim::FloorProof;
 use fewest::document;
 use fewest::edit::{Change, apply};
-use fewest::timetable::{Timetable, findings};
+use fewest::timetable::{FindingKind, Timetable, findings};
 
 fn sample(name: &str) -> Timetable {
     let path = file(&format!("sample-timetables/{name}.toml"));
@@ -89,8 +89,54 @@ fn two_pins_force_a_ninth_room_on_the_exams() {
 }
 
 #[test]
+fn one_duty_at_the_depot_nobody_can_take() {
+    let path = file("sample-timetables/depot-shift-change.toml");
+    let read = document::read("depot", &std::fs::read(&path).unwrap())
+        .unwrap_or_else(|mistakes| panic!("{mistakes}"));
+    let found = findings(&read.timetable);
+    assert_eq!(found.len(), 1);
+    assert_eq!(
+        (&*found[0].piece, &found[0].kind),
+        ("tow-3", &FindingKind::NoResource)
+    );
+    let settled = solve(&read.timetable, 50_000);
+    assert_eq!(
+        settled.receipt().knowledge(),
+        Knowledge::Impossible {
+            unplaced_floor: 3,
+            least: true
+        }
+    );
+    assert_eq!(
+        (settled.receipt().unplaced(), settled.receipt().in_use()),
+        (1, 22)
+    );
+    // Without it the rest is placed, on no fewer crews (found by the exact programme outside).
+    let mut without = read.timetable.clone();
+    apply(&mut without, &Change::Withdraw("tow-3".into()).into()).unwrap();
+    let settled = solve(&without, 200_000);
+    assert!(
+        matches!(settled.receipt().knowledge(), Knowledge::Proved(p) if p.count() == 22),
+        "{:?}",
+        settled.receipt()
+    );
+    assert_eq!(
+        fewest(&["count", path.to_str().unwrap()]).status.code(),
+        Some(4)
+    );
+}
+
+#[test]
+fn the_harbour_ropes_out_seven_lanes() {
+    let settled = solve(&sample("harbour-lanes"), 0);
+    assert!(matches!(settled.receipt().knowledge(), Knowledge::Proved(p) if p.count() == 7));
+    assert_eq!(settled.survey().load.most, 7);
+    assert!(settled.survey().timetable.resources().open_ended);
+}
+
+#[test]
 fn the_readme_commands_work_on_the_samples() {
-    for name in ["three-day-event", "exam-fortnight"] {
+    for name in ["three-day-event", "exam-fortnight", "harbour-lanes"] {
         let output = fewest(&[
             "count",
             file(&format!("sample-timetables/{name}.toml"))

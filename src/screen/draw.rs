@@ -2,7 +2,7 @@
 
 use super::model::{LEAST, Mode, Model};
 use super::panels;
-use crate::text::{cut, width};
+use crate::text::{clean, cut, width};
 use ratatui::Frame;
 use ratatui::buffer::Buffer;
 use ratatui::layout::{Position, Rect};
@@ -59,7 +59,13 @@ pub(super) fn put(
     if y >= area.height || x >= area.width {
         return x;
     }
-    let text = cut(text, usize::from(area.width - x));
+    let room = usize::from(area.width - x);
+    let shown = clean(text);
+    let text = if width(&shown) <= room {
+        shown
+    } else {
+        cut(text, room).into()
+    };
     buffer.set_stringn(
         area.x + x,
         area.y + y,

@@ -4,6 +4,7 @@ use super::layout::{RowKind, Rows};
 use super::theme::Theme;
 use super::view::View;
 use crate::actions::Keys;
+use crate::claim::Reason;
 use crate::clock::{Instant, Span};
 use crate::desk::{Desk, Settled};
 use crate::edit::{Change, Edit};
@@ -275,8 +276,22 @@ impl Model {
         self.keep_in_sight();
     }
 
-    /// Shows the day of the first peak (or of the first piece) and takes a piece of it.
+    /// Shows the day of the first peak (or of the first piece) and takes a piece of it; what
+    /// has no place comes before that.
     fn first_look(&mut self) {
+        // What nobody can take is there to stay; the rest may find a place in a moment.
+        let unplaced = self.desk.settled().and_then(|settled| {
+            let unplaced = &settled.answer().plan.unplaced;
+            let nowhere = unplaced
+                .iter()
+                .find(|unplaced| unplaced.because == Reason::NoResource);
+            nowhere.or(unplaced.first())
+        });
+        if let Some(piece) = unplaced.and_then(|unplaced| self.rows.find(&unplaced.piece)) {
+            self.show_day(self.rows.pieces[piece].span.start);
+            self.take(piece);
+            return;
+        }
         let peak = self
             .desk
             .settled()

@@ -23,7 +23,12 @@ pub(in crate::screen) fn lines(model: &Model) -> Vec<(String, Option<Arc<str>>)>
         let (line, _) = warning.line_and_column(model.desk.document().text());
         lines.push((format!("line {line}: {}", warning.message), None));
     }
-    for finding in findings(timetable) {
+    let found = findings(timetable);
+    let known: Vec<Arc<str>> = found
+        .iter()
+        .map(|finding| Arc::clone(&finding.piece))
+        .collect();
+    for finding in found {
         let text = format!(
             "{}{}",
             at(&finding.piece),
@@ -32,7 +37,8 @@ pub(in crate::screen) fn lines(model: &Model) -> Vec<(String, Option<Arc<str>>)>
         lines.push((text, Some(finding.piece)));
     }
     if let Some(settled) = model.desk.settled() {
-        for unplaced in &settled.answer().plan.unplaced {
+        let others = settled.answer().plan.unplaced.iter();
+        for unplaced in others.filter(|unplaced| !known.contains(&unplaced.piece)) {
             let text = format!(
                 "{}{} has no place: {}",
                 at(&unplaced.piece),
