@@ -10,6 +10,10 @@ fn main() -> ExitCode {
         return ExitCode::from(fewest::cli::code::FAULT);
     };
     let _ = std::io::stderr().write_all(outcome.err.as_bytes());
+    if outcome.out.is_empty() {
+        // What a screen may have left half written is not for us to try again.
+        return ExitCode::from(outcome.code);
+    }
     let mut out = std::io::stdout();
     match out
         .write_all(outcome.out.as_bytes())

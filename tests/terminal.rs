@@ -340,6 +340,54 @@ fn the_terminal_is_given_back_on_signals_and_edits_are_kept() {
     }
 }
 
+/// A line that breaks: the terminal is gone, nothing can be written to it, and the journal
+/// is whole all the same.
+#[test]
+fn a_hang_up_keeps_the_journal() {
+    let (folder, path) = event();
+    let size = PtySize {
+        rows: 24,
+        cols: 80,
+        pixel_width: 0,
+        pixel_height: 0,
+    };
+    let pair = native_pty_system().openpty(size).unwrap();
+    let mut command = CommandBuilder::new(env!("CARGO_BIN_EXE_fewest"));
+    command.arg(&path);
+    command.env_clear();
+    command.env("TERM", "xterm");
+    let mut child = pair.slave.spawn_command(command).unwrap();
+    drop(pair.slave);
+    let mut reader = pair.master.try_clone_reader().unwrap();
+    let mut keys = pair.master.take_writer().unwrap();
+    let mut screen = vt100::Parser::new(sized(24), sized(80), 0);
+    // Read here and not on a thread, so that nothing keeps the line open afterwards.
+    let mut read_until = |wanted: &str| {
+        let mut buffer = [0; 65_536];
+        while !screen.screen().contents().contains(wanted) {
+            let count = reader.read(&mut buffer).unwrap();
+            screen.process(&buffer[..count]);
+        }
+    };
+    read_until("proved");
+    keys.write_all(b":fasten eels\r").unwrap();
+    keys.flush().unwrap();
+    read_until("1 edit not saved");
+    drop((reader, keys, pair.master));
+    let until = Instant::now() + PATIENCE;
+    let status = loop {
+        if let Some(status) = child.try_wait().unwrap() {
+            break status;
+        }
+        assert!(Instant::now() < until, "it went on without a terminal");
+        std::thread::sleep(Duration::from_millis(10));
+    };
+    assert_eq!(status.exit_code(), 129, "{status:?}");
+    let journal = std::fs::read(folder.path().join("three-day-event.journal")).unwrap();
+    let journal = fewest::store::journal::Journal::read(&journal).unwrap();
+    assert_eq!((journal.records.len(), journal.rest.as_str()), (1, ""));
+}
+
 #[test]
 fn it_works_in_one_colour_and_on_plain_terminals() {
     let coloured = |terminal: &Terminal| {

@@ -110,7 +110,7 @@ impl Solver {
     /// Starts the thread; `tell` is called on it with every event.
     pub fn start(tell: impl Fn(Event) + Send + 'static) -> Solver {
         let (jobs, waiting) = channel();
-        std::thread::spawn(move || work(&waiting, &tell));
+        std::thread::spawn(move || work(&waiting, &tell, Job::run));
         Solver {
             jobs,
             running: Flag::default(),
@@ -132,7 +132,15 @@ impl Drop for Solver {
     }
 }
 
-fn work(waiting: &Receiver<(Job, Flag)>, tell: &dyn Fn(Event)) {
+/// How a job is done.
+type Run = fn(
+    Job,
+    Budget,
+    &(dyn Stopper + Sync),
+    &mut dyn FnMut(&Arc<Settled>),
+) -> Result<Arc<Settled>, String>;
+
+fn work(waiting: &Receiver<(Job, Flag)>, tell: &dyn Fn(Event), run: Run) {
     while let Ok(mut next) = waiting.recv() {
         // Only the newest matters.
         while let Ok(newer) = waiting.try_recv() {
@@ -150,7 +158,7 @@ fn work(waiting: &Receiver<(Job, Flag)>, tell: &dyn Fn(Event)) {
             ..Budget::default()
         };
         let result = catch_unwind(AssertUnwindSafe(|| {
-            job.run(budget, &calm, &mut |settled| {
+            run(job, budget, &calm, &mut |settled| {
                 calm.improved
                     .store(calm.began.elapsed().as_millis() as u64, Ordering::Relaxed);
                 tell(Event::Settled(Arc::clone(settled)));
@@ -163,5 +171,61 @@ fn work(waiting: &Receiver<(Job, Flag)>, tell: &dyn Fn(Event)) {
                 "the search broke; the next edit starts it again".into(),
             )),
         }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::clock::{Instant as Moment, Span};
+    use crate::timetable::{Request, Settings};
+
+    fn job(generation: u64) -> Job {
+        let request = Request::plain("a", Span::lasting(Moment(0), 60));
+        Job {
+            generation,
+            timetable: Timetable::new(
+                Settings::titled("t"),
+                Vec::new(),
+                Vec::new(),
+                Vec::new(),
+                vec![request],
+            ),
+            reference: None,
+            begun: Arc::default(),
+        }
+    }
+
+    #[test]
+    fn a_search_that_breaks_is_said_and_the_next_one_works() {
+        let (jobs, waiting) = channel();
+        let (tell, told) = channel();
+        let thread = std::thread::spawn(move || {
+            let tell = move |event| tell.send(event).unwrap();
+            work(&waiting, &tell, |job, budget, stop, found| {
+                assert!(job.generation != 1, "broken on purpose");
+                job.run(budget, stop, found)
+            });
+        });
+        jobs.send((job(1), Flag::default())).unwrap();
+        assert!(matches!(told.recv().unwrap(), Event::Fault(_)));
+        jobs.send((job(2), Flag::default())).unwrap();
+        assert!(
+            matches!(told.recv().unwrap(), Event::Settled(settled) if settled.generation() == 2)
+        );
+        assert!(matches!(told.recv().unwrap(), Event::Rested(2)));
+        drop(jobs);
+        thread.join().unwrap();
+    }
+
+    #[test]
+    fn a_newer_job_supersedes_a_running_one() {
+        let (tell, told) = channel();
+        let mut solver = Solver::start(move |event| tell.send(event).unwrap());
+        for generation in 1..=50 {
+            solver.submit(job(generation));
+        }
+        let last = told.iter().find(|event| matches!(event, Event::Rested(50)));
+        assert!(last.is_some());
     }
 }
