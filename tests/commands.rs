@@ -85,7 +85,7 @@ fn the_exit_code_says_what_is_known() {
     let output = fewest(&["count", &nobody]);
     assert!(
         err(&output).contains(
-            "nobody.toml:11: a has no possible crew: none of 2 crews can take it: 2 lack licence"
+            "nobody.toml:11: a has no possible crew: none of 2 crews can take it: north and south without licence"
         ),
         "{}",
         err(&output)

@@ -288,7 +288,7 @@ fn requests_and_resources_are_added_set_and_dropped() {
         ),
         (
             "drop old",
-            "[[request]]\nid = \"old\"\nstart = 2026-12-30T10:00:00\nlength = \"1h\"\n",
+            "\n[[request]]\nid = \"old\"\nstart = 2026-12-30T10:00:00\nlength = \"1h\"\n",
             "",
         ),
     ] {

@@ -43,6 +43,8 @@ struct Inside {
     calls: usize,
     fault: Option<(usize, Fault)>,
     off: bool,
+    /// A file that may be neither read nor renamed.
+    locked_up: Option<PathBuf>,
 }
 
 /// Files in memory that count calls and fail at one of them.
@@ -170,6 +172,9 @@ impl Out for FaultyOut {
 impl Files for Faulty {
     fn read(&self, path: &Path, _most: u64) -> io::Result<Vec<u8>> {
         let inside = self.0.lock().unwrap();
+        if inside.locked_up.as_deref() == Some(path) {
+            return Err(io::Error::from(io::ErrorKind::PermissionDenied));
+        }
         let file = inside
             .files
             .get(path)
@@ -206,6 +211,9 @@ impl Files for Faulty {
             return Err(io::Error::from_raw_os_error(5));
         }
         let mut inside = self.0.lock().unwrap();
+        if inside.locked_up.as_deref() == Some(from) {
+            return Err(io::Error::from(io::ErrorKind::PermissionDenied));
+        }
         let file = inside
             .files
             .remove(from)
@@ -224,6 +232,15 @@ impl Files for Faulty {
 
     fn exists(&self, path: &Path) -> bool {
         self.0.lock().unwrap().files.contains_key(path)
+    }
+
+    fn length(&self, path: &Path) -> io::Result<u64> {
+        let inside = self.0.lock().unwrap();
+        let file = inside
+            .files
+            .get(path)
+            .ok_or_else(|| io::Error::from(io::ErrorKind::NotFound))?;
+        Ok(file.now.len() as u64)
     }
 }
 
@@ -466,24 +483,231 @@ fn replaying_gives_the_desk_as_it_was() {
 }
 
 #[test]
-fn a_journal_of_another_version_is_kept_apart() {
+fn a_journal_of_another_version_is_offered_on_this_one() {
+    let folder = tempfile::tempdir().unwrap();
+    let path = folder.path().join("safe.toml");
+    let files = Faulty::with(&path, TIMETABLE.as_bytes());
+    {
+        let mut session = Session::open(&path, &files);
+        session.edit("fasten a");
+        session.edit("pin b on south");
+    }
+    let theirs = TIMETABLE.replace("id = \"a\"", "id = \"aa\"");
+    files.replace(&path, theirs.as_bytes()).unwrap();
+    let (mut desk, _) = Desk::open_to_edit(&path, "test", Arc::new(files.clone())).unwrap();
+    let leftover = desk.leftover().unwrap();
+    assert!(leftover.foreign && leftover.edits == 2);
+    let (taken, rest) = desk.take_in_leftover();
+    assert_eq!(taken, 1, "the one that fits");
+    assert!(rest.contains("fasten a"), "{rest}");
+    assert!(desk.document().text().contains("pin = \"south\""));
+    // The journal as it was is kept, and a new one starts with what was taken in.
+    let kept = files
+        .read(&path.with_extension("journal.kept-1"), u64::MAX)
+        .unwrap();
+    assert_eq!(Journal::read(&kept).unwrap().records.len(), 2);
+    let mut writer = desk.journal_writer();
+    for record in desk.take_records() {
+        writer.add(&record).unwrap();
+    }
+    let text = desk.document().text().to_string();
+    drop(desk);
+    assert_eq!(Session::open(&path, &files).now, text);
+}
+
+/// What was taken back before a save and done again after it, what was taken back from behind
+/// a save, and edits on top of either: reopening gives what was on the screen.
+#[test]
+fn undo_and_redo_around_saves_are_replayed() {
+    for script in [
+        &["withdraw b", "undo", "SAVE", "redo", "fasten a"][..],
+        &["withdraw b", "undo", "SAVE", "redo"],
+        &["withdraw b", "SAVE", "undo"],
+        &[
+            "withdraw b",
+            "fasten a",
+            "SAVE",
+            "undo",
+            "undo",
+            "redo",
+            "pin a on north",
+        ],
+        &[
+            "withdraw b",
+            "fasten a",
+            "undo",
+            "SAVE",
+            "undo",
+            "redo",
+            "redo",
+            "undo",
+        ],
+        &[
+            "fasten a",
+            "SAVE",
+            "undo",
+            "pin a on north",
+            "undo",
+            "redo",
+            "SAVE",
+            "undo",
+        ],
+        &[
+            "fasten a",
+            "undo",
+            "withdraw b",
+            "SAVE",
+            "undo",
+            "SAVE",
+            "redo",
+            "undo",
+        ],
+    ] {
+        let folder = tempfile::tempdir().unwrap();
+        let path = folder.path().join("safe.toml");
+        let files = Faulty::with(&path, TIMETABLE.as_bytes());
+        let now = {
+            let mut session = Session::open(&path, &files);
+            for line in script {
+                if *line == "SAVE" {
+                    assert!(session.save())
+                } else {
+                    session.edit(line)
+                }
+            }
+            session.desk.document().text().to_string()
+        };
+        let again = Session::open(&path, &files.after_the_end(true));
+        assert_eq!(again.desk.document().text(), now, "{script:?}");
+    }
+}
+
+#[test]
+fn a_journal_that_cannot_be_read_is_never_touched() {
     let folder = tempfile::tempdir().unwrap();
     let path = folder.path().join("safe.toml");
     let files = Faulty::with(&path, TIMETABLE.as_bytes());
     Session::open(&path, &files).edit("fasten a");
+    let journal = files.read(&journal_path(&path), u64::MAX).unwrap();
+    files.0.lock().unwrap().locked_up = Some(journal_path(&path));
+    {
+        let mut session = Session::open(&path, &files);
+        session.edit("withdraw b");
+        assert_eq!(session.safe.len(), 1, "nothing is shown as safe");
+        assert!(
+            session
+                .desk
+                .unsafe_because()
+                .unwrap()
+                .contains("cannot be read")
+        );
+        session.desk.close_journal();
+    }
+    files.0.lock().unwrap().locked_up = None;
+    assert_eq!(files.read(&journal_path(&path), u64::MAX).unwrap(), journal);
+}
+
+#[test]
+fn a_journal_that_is_overwritten_or_removed_is_written_anew() {
+    let folder = tempfile::tempdir().unwrap();
+    let path = folder.path().join("safe.toml");
+    let files = Faulty::with(&path, TIMETABLE.as_bytes());
+    let mut session = Session::open(&path, &files);
+    session.edit("fasten a");
+    let nonsense = File {
+        kept: b"nonsense\n".to_vec(),
+        now: b"nonsense\n".to_vec(),
+    };
     files
-        .replace(&path, format!("{TIMETABLE}# theirs\n").as_bytes())
-        .unwrap();
-    let (desk, notes) = Desk::open_to_edit(&path, "test", Arc::new(files.clone())).unwrap();
-    assert!(desk.leftover().is_none());
-    assert!(notes[0].contains("kept in"), "{notes:?}");
-    let kept = files
-        .read(&path.with_extension("journal.kept-1"), u64::MAX)
-        .unwrap();
-    assert_eq!(
-        Journal::read(&kept).unwrap().records,
-        [Record::Step(vec!["fasten a".into()])]
+        .0
+        .lock()
+        .unwrap()
+        .files
+        .insert(journal_path(&path), nonsense);
+    session.edit("withdraw b");
+    files.remove(&journal_path(&path)).unwrap();
+    session.edit("pin a on north");
+    let now = session.now.clone();
+    assert_eq!(session.safe.last(), Some(&now));
+    drop(session);
+    assert_eq!(Session::open(&path, &files.after_the_end(true)).now, now);
+}
+
+#[test]
+fn a_lock_that_vanishes_is_taken_again_and_one_that_is_left_is_taken_over() {
+    let folder = tempfile::tempdir().unwrap();
+    let path = folder.path().join("safe.toml");
+    let files = Faulty::with(&path, TIMETABLE.as_bytes());
+    let open = || {
+        Desk::open_to_edit(&path, "test", Arc::new(files.clone()))
+            .unwrap()
+            .0
+    };
+    let mut one = open();
+    std::fs::remove_file(fewest::store::lock_path(&path)).unwrap();
+    assert_eq!(one.look_at_lock(), None);
+    let mut other = open();
+    assert!(
+        matches!(other.access(), Access::Theirs(_)),
+        "it was taken again"
     );
+    assert_eq!(other.look_at_lock(), None);
+    drop(one);
+    assert!(other.look_at_lock().unwrap().contains("may write now"));
+    assert!(matches!(other.access(), Access::Ours(_)));
+    // Removed, and somebody else was quicker.
+    std::fs::remove_file(fewest::store::lock_path(&path)).unwrap();
+    let third = open();
+    assert!(matches!(third.access(), Access::Ours(_)));
+    assert!(other.look_at_lock().unwrap().contains("only reads now"));
+    drop(other);
+    assert!(
+        fewest::store::lock_path(&path).exists(),
+        "not the loser's to remove"
+    );
+}
+
+#[test]
+fn apply_beside_unsaved_edits_loses_neither() {
+    let folder = folder_with(&["sample-timetables/three-day-event.toml"]);
+    let path = folder.path().join("three-day-event.toml");
+    let name = path.to_str().unwrap();
+    let leave_unsaved = |line: &str| {
+        let (mut desk, _) =
+            Desk::open_to_edit(&path, "test", Arc::new(fewest::store::RealFiles)).unwrap();
+        let mut writer = desk.journal_writer();
+        let edit = desk.parse(line, NOW).unwrap();
+        desk.make(vec![edit]).unwrap();
+        for record in desk.take_records() {
+            writer.add(&record).unwrap();
+        }
+    };
+    let script = folder.path().join("script");
+    std::fs::write(&script, "fasten eels\n").unwrap();
+    leave_unsaved("withdraw tunnel");
+    let output = fewest(&["apply", name, script.to_str().unwrap()]);
+    assert_eq!(output.status.code(), Some(0));
+    assert!(
+        err(&output).contains("1 edit not saved in a journal beside the file were left out"),
+        "{}",
+        err(&output)
+    );
+    let (mut desk, _) =
+        Desk::open_to_edit(&path, "test", Arc::new(fewest::store::RealFiles)).unwrap();
+    assert!(desk.leftover().unwrap().foreign);
+    desk.take_in_leftover();
+    assert!(
+        desk.timetable().request("tunnel").unwrap().withdrawn
+            && desk.timetable().request("eels").unwrap().fastened
+    );
+    drop(desk);
+    let _ = std::fs::remove_file(journal_path(&path));
+    leave_unsaved("withdraw mud");
+    std::fs::write(&script, "loosen eels\n").unwrap();
+    let output = fewest(&["apply", name, script.to_str().unwrap(), "--unsaved"]);
+    assert_eq!(output.status.code(), Some(0), "{}", err(&output));
+    let text = std::fs::read_to_string(&path).unwrap();
+    assert!(text.contains("withdrawn = true") && !journal_path(&path).exists());
 }
 
 #[test]
@@ -538,26 +762,26 @@ fn someone_elses_version_is_never_overwritten_unasked() {
             }
             "theirs" => {
                 let said = session.desk.take_theirs(false).unwrap();
-                assert!(said.contains("safe.mine.txt"), "{said}");
+                assert!(said.contains("safe.mine-1.toml"), "{said}");
                 assert_eq!(
                     files
-                        .read(&path.with_extension("mine.txt"), 1 << 20)
+                        .read(&path.with_extension("mine-1.toml"), 1 << 20)
                         .unwrap(),
-                    b"fasten a\npin b on south\n"
+                    session.now.as_bytes()
                 );
             }
             _ => {
                 let said = session.desk.take_theirs(true).unwrap();
-                assert!(said.contains("1 edit did not fit"), "{said}");
+                assert!(said.contains("1 edit does not fit"), "{said}");
                 assert!(
                     session.desk.document().text().contains("09:45")
                         && session.desk.document().text().contains("pin = \"south\"")
                 );
                 assert_eq!(
                     files
-                        .read(&path.with_extension("mine.txt"), 1 << 20)
+                        .read(&path.with_extension("mine-1.toml"), 1 << 20)
                         .unwrap(),
-                    b"fasten a\n"
+                    session.now.as_bytes()
                 );
             }
         }
@@ -566,6 +790,37 @@ fn someone_elses_version_is_never_overwritten_unasked() {
             !mine_wins,
             "{what}"
         );
+    }
+}
+
+/// What was taken back from behind a save cannot be put on top of another version: it is said
+/// and kept, never called done.
+#[test]
+fn an_undo_behind_a_save_is_kept_when_theirs_is_taken() {
+    for both in [false, true] {
+        let folder = tempfile::tempdir().unwrap();
+        let path = folder.path().join("safe.toml");
+        let files = Faulty::with(&path, TIMETABLE.as_bytes());
+        let mut session = Session::open(&path, &files);
+        session.edit("withdraw b");
+        assert!(session.save());
+        session.edit("undo");
+        let ours = session.now.clone();
+        let theirs = [files.read(&path, 1 << 20).unwrap(), b"# theirs\n".to_vec()].concat();
+        files.replace(&path, &theirs).unwrap();
+        session.desk.look_at_disk();
+        let said = session.desk.take_theirs(both).unwrap();
+        assert!(
+            said.contains("yours") && said.contains("safe.mine-1.toml"),
+            "{said}"
+        );
+        assert_eq!(
+            files
+                .read(&path.with_extension("mine-1.toml"), 1 << 20)
+                .unwrap(),
+            ours.as_bytes()
+        );
+        assert_eq!(session.desk.document().bytes(), theirs);
     }
 }
 

@@ -40,21 +40,28 @@ pub(super) fn apply(file: &Path, script: &Path, search: Search) -> Outcome {
         return Outcome::bad(format!("refused: {who} has it open; nothing was changed"));
     }
     let mut mentioned: String = said.iter().map(|line| format!("{line}\n")).collect();
-    let taken_in = search.unsaved && desk.leftover().is_some();
-    if taken_in {
-        let (taken, rest) = desk.take_in_leftover();
-        mentioned.push_str(&format!(
-            "{} taken in\n",
-            words::count_words(taken, "unsaved edit")
-        ));
-        if !rest.is_empty() {
-            mentioned.push_str("what could not be taken in is kept beside the file\n");
+    let mut taken_in = false;
+    if let Some(leftover) = desk.leftover() {
+        let count = words::count_words(leftover.edits, "edit");
+        if search.unsaved && leftover.foreign {
+            return Outcome::bad(format!(
+                "{count} in a journal beside the file are for another version of it; open it on the screen; nothing was changed"
+            ));
         }
-    } else if let Some(leftover) = desk.leftover() {
-        let count = words::count_words(leftover.records, "edit");
-        mentioned.push_str(&format!(
-            "{count} not saved in a journal beside the file; --unsaved takes them in\n"
-        ));
+        if search.unsaved {
+            let (taken, all) = desk.take_in_unsaved();
+            if taken < all {
+                return Outcome::bad(
+                    "not all unsaved edits can be taken in; open it on the screen; nothing was changed",
+                );
+            }
+            taken_in = true;
+            mentioned.push_str(&format!("{count} taken in that were not saved\n"));
+        } else {
+            mentioned.push_str(&format!(
+                "{count} not saved in a journal beside the file were left out; the screen will offer them on the new version\n"
+            ));
+        }
     }
     let now = Instant(chrono::Utc::now().timestamp());
     let mut made = 0;
@@ -96,6 +103,7 @@ pub(super) fn apply(file: &Path, script: &Path, search: Search) -> Outcome {
         return Outcome::bad(trouble);
     }
     if taken_in {
+        desk.forget_leftover();
         desk.close_journal();
     }
     let resources = desk.timetable().resources().all.len();

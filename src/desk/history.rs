@@ -62,6 +62,18 @@ impl History {
         (self.saved, self.ever) = (Some(self.at), true);
     }
 
+    /// How many steps there are, those taken back included.
+    pub(super) fn len(&self) -> usize {
+        self.steps.len()
+    }
+
+    /// Whether what is not saved is steps made since, each of them edits: nothing that was
+    /// taken back from behind the save.
+    pub(super) fn is_plain(&self) -> bool {
+        self.saved_at().is_some_and(|saved| saved <= self.at)
+            && self.since_saved().all(|step| !step.edits.is_empty())
+    }
+
     /// Where in the line we are.
     pub(super) fn position(&self) -> usize {
         self.at

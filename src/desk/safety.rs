@@ -7,7 +7,7 @@ use crate::document;
 use crate::edit::{self, Edit};
 use crate::lookup::FastSet;
 use crate::store::journal::{self, Journal, Record, Writer, journal_path};
-use crate::store::{Files, Lock, Locking, Written, lock};
+use crate::store::{self, Files, Lock, Locking, Written, lock};
 use crate::text::clean;
 use crate::words::count_words;
 use std::collections::VecDeque;
@@ -41,8 +41,10 @@ pub enum Disk {
 /// Edits that a session before this one made and did not save.
 #[derive(Clone, Debug)]
 pub struct Leftover {
-    /// How many things were done.
-    pub records: usize,
+    /// How many edits that makes.
+    pub edits: usize,
+    /// Whether they were made on another version of the file.
+    pub foreign: bool,
     journal: Journal,
     text: String,
 }
@@ -56,13 +58,16 @@ pub(super) struct Safety {
     failed: Option<String>,
     /// Records that are not known to be safe, and whom they concern.
     waiting: VecDeque<(u64, Vec<Arc<str>>)>,
-    /// The history's position at the last save (or opening).
+    /// Steps of the history from here on were made since the last save (or opening): a replay
+    /// knows them.
     epoch: usize,
     /// Whether undo has gone behind that since.
     crossed: bool,
     leftover: Option<Leftover>,
     /// A journal to go on with.
     resume: Option<(Journal, String)>,
+    /// A journal that could not be read and must not be touched; why.
+    blocked: Option<String>,
     pub(super) disk: Disk,
 }
 
@@ -78,6 +83,7 @@ impl Default for Safety {
             crossed: false,
             leftover: None,
             resume: None,
+            blocked: None,
             disk: Disk::Same,
         }
     }
@@ -95,6 +101,24 @@ pub fn whoami() -> String {
         host.trim(),
         std::process::id()
     )
+}
+
+/// How many edits a list of records comes to.
+fn net(records: &[Record]) -> usize {
+    let mut count = 0usize;
+    for record in records {
+        match record {
+            Record::Step(_) | Record::Redo | Record::Text(_) => count += 1,
+            Record::Undo => count = count.saturating_sub(1),
+            Record::Saved(_) => {}
+        }
+    }
+    // Done and taken back is still something that was done.
+    count.max(usize::from(
+        records
+            .iter()
+            .any(|record| !matches!(record, Record::Saved(_))),
+    ))
 }
 
 /// The first name of the form `NAME.journal.kept-N` that is free.
@@ -127,8 +151,12 @@ impl Desk {
         let mut notes = Vec::new();
         match &desk.access {
             Access::Theirs(_) => return Ok((desk, notes)),
+            Access::Ours(_) => {
+                store::remove_leftovers(path);
+                store::remove_leftovers(&document::plan_path(path));
+            }
             Access::Nowhere(error) => desk.safety.failed = Some(error.clone()),
-            Access::Ours(_) | Access::Unasked => {}
+            Access::Unasked => {}
         }
         desk.find_leftover(&mut notes);
         Ok((desk, notes))
@@ -142,34 +170,51 @@ impl Desk {
         let bytes = match self.files.read(&path, journal::MOST_BYTES) {
             Ok(bytes) => bytes,
             Err(error) => {
-                notes.push(format!(
-                    "the journal of an earlier session cannot be read: {error}"
-                ));
+                // Not read, so not ours to write over or to remove.
+                match self.set_aside() {
+                    Ok(name) => notes.push(format!(
+                        "an earlier journal cannot be read ({error}); it is kept in {name}"
+                    )),
+                    Err(_) => {
+                        let why = format!("an earlier journal cannot be read ({error})");
+                        self.safety.failed = Some(why.clone());
+                        self.safety.blocked = Some(why);
+                    }
+                }
                 return;
             }
         };
-        let read = Journal::read(&bytes);
-        let since = read
-            .as_ref()
-            .and_then(|journal| journal.since(&self.on_disk));
-        match (&read, since.map(<[Record]>::len)) {
-            (Some(journal), Some(0)) if journal.rest.is_empty() => _ = self.files.remove(&path),
-            (Some(journal), Some(records)) if records > 0 => {
+        let Some(journal) = Journal::read(&bytes) else {
+            return self.keep_apart("a journal that cannot be read", notes);
+        };
+        let (since, foreign) = match journal.since(&self.on_disk) {
+            Some(since) => (since, false),
+            None => (journal.unsaved(), true),
+        };
+        let edits = net(since);
+        match (edits, journal.rest.is_empty()) {
+            (0, true) if !foreign => _ = self.files.remove(&path),
+            (0, _) => self.keep_apart("a journal of which no edit can be taken in", notes),
+            _ => {
                 let text = String::from_utf8_lossy(&bytes).into_owned();
                 self.safety.leftover = Some(Leftover {
-                    records,
-                    journal: journal.clone(),
+                    edits,
+                    foreign,
+                    journal,
                     text,
                 });
             }
-            _ => match self.set_aside() {
-                Ok(name) => notes.push(format!(
-                    "a journal that does not belong to this file as it is now was kept in {name}"
-                )),
-                Err(error) => notes.push(format!(
-                    "a journal that does not belong to this file could not be set aside: {error}"
-                )),
-            },
+        }
+    }
+
+    fn keep_apart(&mut self, what: &str, notes: &mut Vec<String>) {
+        match self.set_aside() {
+            Ok(name) => notes.push(format!("{what} is kept in {name}")),
+            Err(error) => {
+                let why = format!("{what} is in the way and cannot be set aside ({error})");
+                self.safety.failed = Some(why.clone());
+                self.safety.blocked = Some(why);
+            }
         }
     }
 
@@ -196,14 +241,13 @@ impl Desk {
             .files
             .read(&journal_path(&self.path), journal::MOST_BYTES)
             .unwrap_or_default();
-        let journal = Journal::read(&bytes);
-        journal
-            .and_then(|journal| journal.since(&self.on_disk).map(<[Record]>::len))
-            .unwrap_or(0)
+        Journal::read(&bytes).map_or(0, |journal| {
+            net(journal.since(&self.on_disk).unwrap_or(journal.unsaved()))
+        })
     }
 
     /// Takes in what a journal beside the file has that is not in it, touching nothing on the
-    /// disk; says how much, and how much there was.
+    /// disk; says how many records, and how many there were.
     pub fn take_in_unsaved(&mut self) -> (usize, usize) {
         let bytes = self
             .files
@@ -212,12 +256,12 @@ impl Desk {
         let Some(journal) = Journal::read(&bytes) else {
             return (0, 0);
         };
-        let records = journal.since(&self.on_disk).unwrap_or_default();
+        let records = journal.since(&self.on_disk).unwrap_or(journal.unsaved());
         let taken = records
             .iter()
             .take_while(|record| self.replay(record).is_ok())
             .count();
-        (taken, records.len())
+        (taken, records.len() + usize::from(!journal.rest.is_empty()))
     }
 
     /// Takes in the edits of an earlier session; says how many, and the text of what could
@@ -226,37 +270,55 @@ impl Desk {
         let Some(leftover) = self.safety.leftover.take() else {
             return (0, String::new());
         };
-        let before = leftover.journal.before(&self.on_disk);
-        let records = &leftover.journal.records[before..];
-        let mut taken = 0;
-        for record in records {
-            if self.replay(record).is_err() {
-                break;
+        let records = match leftover.foreign {
+            true => leftover.journal.unsaved(),
+            false => leftover.journal.since(&self.on_disk).unwrap_or_default(),
+        };
+        let (mut taken, mut rest) = (Vec::new(), String::new());
+        for (at, record) in records.iter().enumerate() {
+            match self.replay(record) {
+                Ok(()) => taken.push(record.clone()),
+                // On another version one that does not fit says nothing about the next.
+                Err(_) if leftover.foreign => rest.push_str(&format!("{record:?}\n")),
+                Err(_) => {
+                    records[at..]
+                        .iter()
+                        .for_each(|record| rest.push_str(&format!("{record:?}\n")));
+                    break;
+                }
             }
-            taken += 1;
         }
+        rest.push_str(&leftover.journal.rest);
         // What is replayed is in the journal already.
+        self.forget_waiting();
+        let edits = net(&taken);
+        if rest.is_empty() && !leftover.foreign {
+            self.safety.resume = Some((leftover.journal, leftover.text));
+            return (edits, rest);
+        }
+        // The journal as it was is kept; what was taken in starts a new one.
+        let kept = kept_path(&*self.files, &self.path);
+        if let Err(error) = self.files.replace(&kept, leftover.text.as_bytes()) {
+            let why = format!("the earlier journal cannot be kept ({error})");
+            self.safety.failed = Some(why.clone());
+            self.safety.blocked = Some(why);
+            return (edits, rest);
+        }
+        let _ = self.files.remove(&journal_path(&self.path));
+        self.safety.issued = taken.len() as u64;
+        self.safety.outbox = taken;
+        (edits, rest)
+    }
+
+    fn forget_waiting(&mut self) {
         self.safety.outbox.clear();
         self.safety.waiting.clear();
         (self.safety.issued, self.safety.safe) = (0, 0);
-        let mut rest = String::new();
-        for record in &records[taken..] {
-            rest.push_str(&format!("{record:?}\n"));
-        }
-        rest.push_str(&leftover.journal.rest);
-        if taken < records.len() || !leftover.journal.rest.is_empty() {
-            // The journal as it was is kept; what was taken in starts a new one.
-            let kept = kept_path(&*self.files, &self.path);
-            let _ = self.files.replace(&kept, leftover.text.as_bytes());
-        }
-        if taken == records.len() {
-            self.safety.resume = Some((leftover.journal, leftover.text));
-        } else {
-            let _ = self.files.remove(&journal_path(&self.path));
-            self.safety.outbox = records[..taken].to_vec();
-            self.safety.issued = taken as u64;
-        }
-        (taken, rest)
+    }
+
+    /// The edits of an earlier session have been taken in and saved otherwise.
+    pub fn forget_leftover(&mut self) {
+        self.safety.leftover = None;
     }
 
     /// Leaves the edits of an earlier session alone, in a file of their own; says which.
@@ -326,6 +388,10 @@ impl Desk {
             .iter()
             .filter_map(|edit| edit.what.subject().cloned())
             .collect();
+        self.safety.epoch = self
+            .safety
+            .epoch
+            .min(self.history.position().saturating_sub(1));
         self.note(Record::Step(lines), concerned);
     }
 
@@ -426,6 +492,9 @@ impl Desk {
     pub fn journal_writer(&mut self) -> Writer {
         let path = journal_path(&self.path);
         let files = Arc::clone(&self.files);
+        if let Some(why) = &self.safety.blocked {
+            return Writer::blocked(files, path, why.clone());
+        }
         match self.safety.resume.take() {
             Some((journal, text)) => Writer::resume(files, path, &journal, &text),
             None => Writer::new(files, path, self.on_disk.clone()),
@@ -434,8 +503,10 @@ impl Desk {
 
     /// A save has happened: what undo and redo may refer to begins anew.
     pub(super) fn new_epoch(&mut self) {
-        self.safety.epoch = self.history.position();
+        self.safety.epoch = self.history.len();
         self.safety.crossed = false;
+        // What was waiting is in the file now.
+        self.safety.waiting.clear();
         self.safety.disk = Disk::Same;
     }
 
@@ -443,6 +514,7 @@ impl Desk {
     pub fn close_journal(&self) {
         if matches!(self.access, Access::Ours(_) | Access::Nowhere(_))
             && self.safety.leftover.is_none()
+            && self.safety.blocked.is_none()
         {
             let _ = self.files.remove(&journal_path(&self.path));
         }
@@ -485,63 +557,100 @@ impl Desk {
         self.warnings = fresh.warnings;
         self.generation = generation;
         self.history = super::history::History::default();
+        self.forget_waiting();
         self.new_epoch();
     }
 
-    /// The file was changed underneath: theirs is taken over, ours is kept as a script; or,
-    /// with `both`, ours is made once more on theirs. Says in words what came of it.
+    /// Looks whether the lock is still what it was: taken anew when it has vanished, given up
+    /// when another has it now, and taken over by a reader when the writer has gone. Says in
+    /// words what is new.
+    pub fn look_at_lock(&mut self) -> Option<String> {
+        let reading = match &self.access {
+            Access::Ours(lock) if lock.is_held() => return None,
+            Access::Ours(_) => false,
+            Access::Theirs(_) => true,
+            Access::Unasked | Access::Nowhere(_) => return None,
+        };
+        let locking = lock(&self.path, &whoami()).ok()?;
+        match (locking, reading) {
+            (Locking::Ours(lock), false) => {
+                self.access = Access::Ours(lock);
+                None
+            }
+            (Locking::Ours(lock), true) if !self.files.exists(&journal_path(&self.path)) => {
+                self.access = Access::Ours(lock);
+                Some("the other desk has gone; this one may write now".into())
+            }
+            (Locking::Ours(_), true) => Some(
+                "the other desk has gone and left edits; leave and open again to take them in"
+                    .into(),
+            ),
+            (Locking::Theirs(who), false) => {
+                let said = format!(
+                    "the lock was taken by {who}; this desk only reads now; keep yours with :save OTHER.toml"
+                );
+                self.access = Access::Theirs(who);
+                Some(said)
+            }
+            (Locking::Theirs(_), true) => None,
+        }
+    }
+
+    /// The file was changed underneath: theirs is taken over, ours is kept as a file of its
+    /// own; or, with `both`, ours is made once more on theirs. Says in words what came of it.
     ///
     /// # Errors
     /// [`Trouble`] when theirs cannot be read, or ours not kept.
     pub fn take_theirs(&mut self, both: bool) -> Result<String, Trouble> {
         let lines: Vec<Vec<String>> = self.unsaved_steps();
+        let plain = self.history.is_plain();
+        let ours = self.document.bytes();
+        let any = self.document.text() != self.saved_text;
         let fresh = Desk::open_through(&self.path, Arc::clone(&self.files))?;
-        let script = self.path.with_extension("mine.txt");
-        let count = lines.len();
-        if !both && count > 0 {
-            let earlier = self
-                .files
-                .read(&script, journal::MOST_BYTES)
-                .unwrap_or_default();
-            let text = lines.concat().join("\n") + "\n";
-            let bytes = [earlier, text.into_bytes()].concat();
+        let name = |number: u32| self.path.with_extension(format!("mine-{number}.toml"));
+        let kept = (1..)
+            .map(name)
+            .find(|path| !self.files.exists(path))
+            .unwrap_or_else(|| name(0));
+        if any {
+            // Whatever comes of it, our version is there as a whole.
             self.files
-                .replace(&script, &bytes)
-                .map_err(|error| Trouble::io(&script, error))?;
+                .replace(&kept, &ours)
+                .map_err(|error| Trouble::io(&kept, error))?;
         }
         let _ = self.files.remove(&journal_path(&self.path));
         self.adopt(fresh);
-        if !both {
-            return Ok(if count == 0 {
-                "their version taken over".into()
-            } else {
-                format!(
-                    "their version taken over; yours is kept in {}",
-                    clean(&script.display().to_string())
-                )
-            });
-        }
-        let mut refused = Vec::new();
-        for step in lines {
-            if self.replay(&Record::Step(step.clone())).is_err() {
-                refused.extend(step);
+        let shown = clean(&kept.display().to_string()).into_owned();
+        match (any, both) {
+            (false, _) => return Ok("their version taken over".into()),
+            (true, false) => {
+                return Ok(format!(
+                    "their version taken over; yours is kept in {shown}"
+                ));
             }
+            (true, true) if !plain => {
+                return Ok(format!(
+                    "their version; yours cannot be put on top of it and is kept in {shown}"
+                ));
+            }
+            (true, true) => {}
         }
-        if refused.is_empty() {
+        let count = lines.len();
+        let refused = lines
+            .into_iter()
+            .filter(|step| self.replay(&Record::Step(step.clone())).is_err())
+            .count();
+        if refused > 0 {
+            let does = if refused == 1 { "does" } else { "do" };
             return Ok(format!(
-                "their version, with your {} on top",
-                count_words(count, "edit")
+                "their version with yours on top, but {} {does} not fit; yours is kept in {shown}",
+                count_words(refused, "edit")
             ));
         }
-        let text = refused.join("\n") + "\n";
-        self.files
-            .replace(&script, text.as_bytes())
-            .map_err(|error| Trouble::io(&script, error))?;
+        let _ = self.files.remove(&kept);
         Ok(format!(
-            "their version with yours on top, but {} did not fit and {} kept in {}",
-            count_words(refused.len(), "edit"),
-            if refused.len() == 1 { "is" } else { "are" },
-            clean(&script.display().to_string())
+            "their version, with your {} on top",
+            count_words(count, "edit")
         ))
     }
 

@@ -182,7 +182,11 @@ impl Document {
             let blank = ["\r\n", "\n"]
                 .into_iter()
                 .find(|blank| text[line_end..].starts_with(blank));
-            line_start..line_end + blank.map_or(0, str::len)
+            // At the end of the file the blank line is the one before.
+            let before = ["\r\n", "\n"].into_iter().find(|blank| {
+                line_end == text.len() && text[..line_start].ends_with(&blank.repeat(2))
+            });
+            line_start - before.map_or(0, str::len)..line_end + blank.map_or(0, str::len)
         };
         let inside = place.start - range.start..place.end - range.start;
         let patch = Patch {

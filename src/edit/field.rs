@@ -187,7 +187,10 @@ fn read_list(text: &str) -> Option<Vec<Arc<str>>> {
                 escaped = *c == '\\' && !escaped;
                 ends
             })?;
-            (unquote(&rest[..=end.0])?, &rest[end.0 + 1..])
+            (
+                unquote(&rest[..=end.0]).filter(|item| !item.trim().is_empty())?,
+                &rest[end.0 + 1..],
+            )
         } else {
             let end = rest.find(',').unwrap_or(rest.len());
             let (item, after) = rest.split_at(end);

@@ -321,6 +321,12 @@ impl<'a> Words<'a> {
                 .all
                 .iter()
                 .map(|resource| resource.id.as_ref());
+            if timetable.kinds.iter().any(|kind| &*kind.id == word.text) {
+                return word.misread(format!(
+                    "{} is a kind; its table is changed in the file",
+                    word.text
+                ));
+            }
             let hint = nearest(word.text, requests.chain(resources)).map_or_else(
                 || "the file lists them".to_string(),
                 |near| format!("did you mean \"{near}\"?"),
@@ -335,6 +341,17 @@ impl<'a> Words<'a> {
     /// A key and its value.
     fn field(&mut self) -> Result<Field, Misread> {
         let key = self.next(&format!("one of: {}", KEYS.join(", ")))?;
+        let instead = match key.text {
+            "start" | "end" => Some("move ID to ..., or set ID length ..."),
+            "pin" => Some("pin ID on ..., or unpin ID"),
+            "fastened" => Some("fasten ID, or loosen ID"),
+            "withdrawn" => Some("withdraw ID, or restore ID"),
+            "closed" => Some("close ID from ... to ..."),
+            _ => None,
+        };
+        if let Some(instead) = instead {
+            return Err(key.misread(format!("\"{}\" has a verb of its own: {instead}", key.text)));
+        }
         if !KEYS.contains(&key.text) {
             let hint = nearest(key.text, KEYS.into_iter()).map_or_else(
                 || format!("known are: {}", KEYS.join(", ")),

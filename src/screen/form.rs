@@ -147,7 +147,29 @@ impl Form {
                     "title \"{}\"",
                     value.replace('\\', "\\\\").replace('"', "\\\"")
                 ),
+                ("weight", "") => "weight 1".into(),
                 (label, "") => format!("{label} none"),
+                // Blanks after commas are how people write lists.
+                ("needs" | "people" | "only" | "never" | "offers", value)
+                    if !value.contains('"') =>
+                {
+                    let items = value
+                        .split(',')
+                        .map(str::trim)
+                        .filter(|item| !item.is_empty());
+                    let quoted = |item: &str| {
+                        if item.contains(' ') {
+                            format!("\"{item}\"")
+                        } else {
+                            item.to_string()
+                        }
+                    };
+                    format!(
+                        "{} {}",
+                        field.label,
+                        items.map(quoted).collect::<Vec<_>>().join(",")
+                    )
+                }
                 (label, value) => format!("{label} {value}"),
             }
         };

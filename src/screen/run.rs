@@ -153,6 +153,11 @@ impl Loop {
                 Wake::Signal(signal) => return Some(128 + signal as u8),
                 Wake::Gone => return Some(GONE),
                 Wake::Msg(Msg::Stirred) => {
+                    if let Some(said) = self.model.desk.look_at_lock() {
+                        self.model.say(said, true);
+                        self.scribe = Some(start_scribe(&mut self.model, &self.wake));
+                        self.dirty = true;
+                    }
                     if !self.model.desk.look_at_disk() {
                         wake = self.woken.try_recv().ok();
                         continue;
@@ -235,7 +240,14 @@ impl Loop {
                     Resolve::Mine => match self.model.desk.keep_mine() {
                         Ok(said) => {
                             let effects = self.save(None, false);
-                            self.model.say(said, false);
+                            if self
+                                .model
+                                .message
+                                .as_ref()
+                                .is_none_or(|message| !message.warning)
+                            {
+                                self.model.say(said, false);
+                            }
                             effects
                         }
                         Err(trouble) => {
@@ -271,7 +283,8 @@ impl Loop {
             }
             Effect::Suspend => {
                 leave();
-                let _ = signal_hook::low_level::emulate_default_handler(SIGTSTP);
+                // Without job control nobody could wake us: then this does nothing.
+                let _ = signal_hook::low_level::raise(SIGTSTP);
                 match enter() {
                     Ok(screen) => self.screen = screen,
                     Err(_) => return Some(GONE),
@@ -490,12 +503,18 @@ fn watch_the_file(path: &std::path::Path, wake: &Sender<Wake>) {
         let there = std::fs::metadata(path).ok()?;
         Some((there.len(), there.modified().ok()))
     };
+    // The lock file is a matter of which one it is.
+    let which = |path: &std::path::Path| {
+        let there = std::fs::metadata(path).ok()?;
+        Some(std::os::unix::fs::MetadataExt::ino(&there))
+    };
+    let lock = crate::store::lock_path(path);
     let (path, wake) = (path.to_path_buf(), wake.clone());
     std::thread::spawn(move || {
-        let mut before = stamp(&path);
+        let mut before = (stamp(&path), which(&lock));
         for round in 1u32.. {
             std::thread::sleep(LOOK_EVERY);
-            let now = stamp(&path);
+            let now = (stamp(&path), which(&lock));
             let stirred = now != before;
             before = now;
             let told = match (stirred, round.is_multiple_of(TICK_EVERY)) {

@@ -327,7 +327,7 @@ fn leaving(model: &mut Model, key: KeyEvent) -> Vec<Effect> {
 
 /// Saves, unless someone else has changed the file: then it asks.
 fn save(model: &mut Model, leave: bool) -> Vec<Effect> {
-    if model.desk.disk() == Disk::Same {
+    if model.desk.disk() != Disk::Changed {
         return vec![Effect::Save { other: None, leave }];
     }
     model.mode = Mode::Changed;

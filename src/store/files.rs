@@ -54,6 +54,11 @@ pub trait Files: Send + Sync + Debug {
     fn remove(&self, path: &Path) -> io::Result<()>;
     /// Whether there is something of that name.
     fn exists(&self, path: &Path) -> bool;
+    /// How many bytes a file has.
+    ///
+    /// # Errors
+    /// Whatever the system says.
+    fn length(&self, path: &Path) -> io::Result<u64>;
 }
 
 /// The real ones.
@@ -110,6 +115,10 @@ impl Files for RealFiles {
 
     fn exists(&self, path: &Path) -> bool {
         path.exists()
+    }
+
+    fn length(&self, path: &Path) -> io::Result<u64> {
+        Ok(fs::metadata(path)?.len())
     }
 }
 

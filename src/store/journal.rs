@@ -171,10 +171,13 @@ impl Journal {
         }
     }
 
-    /// What was done before that: needed to take steps back across the save.
-    pub fn before(&self, on_disk: &str) -> usize {
-        self.since(on_disk)
-            .map_or(0, |since| self.records.len() - since.len())
+    /// What was done after the last save that was announced.
+    pub fn unsaved(&self) -> &[Record] {
+        let saved = self
+            .records
+            .iter()
+            .rposition(|record| matches!(record, Record::Saved(_)));
+        &self.records[saved.map_or(0, |at| at + 1)..]
     }
 }
 
@@ -189,8 +192,10 @@ pub struct Writer {
     /// Whether the last write failed and may have left part of a line.
     torn: bool,
     waiting: String,
-    /// What is in the file, to write it again should it vanish.
+    /// What is in the file, to write it again should it vanish or be overwritten.
     kept: String,
+    /// Why nothing may be written: there is a journal that could not be read.
+    blocked: Option<String>,
 }
 
 impl Writer {
@@ -206,7 +211,15 @@ impl Writer {
             torn: false,
             waiting: String::new(),
             kept: String::new(),
+            blocked: None,
         }
+    }
+
+    /// A writer that never writes: what is there must not be touched.
+    pub fn blocked(files: Arc<dyn Files>, path: PathBuf, why: String) -> Writer {
+        let mut writer = Writer::new(files, path, String::new());
+        writer.blocked = Some(why);
+        writer
     }
 
     /// Goes on with a journal that was read.
@@ -264,12 +277,22 @@ impl Writer {
     }
 
     fn write(&mut self) -> io::Result<()> {
-        if !self.files.exists(&self.path) {
-            // Removed from under us, perhaps with its folder: written anew as a whole.
-            let kept = std::mem::take(&mut self.kept);
-            self.waiting.insert_str(0, &kept);
-            (self.good, self.torn) = (0, false);
+        if let Some(why) = &self.blocked {
+            return Err(io::Error::other(why.clone()));
+        }
+        // What follows the last good line after a failed write is ours and is cut off.
+        let there = if self.files.exists(&self.path) {
+            self.files.length(&self.path)?
+        } else {
+            0
+        };
+        if there != self.good && !(self.torn && there > self.good) {
+            // Removed or overwritten from under us: written anew as a whole.
+            let whole = [self.kept.as_bytes(), self.waiting.as_bytes()].concat();
             self.out = None;
+            self.files.replace(&self.path, &whole)?;
+            self.torn = false;
+            return Ok(());
         }
         let out = match &mut self.out {
             Some(out) => out,

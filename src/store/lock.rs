@@ -16,7 +16,14 @@ pub fn lock_path(timetable: &Path) -> PathBuf {
 pub struct Lock {
     path: PathBuf,
     /// Held open: the lock lives as long as this.
-    _file: File,
+    file: File,
+}
+
+impl Lock {
+    /// Whether the lock file that others would find is still this one.
+    pub fn is_held(&self) -> bool {
+        is_at(&self.file, &self.path)
+    }
 }
 
 /// What came of asking for the lock.
@@ -50,7 +57,7 @@ pub fn lock(timetable: &Path, who: &str) -> io::Result<Locking> {
                 file.set_len(0)?;
                 file.rewind()?;
                 file.write_all(who.as_bytes())?;
-                return Ok(Locking::Ours(Lock { path, _file: file }));
+                return Ok(Locking::Ours(Lock { path, file }));
             }
             Err(TryLockError::WouldBlock) => {
                 let mut said = String::new();
@@ -79,8 +86,11 @@ fn is_at(file: &File, path: &Path) -> bool {
 
 impl Drop for Lock {
     fn drop(&mut self) {
-        // Still locked: nobody can hold the file that goes away.
-        let _ = std::fs::remove_file(&self.path);
+        // Still locked: nobody can hold the file that goes away. Another of the same name is
+        // somebody else's.
+        if self.is_held() {
+            let _ = std::fs::remove_file(&self.path);
+        }
     }
 }
 

@@ -36,7 +36,7 @@ fn write_beside(path: &Path, bytes: &[u8]) -> io::Result<()> {
         _ => PathBuf::from("."),
     };
     let mut file = tempfile::Builder::new()
-        .prefix(".fewest-")
+        .prefix(&temporary_prefix(&path))
         .tempfile_in(&folder)?;
     file.write_all(bytes)?;
     match fs::metadata(&path) {
@@ -47,6 +47,31 @@ fn write_beside(path: &Path, bytes: &[u8]) -> io::Result<()> {
     file.persist(&path).map_err(|error| error.error)?;
     files::sync_folder(&path);
     Ok(())
+}
+
+/// How temporary files for a path begin.
+fn temporary_prefix(path: &Path) -> String {
+    let name = path.file_name().unwrap_or_default().to_string_lossy();
+    format!(".fewest-{name}-")
+}
+
+/// Removes temporary files that a crash while writing a path left behind. Only whoever holds
+/// the lock may do so.
+pub fn remove_leftovers(path: &Path) {
+    let (prefix, folder) = (
+        temporary_prefix(path),
+        path.parent().unwrap_or(Path::new(".")),
+    );
+    let folder = if folder.as_os_str().is_empty() {
+        Path::new(".")
+    } else {
+        folder
+    };
+    for entry in fs::read_dir(folder).into_iter().flatten().flatten() {
+        if entry.file_name().to_string_lossy().starts_with(&prefix) {
+            let _ = fs::remove_file(entry.path());
+        }
+    }
 }
 
 /// A temporary file is private; a new timetable is as readable as files usually are here.

@@ -67,6 +67,27 @@ pub fn cut(text: &str, cells: usize) -> String {
     fit(text, cells).trim_end_matches(' ').to_string()
 }
 
+/// A sentence in lines of so many cells, broken between words where that is possible.
+pub fn wrap(text: &str, room: usize) -> Vec<String> {
+    let mut lines = vec![String::new()];
+    for word in text.split(' ') {
+        let Some(line) = lines.last_mut() else {
+            continue;
+        };
+        let gap = usize::from(!line.is_empty());
+        if line.is_empty() || width(line) + gap + width(word) <= room {
+            if gap == 1 {
+                line.push(' ');
+            }
+            line.push_str(word);
+        } else {
+            lines.push(word.to_string());
+        }
+    }
+    lines.retain(|line| !line.is_empty());
+    lines
+}
+
 /// The candidate nearest to a mistyped word, when one is near enough to suggest.
 pub fn nearest<'a>(word: &str, candidates: impl Iterator<Item = &'a str>) -> Option<&'a str> {
     let most = (word.chars().count() / 3).clamp(1, 3);

@@ -51,29 +51,30 @@ fn no_resource(timetable: &Timetable, piece: &Piece) -> String {
             None => format!("it must stay on {pin}"),
         };
     }
-    let mut reasons: BTreeMap<String, usize> = BTreeMap::new();
+    let mut reasons: BTreeMap<String, Vec<&str>> = BTreeMap::new();
     for resource in &resources.all {
         if let Err(because) = may_use(piece, resource) {
             let short = match because {
-                Unfit::TooSmall { size, .. } => format!("seat fewer than {size}"),
-                Unfit::Lacks(need) => format!("lack {}", clean(&need)),
-                Unfit::Closed(_) => "are closed then".into(),
-                Unfit::NotOpen => "are not open then".into(),
+                Unfit::TooSmall { size, .. } => format!("with fewer than {size} seats"),
+                Unfit::Lacks(need) => format!("without {}", clean(&need)),
+                Unfit::Closed(_) => "closed then".into(),
+                Unfit::NotOpen => "not open then".into(),
                 Unfit::NotInOnly | Unfit::InNever | Unfit::Pinned(_) => {
-                    "are ruled out by the request".into()
+                    "ruled out by the request".into()
                 }
             };
-            *reasons.entry(short).or_default() += 1;
+            reasons.entry(short).or_default().push(&resource.id);
         }
     }
-    let mut counted: Vec<(usize, String)> = reasons
-        .into_iter()
-        .map(|(text, count)| (count, text))
-        .collect();
-    counted.sort_by(|a, b| b.0.cmp(&a.0).then_with(|| a.1.cmp(&b.1)));
+    // The fewest first, by name: they are the ones that nearly could.
+    let mut counted: Vec<(String, Vec<&str>)> = reasons.into_iter().collect();
+    counted.sort_by_key(|(_, ids)| ids.len());
     let said: Vec<String> = counted
         .into_iter()
-        .map(|(count, text)| format!("{count} {text}"))
+        .map(|(text, ids)| match ids.len() {
+            ..=3 => format!("{} {text}", list(&ids, 3)),
+            count => format!("{count} {text}"),
+        })
         .collect();
     let said: Vec<&str> = said.iter().map(String::as_str).collect();
     if said.is_empty() {

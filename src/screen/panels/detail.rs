@@ -1,10 +1,11 @@
 //! What is in hand: the piece, its choices, its neighbours, its clashes.
 
+use crate::claim::Reason;
 use crate::clock::Span;
 use crate::screen::draw::put;
 use crate::screen::layout::RowKind;
 use crate::screen::model::{Carry, Mode, Model};
-use crate::text::{clean, cut, width};
+use crate::text::{clean, cut, wrap};
 use crate::timetable::{Piece, may_use, occupied};
 use crate::words;
 use ratatui::buffer::Buffer;
@@ -46,27 +47,6 @@ pub(in crate::screen) fn draw(model: &Model, buffer: &mut Buffer, area: Rect) {
     if rest.height > 2 {
         super::days::list(model, buffer, rest);
     }
-}
-
-/// A sentence in lines of so many cells, broken between words where that is possible.
-fn wrap(text: &str, room: usize) -> Vec<String> {
-    let mut lines = vec![String::new()];
-    for word in text.split(' ') {
-        let Some(line) = lines.last_mut() else {
-            continue;
-        };
-        let gap = usize::from(!line.is_empty());
-        if line.is_empty() || width(line) + gap + width(word) <= room {
-            if gap == 1 {
-                line.push(' ');
-            }
-            line.push_str(word);
-        } else {
-            lines.push(word.to_string());
-        }
-    }
-    lines.retain(|line| !line.is_empty());
-    lines
 }
 
 #[derive(Clone, Copy)]
@@ -147,7 +127,7 @@ fn of_piece(model: &Model, here: usize) -> Vec<(String, Tone)> {
             Tone::Warn,
         ));
     }
-    if !piece.withdrawn {
+    if !piece.withdrawn && without.is_none_or(|without| without.because != Reason::NoResource) {
         lines.push((choices(model, here), Tone::Plain));
     }
     let people: Vec<&str> = piece

@@ -3,7 +3,7 @@
 use crate::actions::{ACTIONS, Action};
 use crate::screen::draw::{blank, put};
 use crate::screen::model::{Mode, Model};
-use crate::text::{clean, width};
+use crate::text::{clean, width, wrap};
 use ratatui::buffer::Buffer;
 use ratatui::layout::{Position, Rect};
 
@@ -39,7 +39,15 @@ pub(in crate::screen) fn draw(model: &Model, buffer: &mut Buffer, area: Rect) ->
             put(buffer, above, 0, 0, &message.text, style);
             return Some(typed(model, input, buffer, area));
         }
-        put(buffer, area, 0, 0, &message.text, style);
+        // A long one takes the lines above it too, rather than lose its end.
+        let lines = wrap(&message.text, usize::from(area.width).max(1));
+        let lines = &lines[lines.len().saturating_sub(4)..];
+        for (up, line) in lines.iter().rev().enumerate() {
+            let y = area.y.saturating_sub(up as u16);
+            let here = Rect::new(area.x, y, area.width, 1);
+            blank(buffer, here);
+            put(buffer, here, 0, 0, line, style);
+        }
         return None;
     }
     match &model.mode {
@@ -73,10 +81,14 @@ pub(in crate::screen) fn draw(model: &Model, buffer: &mut Buffer, area: Rect) ->
 fn question(model: &Model) -> Option<String> {
     match &model.mode {
         Mode::Leftover => model.desk.leftover().map(|leftover| {
-            format!(
-                "{} not saved last time: Enter takes them in, k keeps them apart",
-                crate::words::count_words(leftover.records, "edit")
-            )
+            let count = crate::words::count_words(leftover.edits, "edit");
+            if leftover.foreign {
+                format!(
+                    "{count} for another version of this file: Enter tries them, k keeps them apart"
+                )
+            } else {
+                format!("{count} not saved last time: Enter takes them in, k keeps them apart")
+            }
         }),
         Mode::Changed => {
             Some("changed by someone else: m mine, t theirs, b both, any other key: not now".into())
