@@ -3,7 +3,7 @@
 use crate::edit::Touched;
 use crate::screen::draw::{blank, put};
 use crate::screen::model::Model;
-use crate::text::{clean, fit};
+use crate::text::{clean, fit, wrap};
 use crate::timetable::findings;
 use crate::words;
 use ratatui::buffer::Buffer;
@@ -103,14 +103,31 @@ pub(in crate::screen) fn draw(
     }
     let room = usize::from(height).saturating_sub(1).max(1);
     let skip = (chosen + 1).saturating_sub(room);
-    for (y, (at, (text, _))) in (1..).zip(lines.iter().enumerate().skip(skip).take(room)) {
-        let (mark, style) = if at == chosen {
-            (">", theme.label_here)
+    let mut y = 1;
+    let mut here = 1;
+    for (at, (text, _)) in lines.iter().enumerate().skip(skip) {
+        // The chosen one is shown whole, the others in a line each.
+        let width = usize::from(area.width).saturating_sub(2).max(1);
+        let shown = if at == chosen {
+            wrap(text, width)
         } else {
-            (" ", theme.label)
+            vec![text.clone()]
         };
-        put(buffer, area, 0, y, &format!("{mark}{text}"), style);
+        if at == chosen {
+            here = y;
+        }
+        for (part, text) in shown.iter().enumerate() {
+            let (mark, style) = match (at == chosen, part) {
+                (true, 0) => (">", theme.label_here),
+                (true, _) => (" ", theme.label_here),
+                (false, _) => (" ", theme.label),
+            };
+            put(buffer, area, 0, y, &format!("{mark}{text}"), style);
+            y += 1;
+        }
+        if y >= height {
+            break;
+        }
     }
-    let y = (chosen.saturating_sub(skip) as u16 + 1).min(height.saturating_sub(1));
-    Position::new(area.x, area.y + y)
+    Position::new(area.x, area.y + here.min(height.saturating_sub(1)))
 }
