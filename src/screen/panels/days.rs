@@ -1,9 +1,9 @@
 //! The days strip: each day with its load, the floor, what is in use; Enter goes there.
 
+use super::sheet;
 use crate::clock::{DAY, Instant, Span};
-use crate::screen::draw::{blank, put};
+use crate::screen::draw::put;
 use crate::screen::model::{Mode, Model};
-use crate::text::fit;
 use chrono::NaiveDate;
 use ratatui::buffer::Buffer;
 use ratatui::layout::{Position, Rect};
@@ -124,13 +124,6 @@ pub(in crate::screen) fn draw(
         .max(4)
         .min(whole.height * 2 / 3)
         .min(whole.height.saturating_sub(1));
-    let area = Rect::new(
-        whole.x,
-        whole.height.saturating_sub(1 + height),
-        whole.width,
-        height,
-    );
-    blank(buffer, area);
     let floor = model
         .shown()
         .0
@@ -138,14 +131,7 @@ pub(in crate::screen) fn draw(
     let heading = format!(
         " Days: in use, load (floor of the whole: {floor}), pieces. Enter goes there, Esc leaves"
     );
-    put(
-        buffer,
-        area,
-        0,
-        0,
-        &fit(&heading, usize::from(area.width)),
-        theme.axis,
-    );
+    let area = sheet(model, buffer, whole, height, &heading);
     let room = usize::from(height).saturating_sub(1).max(1);
     let skip = (chosen + 1).saturating_sub(room);
     let most = days

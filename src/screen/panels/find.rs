@@ -1,8 +1,9 @@
 //! Finding a piece: what is typed, and what matches.
 
-use crate::screen::draw::{blank, put};
+use super::sheet;
+use crate::screen::draw::put;
 use crate::screen::model::{Find, Model};
-use crate::text::{clean, fit};
+use crate::text::clean;
 use ratatui::buffer::Buffer;
 use ratatui::layout::{Position, Rect};
 
@@ -17,25 +18,11 @@ pub(in crate::screen) fn draw(
     let height = (whole.height / 2)
         .max(6)
         .min(whole.height.saturating_sub(1));
-    let area = Rect::new(
-        whole.x,
-        whole.height.saturating_sub(1 + height),
-        whole.width,
-        height,
-    );
-    blank(buffer, area);
     let heading = format!(
         " Find a piece by id, title or person: {} found (Enter goes there, Esc leaves)",
         find.matches.len()
     );
-    put(
-        buffer,
-        area,
-        0,
-        0,
-        &fit(&heading, usize::from(area.width)),
-        theme.axis,
-    );
+    let area = sheet(model, buffer, whole, height, &heading);
     let typed = clean(find.input.value()).into_owned();
     put(buffer, area, 0, 1, &format!("/{typed}"), theme.prompt);
     let room = usize::from(height).saturating_sub(2);

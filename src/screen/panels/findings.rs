@@ -1,9 +1,10 @@
 //! What is doubtful in the file, what cannot be, what has no place, who clashes.
 
+use super::sheet;
 use crate::edit::Touched;
-use crate::screen::draw::{blank, put};
+use crate::screen::draw::put;
 use crate::screen::model::Model;
-use crate::text::{clean, fit, wrap};
+use crate::text::{clean, wrap};
 use crate::timetable::findings;
 use crate::words;
 use ratatui::buffer::Buffer;
@@ -71,26 +72,12 @@ pub(in crate::screen) fn draw(
     let height = (whole.height / 2)
         .max(6)
         .min(whole.height.saturating_sub(1));
-    let area = Rect::new(
-        whole.x,
-        whole.height.saturating_sub(1 + height),
-        whole.width,
-        height,
-    );
-    blank(buffer, area);
     let lines = lines(model);
     let heading = format!(
         " {}: Enter goes to one, Esc leaves",
         words::count_words(lines.len(), "finding")
     );
-    put(
-        buffer,
-        area,
-        0,
-        0,
-        &fit(&heading, usize::from(area.width)),
-        theme.axis,
-    );
+    let area = sheet(model, buffer, whole, height, &heading);
     if lines.is_empty() {
         put(
             buffer,

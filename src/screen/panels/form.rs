@@ -1,6 +1,7 @@
 //! The form of fields.
 
-use crate::screen::draw::{blank, put};
+use super::sheet;
+use crate::screen::draw::put;
 use crate::screen::form::Form;
 use crate::screen::model::Model;
 use crate::text::{clean, fit};
@@ -16,23 +17,9 @@ pub(in crate::screen) fn draw(
 ) -> Position {
     let theme = &model.setup.theme;
     let height = (form.fields.len() as u16 + 1).min(whole.height.saturating_sub(1));
-    let area = Rect::new(
-        whole.x,
-        whole.height.saturating_sub(1 + height),
-        whole.width,
-        height,
-    );
-    blank(buffer, area);
     let about = form.id.as_deref().unwrap_or("a new request");
     let heading = format!(" {about}: Enter makes the changes, Tab goes on, Esc leaves");
-    put(
-        buffer,
-        area,
-        0,
-        0,
-        &fit(&heading, usize::from(area.width)),
-        theme.axis,
-    );
+    let area = sheet(model, buffer, whole, height, &heading);
     let room = usize::from(area.width).saturating_sub(14);
     let mut cursor = Position::new(area.x, area.y);
     // The chosen field is in sight however low the screen is.

@@ -11,9 +11,24 @@ pub(super) mod header;
 pub(super) mod help;
 pub(super) mod load;
 
+use super::draw::{blank, put};
 use super::model::{Mode, Model};
 use crate::actions::Action;
+use crate::text::fit;
 use crossterm::event::{KeyCode, KeyEvent};
+use ratatui::buffer::Buffer;
+use ratatui::layout::Rect;
+
+/// A sheet over the lower part of the screen, empty but for its heading; the last line of the
+/// screen stays free for what is said.
+fn sheet(model: &Model, buffer: &mut Buffer, whole: Rect, height: u16, heading: &str) -> Rect {
+    let top = whole.height.saturating_sub(1 + height);
+    let area = Rect::new(whole.x, top, whole.width, height);
+    blank(buffer, area);
+    let heading = fit(heading, usize::from(area.width));
+    put(buffer, area, 0, 0, &heading, model.setup.theme.axis);
+    area
+}
 
 /// A key in one of the panels that list something: up and down, Enter goes, all else leaves.
 pub(super) fn listed(model: &mut Model, key: KeyEvent, action: Option<Action>) {
