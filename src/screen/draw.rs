@@ -66,12 +66,13 @@ pub(super) fn put(
     } else {
         cut(text, room).into()
     };
+    // What was there before must not shine through: a style only adds to what a cell has.
     buffer.set_stringn(
         area.x + x,
         area.y + y,
         &text,
         usize::from(area.width - x),
-        style,
+        Style::reset().patch(style),
     );
     x + width(&text) as u16
 }
