@@ -1,0 +1,177 @@
+//! How much is proved, and how fast, on published instances: one line each with answer,
+//! floor, by what, seconds, and memory so far. The data are not part of the project; they
+//! are looked for in `../shared/data` or the folder named in `FEWEST_DATA`.
+//!
+//! `cargo bench --bench proofs -- SET SECONDS [PART-OF-NAME]`, such as `keb137 10`.
+//! Sources: Krishnamoorthy, Ernst, Baatar (EJOR 219, 2012) and Fages, Lapegue (CP 2013).
+#![allow(clippy::unwrap_used, reason = "a benchmark may panic")]
+#![allow(clippy::print_stdout, reason = "a benchmark prints what it measures")]
+
+use fewest::audit::Knowledge;
+use fewest::clock::{Instant, Span};
+use fewest::desk::Job;
+use fewest::engine::{Budget, Until};
+use fewest::timetable::{Listed, Named, Request, Settings, Timetable};
+use std::path::{Path, PathBuf};
+use std::sync::Arc;
+use std::time::{Duration, Instant as Watch};
+
+/// Reads an instance: tasks as requests, workers as resources, qualifications as `only`.
+fn read(path: &Path) -> Timetable {
+    let text = std::fs::read_to_string(path).unwrap();
+    let mut lines = text
+        .lines()
+        .filter(|line| !line.starts_with('#') && !line.trim().is_empty());
+    let mut count = |name: &str| -> usize {
+        let line = lines.by_ref().find(|line| line.starts_with(name)).unwrap();
+        line.split('=').nth(1).unwrap().trim().parse().unwrap()
+    };
+    let jobs = count("Jobs");
+    let mut rest = text
+        .lines()
+        .filter(|line| !line.starts_with('#') && !line.trim().is_empty());
+    rest.find(|line| line.starts_with("Jobs"));
+    let numbers = |line: &str| -> Vec<i64> {
+        line.replace(':', " ")
+            .split_whitespace()
+            .map(|n| n.parse().unwrap())
+            .collect()
+    };
+    let mut requests: Vec<Request> = (0..jobs)
+        .map(|task| {
+            let span = numbers(rest.next().unwrap());
+            let span = Span {
+                start: Instant(span[0] * 60),
+                end: Instant(span[1] * 60),
+            };
+            Request::plain(&format!("t{task}"), span)
+        })
+        .collect();
+    let workers: usize = rest
+        .next()
+        .unwrap()
+        .split('=')
+        .nth(1)
+        .unwrap()
+        .trim()
+        .parse()
+        .unwrap();
+    let names: Vec<Arc<str>> = (0..workers)
+        .map(|worker| format!("w{worker}").into())
+        .collect();
+    for name in &names {
+        for task in &numbers(rest.next().unwrap())[1..] {
+            requests[*task as usize].only.push(Arc::clone(name));
+        }
+    }
+    let named = names.iter().map(|id| Named {
+        id: Arc::clone(id),
+        kind: None,
+        common: Default::default(),
+    });
+    let listed = (0..workers).map(Listed::Named).collect();
+    Timetable::new(
+        Settings::titled("instance"),
+        Vec::new(),
+        named.collect(),
+        listed,
+        requests,
+    )
+}
+
+fn memory() -> u64 {
+    let status = std::fs::read_to_string("/proc/self/status").unwrap_or_default();
+    let line = status.lines().find_map(|line| line.strip_prefix("VmHWM:"));
+    line.and_then(|line| line.trim().trim_end_matches(" kB").parse::<u64>().ok())
+        .unwrap_or(0)
+        >> 10
+}
+
+fn main() {
+    let args: Vec<String> = std::env::args()
+        .skip(1)
+        .filter(|arg| !arg.starts_with("--"))
+        .collect();
+    let set = args.first().map_or("keb137", String::as_str);
+    let seconds: f64 = args.get(1).map_or(10.0, |text| text.parse().unwrap());
+    let part = args.get(2).map_or("", String::as_str);
+    let root = std::env::var_os("FEWEST_DATA")
+        .map_or_else(|| PathBuf::from("../shared/data"), PathBuf::from);
+    let folder = root.join("smptsp");
+    let Ok(answers) = std::fs::read_to_string(folder.join("answers.csv")) else {
+        println!(
+            "SKIPPED: {} is not here; name its folder in FEWEST_DATA",
+            folder.display()
+        );
+        return;
+    };
+    println!(
+        "{:<30} {:>6} {:>6} {:>12} {:>8} {:>9} {:>9} {:>6}",
+        "instance", "answer", "floor", "by", "state", "first ms", "seconds", "MiB"
+    );
+    let (mut proved, mut all, mut times, mut firsts) = (0, 0, Vec::new(), Vec::new());
+    for line in answers.lines().skip(1) {
+        let cells: Vec<&str> = line.split(',').collect();
+        if cells[0] != set || !cells[1].contains(part) {
+            continue;
+        }
+        let timetable = read(&folder.join(set).join(format!("{}.dat", cells[1])));
+        let job = Job {
+            generation: 0,
+            timetable,
+            reference: None,
+            begun: Arc::default(),
+        };
+        let watch = Watch::now();
+        let until = Until(watch + Duration::from_secs_f64(seconds));
+        let mut first = None;
+        let budget = Budget {
+            seed: 1,
+            steps: None,
+            threads: 2,
+        };
+        let settled = job
+            .run(budget, &until, &mut |_| {
+                _ = first.get_or_insert(watch.elapsed())
+            })
+            .unwrap();
+        let taken = watch.elapsed().as_secs_f64();
+        let receipt = settled.receipt();
+        let state = match receipt.knowledge() {
+            Knowledge::Proved(_) => "proved",
+            Knowledge::Between { .. } => "between",
+            Knowledge::Impossible { .. } => "impossible",
+        };
+        let (floor, best): (usize, usize) = (cells[5].parse().unwrap(), cells[6].parse().unwrap());
+        assert!(
+            receipt.floor() <= best && (receipt.unplaced() > 0 || receipt.in_use() >= floor),
+            "{line}"
+        );
+        all += 1;
+        if state == "proved" {
+            proved += 1;
+            times.push(taken);
+        }
+        let first = first.unwrap_or_default().as_secs_f64() * 1e3;
+        firsts.push(first);
+        println!(
+            "{:<30} {:>6} {:>6} {:>12} {:>8} {:>9.1} {:>9.3} {:>6}",
+            cells[1],
+            receipt.in_use(),
+            receipt.floor(),
+            settled.answer().floor.name(),
+            state,
+            first,
+            taken,
+            memory()
+        );
+    }
+    times.sort_by(f64::total_cmp);
+    firsts.sort_by(f64::total_cmp);
+    let median = |list: &[f64]| list.get(list.len() / 2).copied().unwrap_or(f64::NAN);
+    println!(
+        "{proved} of {all} proved within {seconds} s; median {:.3} s; first plan median {:.1} ms",
+        median(&times),
+        median(&firsts)
+    );
+}
