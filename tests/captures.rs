@@ -141,7 +141,7 @@ fn carrying_finding_and_help_as_people_see_them() {
         "exam-fortnight",
         (80, 24),
         true,
-        &[("d", "Days: in use")],
+        &[("d", "Days (floor of the whole")],
     );
     capture(
         "help-80x24-no-color",

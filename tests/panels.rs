@@ -80,7 +80,7 @@ const PANELS: [(&str, &str); 12] = [
     ("a", "a new request"),
     ("e", "Enter makes the changes"),
     ("i", "findings"),
-    ("d", "Days: in use"),
+    ("d", "Days (floor of the whole"),
     ("fq", "any other key stays"),
     ("vv>c", ":close "),
 ];
@@ -117,6 +117,28 @@ fn every_panel_survives_every_size() {
         }
     }
     assert_eq!(frames, PANELS.len() * 101 * 41);
+}
+
+#[test]
+fn the_present_moment_is_a_line_when_it_is_in_sight() {
+    let folder = folder_with(&["sample-timetables/three-day-event.toml"]);
+    let mut model = model(&folder.path().join("three-day-event.toml"), false);
+    let column = |model: &Model| {
+        let seen = frame(model, 80, 24);
+        let row = seen
+            .lines()
+            .find(|line| line.contains(" studio-3"))
+            .unwrap()
+            .to_string();
+        row.chars().position(|c| c == '\'')
+    };
+    assert_eq!(column(&model), None, "another year");
+    model.now = model.view.left + 3 * model.view.step();
+    // The quotation mark of the dump's own border comes first.
+    assert_eq!(
+        column(&model),
+        Some(usize::from(model.areas().time.x) + 3 + 1)
+    );
 }
 
 #[test]

@@ -389,6 +389,21 @@ fn a_hang_up_keeps_the_journal() {
 }
 
 #[test]
+fn an_idle_screen_writes_nothing() {
+    let (_folder, path) = event();
+    let mut terminal = Terminal::open(&[&path], (120, 40), &XTERM);
+    terminal.wait_for("proved");
+    terminal.wait_for("? help");
+    std::thread::sleep(Duration::from_millis(300));
+    let before = terminal.raw.lock().unwrap().len();
+    // The file is looked at once a second; that alone is no reason to draw.
+    std::thread::sleep(Duration::from_millis(2_500));
+    assert_eq!(terminal.raw.lock().unwrap().len(), before);
+    terminal.press("q");
+    assert_eq!(terminal.end(), 0);
+}
+
+#[test]
 fn it_works_in_one_colour_and_on_plain_terminals() {
     let coloured = |terminal: &Terminal| {
         terminal.look(|screen| {

@@ -83,6 +83,9 @@ impl Default for Budget {
 /// Steps of the plan search between two looks at the floors.
 const SLICE: u64 = 5_000;
 
+/// Rearrangements after each slice.
+const REARRANGED: u32 = 150;
+
 /// When some pieces provably cannot be placed, the count of the rest has no floor of its
 /// own to meet; after so many steps without a better one it is left.
 const ENOUGH_FOR_THE_REST: u64 = 200_000;
@@ -289,7 +292,6 @@ impl Solving<'_, '_> {
             start,
             seed,
             search: None,
-            climbs: 0,
             wanted: true,
         };
         if budget.threads < 2 {
@@ -332,6 +334,7 @@ impl Solving<'_, '_> {
         let mut search = tabu::Tabu::new(self.problem, &skip, budget.seed);
         let mut aimed = None;
         let mut since_better = 0;
+        let mut width = 4;
         while steps_left > 0 && !stop.stop() {
             let (left_out, in_use) = self.value(&self.best);
             if left_out == 0 && in_use == self.floor.value() {
@@ -365,12 +368,24 @@ impl Solving<'_, '_> {
                 let mut least = left_out;
                 let mut better: Option<Assignment> = None;
                 let placing = left_out > 0 && !rest;
-                search.run(slice, stop, &mut |left, on| {
-                    if placing && left < least {
-                        least = left;
-                        better = Some(on.to_vec());
+                if placing {
+                    search.run(slice, stop, &mut |left, on| {
+                        if left < least {
+                            least = left;
+                            better = Some(on.to_vec());
+                        }
+                    });
+                } else {
+                    // Near the end what is missing is one piece that no chain of ejections
+                    // brings in: then several resources are laid out anew together.
+                    search.run_and_return(slice, stop);
+                }
+                if !search.done() {
+                    search.rearrange(REARRANGED, &mut width, stop);
+                    if placing && search.left_out < least {
+                        better = Some(search.on.clone());
                     }
-                });
+                }
                 if search.done() {
                     better = Some(search.on.clone());
                 }
@@ -399,7 +414,6 @@ struct Floors<'a> {
     start: Vec<usize>,
     seed: u64,
     search: Option<incompatible::Search>,
-    climbs: u32,
     wanted: bool,
 }
 
@@ -414,9 +428,6 @@ impl Floors<'_> {
             self.wanted = self.search.is_some();
         }
         let search = self.search.as_mut()?;
-        self.climbs += 1;
-        // Nearly all that it finds it finds early.
-        self.wanted = self.climbs < 2_000;
         search.climb().then(|| search.best.clone())
     }
 }

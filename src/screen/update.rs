@@ -99,7 +99,14 @@ pub fn update(model: &mut Model, msg: Msg) -> Vec<Effect> {
         }
         Msg::Solver(event) => heard(model, event),
         Msg::Written(written) => {
+            let before = model.desk.unsafe_because().is_some();
             model.desk.written(&written);
+            if let (false, Some(why)) = (before, model.desk.unsafe_because()) {
+                let said = format!(
+                    "edits are not safe ({why}): they go on in memory only; :save OTHER.toml keeps them elsewhere"
+                );
+                model.say(said, true);
+            }
             Vec::new()
         }
         Msg::Stirred => {

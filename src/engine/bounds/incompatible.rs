@@ -95,6 +95,9 @@ pub(crate) struct Search {
     inside: Vec<bool>,
     clique: Vec<usize>,
     penalty: Vec<u32>,
+    /// Vertices with any edge at all.
+    usable: Vec<bool>,
+    climbs: u32,
     /// The best so far.
     pub(crate) best: Vec<usize>,
 }
@@ -140,8 +143,12 @@ impl Search {
             inside: vec![false; n],
             clique: Vec::new(),
             penalty: vec![0; n],
+            usable: Vec::new(),
+            climbs: 0,
             best: start.to_vec(),
         };
+        let edges = |v: usize| search.rows[v * words..][..words].iter().any(|w| *w != 0);
+        search.usable = (0..n).map(edges).collect();
         for item in start {
             search.add(*item);
         }
@@ -194,19 +201,12 @@ impl Search {
         best
     }
 
-    /// One climb: add what fits, swap where one stands in the way, until neither helps;
-    /// then penalise and start again near by. Returns whether the best grew.
+    /// One climb: add what fits, swap where one stands in the way, until neither helps; then
+    /// penalise what is inside and go elsewhere: with a vertex from outside, or, when nothing
+    /// has come of that for a while, from a single one. Returns whether the best grew.
     pub(crate) fn climb(&mut self) -> bool {
         let before = self.best.len();
-        let mut allowed = vec![true; self.n];
-        let usable = |search: &Search, v: usize| {
-            search.rows[v * search.words..][..search.words]
-                .iter()
-                .any(|w| *w != 0)
-        };
-        for (vertex, allowed) in allowed.iter_mut().enumerate() {
-            *allowed = usable(self, vertex);
-        }
+        let mut allowed = self.usable.clone();
         for _ in 0..4 * self.n.max(16) {
             if let Some(vertex) = self.pick(0, &allowed) {
                 self.add(vertex);
@@ -229,18 +229,40 @@ impl Search {
                 break;
             }
         }
-        for vertex in self.clique.clone() {
-            self.penalty[vertex] += 1;
+        for vertex in &self.clique {
+            self.penalty[*vertex] += 1;
         }
-        // Keep one member and leave the rest: the next climb goes elsewhere.
-        if !self.clique.is_empty() {
-            let stay = self.clique[self.random.below(self.clique.len())];
-            for vertex in self.clique.clone() {
-                if vertex != stay {
-                    self.remove(vertex);
-                }
+        self.climbs += 1;
+        if self.climbs.is_multiple_of(FORGET_EVERY) {
+            for penalty in &mut self.penalty {
+                *penalty = penalty.saturating_sub(1);
             }
         }
+        self.leave();
         self.best.len() > before
     }
+
+    /// Away from where the climb ended.
+    fn leave(&mut self) {
+        let outside: Vec<usize> = (0..self.n)
+            .filter(|v| self.usable[*v] && !self.inside[*v])
+            .collect();
+        if outside.is_empty() {
+            return;
+        }
+        let vertex = outside[self.random.below(outside.len())];
+        let alone = self.climbs.is_multiple_of(AFRESH_EVERY);
+        for other in self.clique.clone() {
+            if alone || !self.adjacent(vertex, other) {
+                self.remove(other);
+            }
+        }
+        self.add(vertex);
+    }
 }
+
+/// Climbs after which every penalty is one less.
+const FORGET_EVERY: u32 = 2;
+
+/// Climbs after which the search begins from a single vertex.
+const AFRESH_EVERY: u32 = 50;

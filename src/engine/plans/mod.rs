@@ -3,6 +3,7 @@
 pub(super) mod align;
 pub(crate) mod alike;
 pub(super) mod greedy;
+mod joint;
 pub(super) mod keep;
 pub(super) mod rows;
 pub(super) mod tabu;

@@ -46,7 +46,7 @@ enum Step {
 
 /// The search and its memory; it can be run on and on in slices.
 pub(crate) struct Tabu<'a> {
-    problem: &'a Problem,
+    pub(super) problem: &'a Problem,
     takers: Vec<Takers>,
     /// Per item, in the order of its choices: its place in that class's takers.
     places: Vec<Vec<u32>>,
@@ -54,20 +54,22 @@ pub(crate) struct Tabu<'a> {
     cost: Vec<Vec<u32>>,
     until: Vec<Vec<u64>>,
     rest_until: Vec<u64>,
-    rows: Vec<Vec<(i64, i64, u32)>>,
+    pub(super) rows: Vec<Vec<(i64, i64, u32)>>,
     row_weight: Vec<u64>,
-    resting: Vec<bool>,
-    rest_weight: u32,
-    rest_unplaced: usize,
+    pub(super) resting: Vec<bool>,
+    pub(super) rest_weight: u32,
+    pub(super) rest_unplaced: usize,
     /// The resource of each item.
     pub(crate) on: Assignment,
-    weight: Vec<u32>,
-    unplaced: Vec<u32>,
+    pub(super) weight: Vec<u32>,
+    pub(super) unplaced: Vec<u32>,
     /// Real weight of what is unplaced.
     pub(crate) left_out: u64,
     skipped: Vec<bool>,
+    /// Where the fewest were missing in this slice, while that is watched.
+    low: Option<(usize, Assignment, Vec<bool>)>,
     step: u64,
-    random: Random,
+    pub(super) random: Random,
 }
 
 impl<'a> Tabu<'a> {
@@ -129,6 +131,7 @@ impl<'a> Tabu<'a> {
             unplaced: Vec::new(),
             left_out: 0,
             skipped: skip.to_vec(),
+            low: None,
             step: 0,
             random: Random::seeded(seed),
         })
@@ -174,6 +177,39 @@ impl<'a> Tabu<'a> {
         true
     }
 
+    /// Goes back to an earlier state of this search; weights stay.
+    pub(crate) fn back_to(&mut self, on: &[u32], resting: &[bool]) {
+        for r in 0..self.rows.len() {
+            while let Some((_, _, item)) = self.rows[r].last().copied() {
+                self.eject(item, r);
+            }
+        }
+        for (item, resource) in on.iter().enumerate() {
+            if *resource != NONE {
+                self.put(item as u32, *resource);
+            }
+        }
+        self.rest_unplaced += self.resting.iter().filter(|rests| **rests).count();
+        self.resting.copy_from_slice(resting);
+        self.rest_unplaced -= self.resting.iter().filter(|rests| **rests).count();
+    }
+
+    /// How many things are missing.
+    fn waiting(&self) -> usize {
+        self.unplaced.len() + self.rest_unplaced
+    }
+
+    /// Up to `steps` steps, then back to the state in which the fewest were missing.
+    pub(crate) fn run_and_return(&mut self, steps: u64, stop: &dyn Stopper) {
+        self.low = Some((usize::MAX, Vec::new(), Vec::new()));
+        self.run(steps, stop, &mut |_, _| {});
+        if let Some((waiting, on, resting)) = self.low.take()
+            && self.waiting() > waiting
+        {
+            self.back_to(&on, &resting);
+        }
+    }
+
     /// Whether everything has its place, idle stand-ins included.
     pub(crate) fn done(&self) -> bool {
         self.unplaced.is_empty() && self.rest_unplaced == 0
@@ -207,6 +243,13 @@ impl<'a> Tabu<'a> {
                 self.rest_weight += u32::from(self.rest_unplaced > 0);
             }
             better(self.left_out, &self.on);
+            if self
+                .low
+                .as_ref()
+                .is_some_and(|(waiting, ..)| self.waiting() < *waiting)
+            {
+                self.low = Some((self.waiting(), self.on.clone(), self.resting.clone()));
+            }
         }
     }
 
@@ -338,7 +381,7 @@ impl<'a> Tabu<'a> {
         }
     }
 
-    fn put(&mut self, item: u32, resource: u32) {
+    pub(super) fn put(&mut self, item: u32, resource: u32) {
         let r = resource as usize;
         let class = self.problem.class_of[r] as usize;
         let (start, end) = self.takers[class].spans[self.place_of(item, class)];
@@ -354,7 +397,7 @@ impl<'a> Tabu<'a> {
         }
     }
 
-    fn eject(&mut self, item: u32, r: usize) {
+    pub(super) fn eject(&mut self, item: u32, r: usize) {
         let class = self.problem.class_of[r] as usize;
         let span = self.takers[class].spans[self.place_of(item, class)];
         self.rows[r].retain(|(_, _, other)| *other != item);

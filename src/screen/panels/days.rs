@@ -15,6 +15,8 @@ pub(in crate::screen) struct Day {
     pub(in crate::screen) date: NaiveDate,
     pub(in crate::screen) first: Instant,
     load: usize,
+    /// No plan can do with fewer that day: its load, or the pieces of the floor's proof then.
+    floor: usize,
     in_use: usize,
     pieces: usize,
 }
@@ -48,7 +50,25 @@ fn work_out(model: &Model) -> Vec<Day> {
             day.2.extend(model.rows.on[at]);
         }
     }
-    let load = model.shown().0.map(|settled| &settled.survey().load);
+    let settled = model.shown().0;
+    let load = settled.map(|settled| &settled.survey().load);
+    let mut counted: BTreeMap<NaiveDate, usize> = BTreeMap::new();
+    for piece in model
+        .rows
+        .pieces
+        .iter()
+        .filter(|piece| settled.is_some_and(|s| s.counts(&piece.id)))
+    {
+        let last = zone.date(piece.span.end - 1);
+        for date in zone
+            .date(piece.span.start)
+            .iter_days()
+            .take_while(|date| *date <= last)
+            .take(400)
+        {
+            *counted.entry(date).or_default() += 1;
+        }
+    }
     found
         .into_iter()
         .map(|(date, (first, pieces, resources))| {
@@ -57,7 +77,9 @@ fn work_out(model: &Model) -> Vec<Day> {
                 .succ_opt()
                 .map_or(start + DAY, |next| zone.midnight(next));
             let load = load.map_or(0, |load| load.most_within(Span { start, end }));
+            let floor = load.max(counted.get(&date).copied().unwrap_or(0));
             Day {
+                floor,
                 date,
                 first,
                 load,
@@ -128,9 +150,7 @@ pub(in crate::screen) fn draw(
         .shown()
         .0
         .map_or(0, |settled| settled.receipt().floor());
-    let heading = format!(
-        " Days: in use, load (floor of the whole: {floor}), pieces. Enter goes there, Esc leaves"
-    );
+    let heading = format!(" Days (floor of the whole: {floor}): Enter goes there, Esc leaves");
     let area = sheet(model, buffer, whole, height, &heading);
     let room = usize::from(height).saturating_sub(1).max(1);
     let skip = (chosen + 1).saturating_sub(room);
@@ -141,7 +161,7 @@ pub(in crate::screen) fn draw(
         .unwrap_or(1)
         .max(floor)
         .max(1);
-    let bar_room = usize::from(area.width).saturating_sub(46).min(60);
+    let bar_room = usize::from(area.width).saturating_sub(57).min(60);
     for (y, (at, day)) in (1..).zip(days.iter().enumerate().skip(skip).take(room)) {
         let (mark, style) = if at == chosen {
             (">", theme.label_here)
@@ -149,9 +169,10 @@ pub(in crate::screen) fn draw(
             (" ", theme.label)
         };
         let text = format!(
-            "{mark}{}  {:>3} in use  load {:>3}  {:>4} pieces  ",
+            "{mark}{}  {:>3} in use  floor {:>3}  load {:>3}  {:>4} pieces  ",
             day.date.format("%a %d %b"),
             day.in_use,
+            day.floor,
             day.load,
             day.pieces
         );
