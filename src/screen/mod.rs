@@ -3,6 +3,7 @@
 //!
 //! Imports everything below.
 
+mod carry;
 mod draw;
 mod form;
 mod layout;
