@@ -921,7 +921,8 @@ fn killed_at_any_moment_nothing_safe_is_lost() {
         }
         // Three are waited for until no bar wears "not yet safe"; three are on their way.
         terminal.wait("the first three safe", |text| {
-            text.contains("3 edits not saved") && !text.contains("?=")
+            text.contains("3 edits not saved")
+                && text.lines().skip(3).take(12).all(|row| !row.contains('?'))
         });
         let rest: String = lines[3..].iter().map(|line| format!(":{line}\r")).collect();
         terminal.press(&rest);
