@@ -633,6 +633,65 @@ fn a_journal_that_is_overwritten_or_removed_is_written_anew() {
     assert_eq!(Session::open(&path, &files.after_the_end(true)).now, now);
 }
 
+/// A desk that only reads, or whose journal is not its own, writes over nobody's journal and
+/// nobody's file, whatever it is told.
+#[test]
+fn a_reader_overwrites_neither_file_nor_journal() {
+    let folder = tempfile::tempdir().unwrap();
+    let path = folder.path().join("safe.toml");
+    std::fs::write(&path, TIMETABLE).unwrap();
+    let files = Faulty::with(&path, TIMETABLE.as_bytes());
+    let mut session = Session::open(&path, &files);
+    session.edit("fasten a");
+    let journal = files.read(&journal_path(&path), u64::MAX).unwrap();
+    let (mut reader, _) = Desk::open_to_edit(&path, "reader", Arc::new(files.clone())).unwrap();
+    assert!(matches!(reader.access(), Access::Theirs(_)));
+    let mut announced = 0;
+    for other in [None, Some(path.as_path())] {
+        let said = reader
+            .save(other, NOW, &mut |_| announced += 1)
+            .unwrap_err()
+            .to_string();
+        assert!(said.contains("read only"), "{said}");
+    }
+    // A writer that began nothing there leaves what it finds.
+    let mut writer = reader.journal_writer();
+    for _ in 0..2 {
+        assert!(writer.add(&Record::Step(vec!["fasten b".into()])).is_err());
+        assert_eq!(files.read(&journal_path(&path), u64::MAX).unwrap(), journal);
+    }
+    let other = folder.path().join("other.toml");
+    reader
+        .save(Some(&other), NOW, &mut |_| announced += 1)
+        .unwrap();
+    assert_eq!(announced, 0);
+    assert_eq!(files.read(&journal_path(&path), u64::MAX).unwrap(), journal);
+    assert_eq!(files.read(&path, u64::MAX).unwrap(), TIMETABLE.as_bytes());
+}
+
+/// Their version is nonsense: taking it fails, and ours goes on with its journal whole.
+#[test]
+fn a_version_that_cannot_be_taken_costs_no_edit() {
+    let folder = folder_with(&["sample-timetables/three-day-event.toml"]);
+    let path = folder.path().join("three-day-event.toml");
+    let mut terminal = Terminal::open(&[path.to_str().unwrap()], (80, 24), &XTERM);
+    terminal.wait_for("proved");
+    terminal.press(":fasten eels\r");
+    terminal.wait_for("1 edit not saved");
+    std::fs::write(&path, "nonsense\n").unwrap();
+    terminal.press("s");
+    terminal.wait_for("m mine, t theirs, b both");
+    terminal.press("b");
+    terminal.wait_for("this is not TOML");
+    terminal.press(":fasten mud\r");
+    terminal.wait_for("2 edits");
+    terminal.signal("-TERM");
+    assert_eq!(terminal.end(), 143);
+    let journal = Journal::read(&std::fs::read(journal_path(&path)).unwrap()).unwrap();
+    let made = ["fasten eels", "fasten mud"].map(|line| Record::Step(vec![line.into()]));
+    assert_eq!(journal.records, made);
+}
+
 #[test]
 fn a_lock_that_vanishes_is_taken_again_and_one_that_is_left_is_taken_over() {
     let folder = tempfile::tempdir().unwrap();

@@ -153,7 +153,7 @@ impl Terminal {
         let _ = self.child.wait();
     }
 
-    fn signal(&self, name: &str) {
+    pub(crate) fn signal(&self, name: &str) {
         let pid = self.child.process_id().unwrap().to_string();
         assert!(
             std::process::Command::new("kill")

@@ -395,15 +395,15 @@ impl Desk {
     ) -> Result<(), Trouble> {
         let path = other.unwrap_or(&self.path).to_path_buf();
         let name = crate::text::clean(&path.display().to_string()).into_owned();
-        if let Access::Theirs(who) = &self.access
-            && other.is_none()
-        {
-            return Err(Trouble::Locked(who.clone()));
-        }
         let same = path == self.path
             || std::fs::canonicalize(&path).ok().is_some_and(|there| {
                 std::fs::canonicalize(&self.path).is_ok_and(|ours| ours == there)
             });
+        if let Access::Theirs(who) = &self.access
+            && same
+        {
+            return Err(Trouble::Locked(who.clone()));
+        }
         if !same && path.exists() {
             return Err(Trouble::Exists(name));
         }
@@ -414,7 +414,10 @@ impl Desk {
             return Err(Trouble::Changed(name));
         }
         let bytes = self.document.bytes();
-        announce(Record::Saved(document::hash(&bytes)));
+        // Under another name the journal here has nothing to say about it.
+        if same {
+            announce(Record::Saved(document::hash(&bytes)));
+        }
         self.files
             .replace(&path, &bytes)
             .map_err(|error| Trouble::io(&path, error))?;

@@ -155,7 +155,9 @@ impl Loop {
                 Wake::Msg(Msg::Stirred) => {
                     if let Some(said) = self.model.desk.look_at_lock() {
                         self.model.say(said, true);
-                        self.scribe = Some(start_scribe(&mut self.model, &self.wake));
+                        if matches!(self.model.desk.access(), Access::Ours(_)) {
+                            self.scribe = Some(start_scribe(&mut self.model, &self.wake));
+                        }
                         self.dirty = true;
                     }
                     if !self.model.desk.look_at_disk() {
@@ -257,9 +259,12 @@ impl Loop {
                     },
                     Resolve::Theirs | Resolve::Both => {
                         let result = self.model.desk.take_theirs(how == Resolve::Both);
-                        // The journal begins anew, from their version.
-                        self.scribe = Some(start_scribe(&mut self.model, &self.wake));
-                        self.write_journal();
+                        // The journal begins anew, from their version; when theirs could not be
+                        // taken, ours goes on and so does its journal.
+                        if result.is_ok() {
+                            self.scribe = Some(start_scribe(&mut self.model, &self.wake));
+                            self.write_journal();
+                        }
                         update(
                             &mut self.model,
                             Msg::Done(result.map_err(|trouble| trouble.to_string())),

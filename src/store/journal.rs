@@ -267,8 +267,9 @@ impl Writer {
         }
         let written = self.write();
         if written.is_err() {
-            // The file may have vanished with its folder: it is opened anew next time.
-            (self.torn, self.out) = (true, None);
+            // The file may have vanished with its folder: it is opened anew next time. Only what
+            // was begun to be written can be torn.
+            (self.torn, self.out) = (self.torn || self.out.is_some(), None);
         } else {
             self.good += self.waiting.len() as u64;
             self.kept.push_str(&std::mem::take(&mut self.waiting));
@@ -286,6 +287,13 @@ impl Writer {
         } else {
             0
         };
+        if there > 0 && self.kept.is_empty() && !self.torn {
+            // Nothing of it is ours: it is another's, and stays as it is.
+            return Err(io::Error::new(
+                io::ErrorKind::AlreadyExists,
+                "another journal is in the way",
+            ));
+        }
         if there != self.good && !(self.torn && there > self.good) {
             // Removed or overwritten from under us: written anew as a whole.
             let whole = [self.kept.as_bytes(), self.waiting.as_bytes()].concat();

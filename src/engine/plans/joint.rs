@@ -238,7 +238,7 @@ impl Tabu<'_> {
             self.random = random;
             fullest = fullest.max(next.len());
             if next.len() > BEAM {
-                // Ties at random: the order of a hash is no preference.
+                // Which of the dearest are cut off must not always favour the same.
                 let start = self.random.below(next.len());
                 next.rotate_left(start);
                 next.sort_by_key(|way| way.cost);
