@@ -2,7 +2,7 @@
 
 use super::{Outcome, Search, code, notes};
 use crate::audit::Knowledge;
-use crate::clock::{DAY, Instant, Span};
+use crate::clock::Span;
 use crate::desk::{Desk, Settled};
 use crate::text::clean;
 use crate::words::{self, Progress};
@@ -182,27 +182,16 @@ fn days(settled: &Settled) -> Vec<Day> {
         .collect();
     let mut used: BTreeMap<chrono::NaiveDate, BTreeSet<&str>> = BTreeMap::new();
     for (at, span) in &survey.cores {
-        let last = zone.date(Instant((span.end - 1).0));
-        for date in zone
-            .date(span.start)
-            .iter_days()
-            .take_while(|date| *date <= last)
-        {
+        for date in zone.dates(*span) {
             let resources = used.entry(date).or_default();
             resources.extend(placed.get(&*survey.pieces[*at].id));
         }
     }
     used.into_iter()
-        .map(|(date, resources)| {
-            let start = zone.midnight(date);
-            let end = date
-                .succ_opt()
-                .map_or(start + DAY, |next| zone.midnight(next));
-            Day {
-                date: date.to_string(),
-                in_use: resources.len(),
-                clique: survey.load.most_within(Span { start, end }),
-            }
+        .map(|(date, resources)| Day {
+            date: date.to_string(),
+            in_use: resources.len(),
+            clique: survey.load.most_within(zone.day(date)),
         })
         .collect()
 }

@@ -1,6 +1,6 @@
 //! Civil time in an IANA zone, and back.
 
-use super::{Instant, YEARS};
+use super::{DAY, Instant, Span, YEARS};
 use chrono::{
     DateTime, Datelike, MappedLocalTime, NaiveDate, NaiveDateTime, NaiveTime, Offset, TimeDelta,
     TimeZone, Utc,
@@ -140,6 +140,23 @@ impl Zone {
     /// The first moment of a civil date (the earlier one if midnight occurs twice).
     pub fn midnight(self, date: NaiveDate) -> Instant {
         self.lenient(date.and_time(NaiveTime::MIN))
+    }
+
+    /// Every civil date that a span touches, in order.
+    pub fn dates(self, span: Span) -> impl Iterator<Item = NaiveDate> {
+        let last = self.date(span.end - 1);
+        self.date(span.start)
+            .iter_days()
+            .take_while(move |date| *date <= last)
+    }
+
+    /// A civil date as a span: a change of clock makes it longer or shorter.
+    pub fn day(self, date: NaiveDate) -> Span {
+        let start = self.midnight(date);
+        let end = date
+            .succ_opt()
+            .map_or(start + DAY, |next| self.midnight(next));
+        Span { start, end }
     }
 
     /// RFC 3339 with the local offset, as `2027-01-11T10:00:00+00:00`.

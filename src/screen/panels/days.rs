@@ -1,7 +1,7 @@
 //! The days strip: each day with its load, the floor, what is in use; Enter goes there.
 
 use super::sheet;
-use crate::clock::{DAY, Instant, Span};
+use crate::clock::Instant;
 use crate::screen::draw::put;
 use crate::screen::model::{Mode, Model};
 use chrono::NaiveDate;
@@ -26,6 +26,9 @@ pub(in crate::screen) fn days(model: &Model) -> &[Day] {
     model.days.get_or_init(|| work_out(model))
 }
 
+/// A piece is counted on so many dates at most.
+const MOST_DATES: usize = 400;
+
 fn work_out(model: &Model) -> Vec<Day> {
     let zone = model.timetable().settings.zone;
     let mut found: BTreeMap<NaiveDate, (Instant, usize, BTreeSet<usize>)> = BTreeMap::new();
@@ -36,13 +39,7 @@ fn work_out(model: &Model) -> Vec<Day> {
         .enumerate()
         .filter(|(_, piece)| !piece.withdrawn)
     {
-        let last = zone.date(piece.span.end - 1);
-        for date in zone
-            .date(piece.span.start)
-            .iter_days()
-            .take_while(|date| *date <= last)
-            .take(400)
-        {
+        for date in zone.dates(piece.span).take(MOST_DATES) {
             let start = piece.span.start.max(zone.midnight(date));
             let day = found.entry(date).or_insert((start, 0, BTreeSet::new()));
             day.0 = day.0.min(start);
@@ -59,24 +56,14 @@ fn work_out(model: &Model) -> Vec<Day> {
         .iter()
         .filter(|piece| settled.is_some_and(|s| s.counts(&piece.id)))
     {
-        let last = zone.date(piece.span.end - 1);
-        for date in zone
-            .date(piece.span.start)
-            .iter_days()
-            .take_while(|date| *date <= last)
-            .take(400)
-        {
+        for date in zone.dates(piece.span).take(MOST_DATES) {
             *counted.entry(date).or_default() += 1;
         }
     }
     found
         .into_iter()
         .map(|(date, (first, pieces, resources))| {
-            let start = zone.midnight(date);
-            let end = date
-                .succ_opt()
-                .map_or(start + DAY, |next| zone.midnight(next));
-            let load = load.map_or(0, |load| load.most_within(Span { start, end }));
+            let load = load.map_or(0, |load| load.most_within(zone.day(date)));
             let floor = load.max(counted.get(&date).copied().unwrap_or(0));
             Day {
                 floor,
