@@ -334,7 +334,7 @@ impl Solving<'_, '_> {
         let mut search = tabu::Tabu::new(self.problem, &skip, budget.seed);
         let mut aimed = None;
         let mut since_better = 0;
-        let mut width = 4;
+        let mut width = 4.0;
         while steps_left > 0 && !stop.stop() {
             let (left_out, in_use) = self.value(&self.best);
             if left_out == 0 && in_use == self.floor.value() {

@@ -2,7 +2,7 @@
 //! floor, by what, seconds, and memory so far. The data are not part of the project; they
 //! are looked for in `../shared/data` or the folder named in `FEWEST_DATA`.
 //!
-//! `cargo bench --bench proofs -- SET SECONDS [PART-OF-NAME]`, such as `keb137 10`.
+//! `cargo bench --bench proofs -- SET SECONDS [PART-OF-NAME [SEED]]`, such as `keb137 10`.
 //! Sources: Krishnamoorthy, Ernst, Baatar (EJOR 219, 2012) and Fages, Lapegue (CP 2013).
 #![allow(clippy::unwrap_used, reason = "a benchmark may panic")]
 #![allow(clippy::print_stdout, reason = "a benchmark prints what it measures")]
@@ -95,6 +95,7 @@ fn main() {
     let set = args.first().map_or("keb137", String::as_str);
     let seconds: f64 = args.get(1).map_or(10.0, |text| text.parse().unwrap());
     let part = args.get(2).map_or("", String::as_str);
+    let seed: u64 = args.get(3).map_or(1, |text| text.parse().unwrap());
     let root = std::env::var_os("FEWEST_DATA")
         .map_or_else(|| PathBuf::from("../shared/data"), PathBuf::from);
     let folder = root.join("smptsp");
@@ -126,7 +127,7 @@ fn main() {
         let until = Until(watch + Duration::from_secs_f64(seconds));
         let mut first = None;
         let budget = Budget {
-            seed: 1,
+            seed,
             steps: None,
             threads: 2,
         };

@@ -1,14 +1,14 @@
 //! Exact re-optimisation of a few resources at once: everything on them, a little of what has
 //! no place, and their stand-ins for rest are laid out anew by a sweep over time. The state
-//! after each piece is what runs on each of the resources; equal states are merged, the
-//! cheapest are kept (beam search, Lowerre 1976). A result that costs the same is taken too:
-//! a step sideways that the tabu search would not find.
+//! after each piece is, per resource, the rank of the end of what runs there; equal states
+//! are merged, the cheapest are kept (beam search, Lowerre 1976). A result that costs the
+//! same is taken too: a step sideways that the tabu search would not find.
 
 use super::NONE;
 use super::tabu::Tabu;
-use crate::lookup::FastMap;
+use crate::engine::random::Random;
 
-/// Most resources at once; a state is one number for each.
+/// Most resources at once; a state is one byte for each.
 const MOST: usize = 8;
 
 /// States kept after each piece.
@@ -17,48 +17,157 @@ const BEAM: usize = 300;
 /// Pieces without a place that are tried along.
 const ALONG: usize = 2;
 
-/// The stand-in that keeps a resource idle.
-const RESTS: u16 = u16::MAX;
+/// Most pieces laid out at once: their ends have ranks below [`RESTS`]. Where the resources
+/// hold more, a window of time is laid out and the rest stays.
+const MOST_PIECES: usize = 160;
 
-/// What runs on each resource: 0 for nothing, else the place of a piece in the list plus one.
-type State = [u16; MOST];
+/// The stand-in that keeps a resource idle, in place of a rank.
+const RESTS: u8 = u8::MAX;
+
+/// Slots of the table that finds equal states: a power of two well above what one layer
+/// can offer.
+const SLOTS: usize = 8192;
+
+/// Per resource the rank of the end of what runs there (0 for nothing), one byte each.
+type State = u64;
+
+fn rank(state: State, k: usize) -> u8 {
+    (state >> (8 * k)) as u8
+}
+
+fn with_rank(state: State, k: usize, rank: u8) -> State {
+    (state & !(0xff << (8 * k))) | (u64::from(rank) << (8 * k))
+}
 
 /// One way to a state.
+#[derive(Clone, Copy)]
 struct Way {
     state: State,
     cost: u64,
-    before: u32,
+    before: u16,
     /// The resource chosen for the last piece, or `MOST` when it was dropped.
     choice: u8,
 }
 
-impl Tabu<'_> {
-    /// So many attempts; stops early when everything has its place. `width` is the number of
-    /// resources at once and adapts itself.
-    pub(crate) fn rearrange(
-        &mut self,
-        attempts: u32,
-        width: &mut usize,
-        stop: &dyn crate::engine::Stopper,
-    ) {
-        for attempt in 0..attempts {
-            if self.done() || (attempt % 8 == 7 && stop.stop()) {
-                return;
-            }
-            let (items, resources) = self.neighbourhood(*width);
-            if resources.len() < 2 {
-                return;
-            }
-            let fullest = self.lay_out(&items, &resources);
-            if fullest >= BEAM {
-                *width = (*width - 1).max(2);
-            } else if fullest < BEAM / 4 {
-                *width = (*width + 1).min(MOST);
-            }
+/// A piece on the resources at hand: ranks are among the ends on that resource.
+#[derive(Clone, Copy, Default)]
+struct Here {
+    allowed: bool,
+    start: i64,
+    end: i64,
+    /// Its own rank.
+    rank: u8,
+    /// The highest rank that has ended when it starts.
+    free: u8,
+    /// The highest rank that has ended before anything from this piece on starts.
+    over: u8,
+}
+
+/// What is used again from one call to the next.
+pub(crate) struct Scratch {
+    pieces: Vec<[Here; MOST]>,
+    ends: Vec<i64>,
+    /// Ways of all layers, one after the other.
+    ways: Vec<Way>,
+    layers: Vec<usize>,
+    next: Vec<Way>,
+    order: Vec<(u64, u32)>,
+    /// Per slot the round it was used in, and a place in `next`.
+    slots: Vec<(u32, u32)>,
+    round: u32,
+}
+
+impl Scratch {
+    pub(crate) fn new() -> Scratch {
+        Scratch {
+            pieces: Vec::new(),
+            ends: Vec::new(),
+            ways: Vec::new(),
+            layers: Vec::new(),
+            next: Vec::new(),
+            order: Vec::new(),
+            slots: vec![(0, 0); SLOTS],
+            round: 0,
         }
     }
 
-    /// A few resources that could exchange pieces, by a walk from something without a place.
+    /// Offers a way to the next layer; of two to the same state the cheaper stays, ties at
+    /// random.
+    fn offer(&mut self, way: Way, random: &mut Random) {
+        let mut slot = (way.state.wrapping_mul(0x9e37_79b9_7f4a_7c15) >> 48) as usize % SLOTS;
+        loop {
+            let (round, at) = self.slots[slot];
+            if round != self.round {
+                self.slots[slot] = (self.round, self.next.len() as u32);
+                self.next.push(way);
+                return;
+            }
+            let known = &mut self.next[at as usize];
+            if known.state == way.state {
+                if way.cost < known.cost || (way.cost == known.cost && random.next() & 1 == 0) {
+                    *known = way;
+                }
+                return;
+            }
+            slot = (slot + 1) % SLOTS;
+        }
+    }
+
+    /// Keeps the cheapest of the next layer, ties at random, and moves on to it. Returns how
+    /// many there were.
+    fn advance(&mut self, random: &mut Random) -> usize {
+        let count = self.next.len();
+        self.layers.push(self.ways.len());
+        if count > BEAM {
+            self.order.clear();
+            for (at, way) in self.next.iter().enumerate() {
+                // The cost first; the low bits decide ties.
+                let key = way.cost << 16 | (random.next() & 0xffff);
+                self.order.push((key, at as u32));
+            }
+            self.order.select_nth_unstable(BEAM);
+            let kept = self.order[..BEAM].iter().map(|(_, at)| self.next[*at as usize]);
+            self.ways.extend(kept);
+        } else {
+            self.ways.extend_from_slice(&self.next);
+        }
+        self.next.clear();
+        self.round += 1;
+        count
+    }
+}
+
+impl Tabu<'_> {
+    /// Rearranges until `until` says so, or everything has its place; `width` is the number
+    /// of resources at once and adapts itself. Returns how many attempts there were.
+    pub(crate) fn rearrange(
+        &mut self,
+        attempts: u32,
+        width: &mut f64,
+        stop: &dyn crate::engine::Stopper,
+    ) {
+        let mut scratch = std::mem::replace(&mut self.scratch, Scratch::new());
+        for attempt in 0..attempts {
+            if self.done() || (attempt % 8 == 7 && stop.stop()) {
+                break;
+            }
+            let (items, resources) = self.neighbourhood(*width as usize);
+            if resources.len() < 2 {
+                break;
+            }
+            let fullest = self.lay_out(&mut scratch, &items, &resources);
+            // Slowly: one crowded neighbourhood says little about the next.
+            if fullest > BEAM {
+                *width = (*width - 0.1).max(2.0);
+            } else if fullest < BEAM / 3 {
+                *width = (*width + 0.1).min(MOST as f64);
+            }
+        }
+        self.scratch = scratch;
+    }
+
+    /// A few resources that could exchange pieces, by a walk from something without a place,
+    /// and the pieces to lay out on them, by start.
     fn neighbourhood(&mut self, width: usize) -> (Vec<u32>, Vec<usize>) {
         let mut resources: Vec<usize> = Vec::with_capacity(width);
         let mut along: Vec<u32> = Vec::new();
@@ -97,11 +206,12 @@ impl Tabu<'_> {
                 0 => along.first().copied(),
                 count => Some(self.rows[here][self.random.below(count)].2),
             };
-            if let Some(next) = item.and_then(|item| self.some_resource_for(item))
-                && !resources.contains(&next)
-            {
-                resources.push(next);
-            }
+            let Some(item) = item else { continue };
+            // Of two, the one with which more can be exchanged.
+            let two = [self.some_resource_for(item), self.some_resource_for(item)];
+            let next = two.into_iter().flatten();
+            let next = next.filter(|r| !resources.contains(r));
+            resources.extend(next.max_by_key(|r| self.exchanges(here, *r)));
         }
         let mut items = along;
         for r in &resources {
@@ -109,6 +219,21 @@ impl Tabu<'_> {
         }
         items.sort_unstable_by_key(|item| (self.problem.items[*item as usize].core, *item));
         (items, resources)
+    }
+
+    /// How many pieces on either resource the other could take, clashes aside.
+    fn exchanges(&self, a: usize, b: usize) -> usize {
+        let (class_a, class_b) = (self.problem.class_of[a], self.problem.class_of[b]);
+        let takes = |row: usize, class: u32| {
+            let items = self.rows[row].iter();
+            items
+                .filter(|(_, _, item)| {
+                    let choices = self.problem.choices(*item as usize);
+                    choices.binary_search(&class).is_ok()
+                })
+                .count()
+        };
+        takes(a, class_b) + takes(b, class_a)
     }
 
     fn some_resource_for(&mut self, item: u32) -> Option<usize> {
@@ -123,9 +248,9 @@ impl Tabu<'_> {
 
     /// Lays the pieces out on the resources as cheaply as the beam finds; returns how many
     /// states the fullest layer had.
-    fn lay_out(&mut self, items: &[u32], resources: &[usize]) -> usize {
-        if items.len() >= usize::from(RESTS) - 1 {
-            return BEAM;
+    fn lay_out(&mut self, scratch: &mut Scratch, items: &[u32], resources: &[usize]) -> usize {
+        if items.len() > MOST_PIECES {
+            return 0;
         }
         let count = resources.len();
         let resting = resources.iter().filter(|r| self.resting[**r]).count();
@@ -136,157 +261,129 @@ impl Tabu<'_> {
             .map(|item| u64::from(self.weight[*item as usize]))
             .sum();
         let bound = dropped + (rests - resting) as u64 * u64::from(self.rest_weight);
-        // Per resource and piece: its span there, if it may go there.
-        let span = |item: u32, r: usize| {
-            let class = self.problem.class_of[r];
-            let may = self
-                .problem
-                .choices(item as usize)
-                .binary_search(&class)
-                .is_ok();
-            may.then(|| self.problem.occupied(item as usize, class))
-                .map(|span| (span.start.0, span.end.0))
-        };
-        let spans: Vec<Vec<Option<(i64, i64)>>> = items
-            .iter()
-            .map(|item| resources.iter().map(|r| span(*item, *r)).collect())
-            .collect();
-        // The earliest start still to come on each resource: what ended by then is nothing.
-        let mut coming = vec![[i64::MAX; MOST]; items.len() + 1];
-        for at in (0..items.len()).rev() {
-            coming[at] = coming[at + 1];
-            for (k, span) in spans[at].iter().enumerate() {
-                if let Some((start, _)) = span {
-                    coming[at][k] = coming[at][k].min(*start);
-                }
-            }
-        }
-        let mut layers: Vec<Vec<Way>> = vec![self.beginnings(count, rests, bound)];
+        self.prepare(scratch, items, resources);
+        let mut random = self.random.clone();
+        scratch.ways.clear();
+        scratch.layers.clear();
+        self.beginnings(scratch, count, rests, bound);
         let mut fullest = 0;
         for (at, item) in items.iter().enumerate() {
             let weight = u64::from(self.weight[*item as usize]);
-            let mut found: FastMap<State, usize> = FastMap::default();
-            let mut next: Vec<Way> = Vec::new();
-            let mut offer = |way: Way, random: &mut crate::engine::random::Random| {
-                if way.cost > bound {
-                    return;
-                }
-                match found.entry(way.state) {
-                    std::collections::hash_map::Entry::Occupied(known) => {
-                        let known = &mut next[*known.get()];
-                        if way.cost < known.cost || (way.cost == known.cost && random.below(2) == 0)
-                        {
-                            *known = way;
-                        }
-                    }
-                    std::collections::hash_map::Entry::Vacant(place) => {
-                        place.insert(next.len());
-                        next.push(way);
+            let here = scratch.pieces[at];
+            // What has ended before anything still to come is nothing.
+            let later = scratch.pieces[at + 1];
+            let clear = |mut state: State| {
+                for (k, later) in later.iter().enumerate().take(count) {
+                    let running = rank(state, k);
+                    if running != RESTS && running <= later.over {
+                        state = with_rank(state, k, 0);
                     }
                 }
+                state
             };
-            let mut random = self.random.clone();
-            for (before, way) in layers[at].iter().enumerate() {
-                let clear = |mut state: State| {
-                    for (k, running) in state.iter_mut().enumerate().take(count) {
-                        let over = |place: u16| {
-                            spans[usize::from(place) - 1][k]
-                                .is_some_and(|(_, end)| end <= coming[at + 1][k])
-                        };
-                        if *running != 0 && *running != RESTS && over(*running) {
-                            *running = 0;
-                        }
-                    }
-                    state
-                };
-                let before = before as u32;
-                offer(
-                    Way {
-                        state: clear(way.state),
+            let first = scratch.layers[at];
+            let last = scratch.ways.len();
+            for place in first..last {
+                let way = scratch.ways[place];
+                let before = (place - first) as u16;
+                if way.cost + weight <= bound {
+                    let state = clear(way.state);
+                    let dropped = Way {
+                        state,
                         cost: way.cost + weight,
                         before,
                         choice: MOST as u8,
-                    },
-                    &mut random,
-                );
-                for k in 0..count {
-                    let Some((start, _)) = spans[at][k] else {
-                        continue;
                     };
-                    let free = match way.state[k] {
-                        0 => true,
-                        RESTS => false,
-                        place => {
-                            spans[usize::from(place) - 1][k].is_some_and(|(_, end)| end <= start)
-                        }
-                    };
-                    if free {
-                        let mut state = way.state;
-                        state[k] = at as u16 + 1;
-                        offer(
-                            Way {
-                                state: clear(state),
-                                cost: way.cost,
-                                before,
-                                choice: k as u8,
-                            },
-                            &mut random,
-                        );
+                    scratch.offer(dropped, &mut random);
+                }
+                for (k, here) in here.iter().enumerate().take(count) {
+                    if here.allowed && rank(way.state, k) <= here.free {
+                        let put = Way {
+                            state: clear(with_rank(way.state, k, here.rank)),
+                            cost: way.cost,
+                            before,
+                            choice: k as u8,
+                        };
+                        scratch.offer(put, &mut random);
                     }
                 }
             }
-            self.random = random;
-            fullest = fullest.max(next.len());
-            if next.len() > BEAM {
-                // Which of the dearest are cut off must not always favour the same.
-                let start = self.random.below(next.len());
-                next.rotate_left(start);
-                next.sort_by_key(|way| way.cost);
-                next.truncate(BEAM);
-            }
-            if next.is_empty() {
+            let found = scratch.advance(&mut random);
+            fullest = fullest.max(found);
+            if found == 0 {
+                self.random = random;
                 return fullest;
             }
-            layers.push(next);
         }
-        self.take_over(items, resources, &layers);
+        self.random = random;
+        self.take_over(scratch, items, resources);
         fullest
     }
 
-    /// Which of the resources rest from the beginning: every way to choose them.
-    fn beginnings(&self, count: usize, rests: usize, bound: u64) -> Vec<Way> {
-        let ways = (0u32..1 << count)
-            .filter(|set| set.count_ones() as usize <= rests)
-            .map(|set| {
-                let mut state: State = [0; MOST];
-                for (k, place) in state.iter_mut().enumerate().take(count) {
-                    if set & (1 << k) != 0 {
-                        *place = RESTS;
-                    }
+    /// Spans and ranks of the pieces on the resources; one more entry stands for the end.
+    fn prepare(&self, scratch: &mut Scratch, items: &[u32], resources: &[usize]) {
+        scratch.pieces.clear();
+        scratch.pieces.resize(items.len() + 1, [Here::default(); MOST]);
+        for (k, r) in resources.iter().enumerate() {
+            let class = self.problem.class_of[*r];
+            scratch.ends.clear();
+            for (item, here) in items.iter().zip(&mut scratch.pieces) {
+                let choices = self.problem.choices(*item as usize);
+                if choices.binary_search(&class).is_ok() {
+                    let span = self.problem.occupied(*item as usize, class);
+                    here[k].allowed = true;
+                    (here[k].start, here[k].end) = (span.start.0, span.end.0);
+                    scratch.ends.push(span.end.0);
                 }
-                let missing = rests - set.count_ones() as usize;
-                Way {
-                    state,
-                    cost: missing as u64 * u64::from(self.rest_weight),
-                    before: 0,
-                    choice: MOST as u8,
+            }
+            scratch.ends.sort_unstable();
+            scratch.ends.dedup();
+            let ended = |by: i64| scratch.ends.partition_point(|end| *end <= by) as u8;
+            let mut coming = i64::MAX;
+            for here in scratch.pieces.iter_mut().rev() {
+                let here = &mut here[k];
+                if here.allowed {
+                    coming = coming.min(here.start);
+                    here.rank = ended(here.end);
+                    here.free = ended(here.start);
                 }
-            });
-        ways.filter(|way| way.cost <= bound).collect()
+                here.over = ended(coming);
+            }
+        }
     }
 
-    fn take_over(&mut self, items: &[u32], resources: &[usize], layers: &[Vec<Way>]) {
-        let Some(last) = layers.last() else { return };
-        let Some(mut at) = (0..last.len()).min_by_key(|at| last[*at].cost) else {
-            return;
-        };
-        let mut choices = vec![MOST as u8; items.len()];
-        for layer in (1..layers.len()).rev() {
-            let way = &layers[layer][at];
-            choices[layer - 1] = way.choice;
-            at = way.before as usize;
+    /// Which of the resources rest from the beginning: every way to choose them.
+    fn beginnings(&self, scratch: &mut Scratch, count: usize, rests: usize, bound: u64) {
+        scratch.layers.push(0);
+        for set in 0u32..1 << count {
+            let resting = set.count_ones() as usize;
+            let cost = rests.saturating_sub(resting) as u64 * u64::from(self.rest_weight);
+            if resting > rests || cost > bound {
+                continue;
+            }
+            let chosen = (0..count).filter(|k| set & (1 << k) != 0);
+            scratch.ways.push(Way {
+                state: chosen.fold(0, |state, k| with_rank(state, k, RESTS)),
+                cost,
+                before: 0,
+                choice: MOST as u8,
+            });
         }
-        let rests = layers[0][at].state;
+        scratch.next.clear();
+        scratch.round += 1;
+    }
+
+    fn take_over(&mut self, scratch: &Scratch, items: &[u32], resources: &[usize]) {
+        let last = scratch.layers.last().copied().unwrap_or(0);
+        let cheapest = (last..scratch.ways.len()).min_by_key(|at| scratch.ways[*at].cost);
+        let Some(mut at) = cheapest else { return };
+        let mut choices = vec![MOST as u8; items.len()];
+        for layer in (1..scratch.layers.len()).rev() {
+            let way = &scratch.ways[at];
+            choices[layer - 1] = way.choice;
+            at = scratch.layers[layer - 1] + usize::from(way.before);
+        }
+        let rests = scratch.ways[at].state;
         for r in resources {
             while let Some((_, _, item)) = self.rows[*r].last().copied() {
                 self.eject(item, *r);
@@ -296,7 +393,7 @@ impl Tabu<'_> {
             }
         }
         for (k, r) in resources.iter().enumerate() {
-            if rests[k] == RESTS {
+            if rank(rests, k) == RESTS {
                 self.resting[*r] = true;
                 self.rest_unplaced -= 1;
             }

@@ -70,6 +70,7 @@ pub(crate) struct Tabu<'a> {
     low: Option<(usize, Assignment, Vec<bool>)>,
     step: u64,
     pub(super) random: Random,
+    pub(super) scratch: super::joint::Scratch,
 }
 
 impl<'a> Tabu<'a> {
@@ -134,6 +135,7 @@ impl<'a> Tabu<'a> {
             low: None,
             step: 0,
             random: Random::seeded(seed),
+            scratch: super::joint::Scratch::new(),
         })
     }
 
