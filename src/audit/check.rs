@@ -289,7 +289,13 @@ fn named<'a>(
 }
 
 fn floor(facts: &Facts<'_>, floor: &FloorProof, refusals: &mut Vec<Refusal>) -> usize {
+    let before = refusals.len();
     match floor {
+        FloorProof::Prices {
+            unit,
+            prices: priced,
+            value,
+        } => prices(facts, *unit, priced, *value, refusals),
         FloorProof::Clique { at, pieces } => {
             for piece in named(facts, pieces, refusals) {
                 running(facts, piece, *at, refusals);
@@ -307,7 +313,58 @@ fn floor(facts: &Facts<'_>, floor: &FloorProof, refusals: &mut Vec<Refusal>) -> 
             }
         }
     }
+    if refusals.len() > before {
+        return 0;
+    }
     floor.value()
+}
+
+/// Recounts a floor by prices with whole numbers: the dearest chain of each resource by a
+/// sweep over ends.
+fn prices(
+    facts: &Facts<'_>,
+    unit: i64,
+    priced: &[(Arc<str>, i64)],
+    claimed: usize,
+    refusals: &mut Vec<Refusal>,
+) {
+    let ids: Vec<Arc<str>> = priced.iter().map(|(id, _)| Arc::clone(id)).collect();
+    let pieces = named(facts, &ids, refusals);
+    let fits = |price: &i64| (1..=MOST_PRICE).contains(price);
+    if !fits(&unit) || !priced.iter().all(|(_, price)| fits(price)) || ids.len() != pieces.len() {
+        refusals.push(Refusal::BadPrices);
+        return;
+    }
+    let all = &facts.timetable.resources().all;
+    let mut chains: Vec<Vec<(Span, i64)>> = vec![Vec::new(); all.len()];
+    for (piece, (_, price)) in pieces.iter().zip(priced) {
+        for at in facts.least(piece).1 {
+            chains[at].push((Facts::occupied(piece, &all[at]), *price));
+        }
+    }
+    let mut value: i128 = priced.iter().map(|(_, price)| i128::from(*price)).sum();
+    for chain in &mut chains {
+        value -= i128::from((dearest(chain) - unit).max(0));
+    }
+    let unit = i128::from(unit);
+    let proved = usize::try_from((value.max(0) + unit - 1) / unit).unwrap_or(usize::MAX);
+    if proved < claimed {
+        refusals.push(Refusal::OtherFloor { claimed, proved });
+    }
+}
+
+/// No single price may be above this, so that sums stay far from overflow.
+const MOST_PRICE: i64 = 1 << 40;
+
+/// The most that spans which do not overlap are worth together.
+fn dearest(chain: &mut [(Span, i64)]) -> i64 {
+    chain.sort_unstable_by_key(|(span, _)| span.end);
+    let mut best = vec![0i64];
+    for (at, (span, price)) in chain.iter().enumerate() {
+        let before = chain[..at].partition_point(|(other, _)| other.end <= span.start);
+        best.push(best[at].max(best[before] + price));
+    }
+    best[chain.len()]
 }
 
 /// Refuses when some resource could take both pieces.

@@ -81,6 +81,9 @@ pub enum Refusal {
     /// A Hall violation without excess.
     #[error("a claimed shortage has enough resources")]
     NoShortage,
+    /// Prices that are not whole numbers above 0, or far too large.
+    #[error("the prices of the bound must be whole numbers above 0 (and below 2^40)")]
+    BadPrices,
     /// The plan file says a floor that its proof does not give.
     #[error("the plan file claims at least {claimed}, its proof gives {proved}")]
     OtherFloor {

@@ -72,13 +72,38 @@ pub enum FloorProof {
         /// The pieces.
         pieces: Vec<Arc<str>>,
     },
+    /// A whole price for each of these pieces, in units of which one resource costs `unit`.
+    /// No resource can take pieces at once worth more than its dearest chain; the prices
+    /// together, less what each resource could take beyond `unit`, divided by `unit` and
+    /// rounded up, is a lower bound (Lagrangian relaxation; Geoffrion 1974).
+    Prices {
+        /// The price of one resource, at least 1.
+        unit: i64,
+        /// The pieces and their prices, all above 0.
+        prices: Vec<(Arc<str>, i64)>,
+        /// The number of resources they are claimed to prove.
+        value: usize,
+    },
 }
 
 impl FloorProof {
-    /// The number of resources it proves to be needed.
+    /// The number of resources it proves, or claims to prove, to be needed.
     pub fn value(&self) -> usize {
         match self {
             FloorProof::Clique { pieces, .. } | FloorProof::Incompatible { pieces } => pieces.len(),
+            FloorProof::Prices { value, .. } => *value,
+        }
+    }
+
+    /// The pieces it speaks of.
+    pub fn pieces(&self) -> Vec<Arc<str>> {
+        match self {
+            FloorProof::Clique { pieces, .. } | FloorProof::Incompatible { pieces } => {
+                pieces.clone()
+            }
+            FloorProof::Prices { prices, .. } => {
+                prices.iter().map(|(piece, _)| Arc::clone(piece)).collect()
+            }
         }
     }
 
@@ -87,15 +112,7 @@ impl FloorProof {
         match self {
             FloorProof::Clique { .. } => "clique",
             FloorProof::Incompatible { .. } => "incompatible",
-        }
-    }
-}
-
-impl Answer {
-    /// The pieces that its floor counts.
-    pub fn floor_pieces(&self) -> &[Arc<str>] {
-        match &self.floor {
-            FloorProof::Clique { pieces, .. } | FloorProof::Incompatible { pieces } => pieces,
+            FloorProof::Prices { .. } => "prices",
         }
     }
 }

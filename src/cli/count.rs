@@ -219,20 +219,21 @@ fn text(settled: &Settled, report: &Report<'_>) -> String {
             words::list(&peak.pieces, 12)
         );
     }
-    if report.floor_by == "incompatible" {
-        let names: Vec<&str> = settled
-            .answer()
-            .floor_pieces()
-            .iter()
-            .map(|id| &**id)
-            .collect();
-        let _ = writeln!(
-            out,
-            "at least {}: no two of these can share a {}, by time or by what they may use: {}",
-            report.floor,
-            clean(&noun.one),
-            words::list(&names, 12)
-        );
+    let names = settled.answer().floor.pieces();
+    let names: Vec<&str> = names.iter().map(|id| &**id).collect();
+    let one = clean(&noun.one);
+    let ground = match report.floor_by {
+        "incompatible" => Some(format!(
+            "no two of these can share a {one}, by time or by what they may use"
+        )),
+        "prices" => Some(format!(
+            "every {one} has a best that it could take of these, and fewer cannot take them all"
+        )),
+        _ => None,
+    };
+    if let Some(ground) = ground {
+        let list = words::list(&names, 12);
+        let _ = writeln!(out, "at least {}: {ground}: {list}", report.floor);
     }
     let _ = writeln!(out, "\n{:<10}  {:>6}  {:>6}", "day", "in use", "clique");
     for day in report.days.iter().take(MOST_DAYS) {

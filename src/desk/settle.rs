@@ -73,7 +73,7 @@ pub fn settle(
 ) -> Result<Settled, Vec<Refusal>> {
     let receipt = audit::check(&survey.timetable, &answer)?;
     Ok(Settled {
-        counted: answer.floor_pieces().iter().cloned().collect(),
+        counted: answer.floor.pieces().into_iter().collect(),
         generation,
         answer,
         receipt,

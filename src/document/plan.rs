@@ -88,7 +88,12 @@ struct RawProof {
     by: String,
     #[serde(default, skip_serializing_if = "Option::is_none")]
     at: Option<String>,
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    unit: Option<i64>,
+    #[serde(default, skip_serializing_if = "Vec::is_empty")]
     pieces: Vec<String>,
+    #[serde(default, skip_serializing_if = "Vec::is_empty")]
+    prices: Vec<i64>,
     #[serde(default, skip_serializing_if = "Vec::is_empty")]
     shortage: Vec<RawShortage>,
 }
@@ -135,15 +140,24 @@ impl PlanFile {
     pub fn print(&self, zone: Zone, because: &dyn Fn(&Unplaced) -> String) -> String {
         let time = |at: Instant| zone.rfc3339(at);
         let proof = self.floor.as_ref().map(|floor| {
-            let (at, pieces) = match floor {
-                FloorProof::Clique { at, pieces } => (Some(time(*at)), pieces),
-                FloorProof::Incompatible { pieces } => (None, pieces),
-            };
             RawProof {
                 floor: floor.value(),
                 by: floor.name().into(),
-                at,
-                pieces: ids(pieces),
+                at: match floor {
+                    FloorProof::Clique { at, .. } => Some(time(*at)),
+                    _ => None,
+                },
+                unit: match floor {
+                    FloorProof::Prices { unit, .. } => Some(*unit),
+                    _ => None,
+                },
+                pieces: ids(&floor.pieces()),
+                prices: match floor {
+                    FloorProof::Prices { prices, .. } => {
+                        prices.iter().map(|(_, price)| *price).collect()
+                    }
+                    _ => Vec::new(),
+                },
                 shortage: self
                     .violations
                     .iter()
@@ -244,12 +258,19 @@ impl PlanFile {
         let (mut floor, mut violations) = (None, Vec::new());
         if let Some(proof) = raw.proof {
             let pieces = shared(proof.pieces);
-            let proved = match (&*proof.by, proof.at) {
-                ("clique", Some(at)) => FloorProof::Clique {
+            let proved = match (&*proof.by, proof.at, proof.unit, &*proof.prices) {
+                ("clique", Some(at), None, []) => FloorProof::Clique {
                     at: time(&at)?,
                     pieces,
                 },
-                ("incompatible", None) => FloorProof::Incompatible { pieces },
+                ("incompatible", None, None, []) => FloorProof::Incompatible { pieces },
+                ("prices", None, Some(unit), prices) if prices.len() == pieces.len() => {
+                    FloorProof::Prices {
+                        unit,
+                        prices: pieces.into_iter().zip(prices.iter().copied()).collect(),
+                        value: proof.floor,
+                    }
+                }
                 _ => {
                     return Err(fail(
                         0..0,

@@ -1,8 +1,10 @@
 //! The anytime loop: a plan at once, then better plans and better floors until they meet
 //! or somebody says stop. Every improvement goes out through a callback.
 
+use super::bounds::ladder::Ladder;
 use super::bounds::{clique, hall, incompatible};
-use super::plans::{Assignment, NONE, align, alike, greedy, keep, rows, tabu};
+use super::plans::slices::{Known, Plans, SLICE, Slice};
+use super::plans::{Assignment, NONE, align, alike, greedy, keep, rows};
 use super::{Problem, Stopper};
 use crate::claim::{Answer, FloorProof, HallViolation, Placement, Plan, Reason, Unplaced};
 use crate::lookup::FastMap;
@@ -80,16 +82,6 @@ impl Default for Budget {
     }
 }
 
-/// Steps of the plan search between two looks at the floors.
-const SLICE: u64 = 5_000;
-
-/// Rearrangements after each slice.
-const REARRANGED: u32 = 150;
-
-/// When some pieces provably cannot be placed, the count of the rest has no floor of its
-/// own to meet; after so many steps without a better one it is left.
-const ENOUGH_FOR_THE_REST: u64 = 200_000;
-
 /// Searches until proved, stopped or out of budget. `found` gets the first answer and then
 /// every better one; the last of them is also returned.
 pub fn solve(
@@ -133,10 +125,7 @@ struct Solving<'a, 'f> {
 impl Solving<'_, '_> {
     /// Less weight left out first, then fewer resources.
     fn value(&self, on: &[u32]) -> (u64, usize) {
-        (
-            rows::left_out(self.problem, on),
-            rows::in_use(self.problem, on),
-        )
+        rows::value(self.problem, on)
     }
 
     /// A plan at once: what was there before, as far as it still fits; where everything is
@@ -280,155 +269,203 @@ impl Solving<'_, '_> {
     fn improve(&mut self, budget: Budget, stop: &(dyn Stopper + Sync)) {
         let start: Vec<usize> = match &self.floor {
             FloorProof::Clique { at, .. } => self.problem.running(*at).collect(),
-            FloorProof::Incompatible { .. } => incompatible::by_groups(self.problem),
+            _ => incompatible::by_groups(self.problem),
         };
         let start: Vec<usize> = start
             .into_iter()
             .filter(|item| !self.problem.choices(*item).is_empty())
             .collect();
-        let seed = budget.seed;
-        let mut floors = Floors {
-            problem: self.problem,
-            start,
-            seed,
-            search: None,
-            wanted: true,
-        };
-        if budget.threads < 2 {
-            return self.plans(budget, stop, &mut |solving: &mut Self| {
-                floors
-                    .step(stop)
-                    .is_some_and(|clique| solving.raise(&clique))
-            });
-        }
-        let news: Mutex<Option<Vec<usize>>> = Mutex::new(None);
         let over = super::Flag::default();
         let both = BothRefs(stop, &over);
-        std::thread::scope(|scope| {
-            scope.spawn(|| {
-                while !both.stop() && floors.wanted {
-                    if let Some(clique) = floors.step(&both)
-                        && let Ok(mut news) = news.lock()
-                    {
-                        *news = Some(clique);
-                    }
+        let shared = Shared {
+            problem: self.problem,
+            out_floor: self.out_floor(),
+            over: over.clone(),
+            state: Mutex::new(State {
+                value: self.value(&self.best),
+                best: self.best.clone(),
+                floor: self.floor.clone(),
+                news: false,
+            }),
+        };
+        let mut ladder = Ladder::new(self.problem, start, budget.seed);
+        if budget.threads < 2 {
+            let mut pace = Pace::default();
+            self.plans(budget, &shared, &both, &mut || {
+                if pace.floors_next(&ladder) {
+                    shared.climb(&mut ladder, &both);
                 }
             });
-            self.plans(budget, stop, &mut |solving: &mut Self| {
-                let clique = news.lock().ok().and_then(|mut news| news.take());
-                clique.is_some_and(|clique| solving.raise(&clique))
-            });
+            return;
+        }
+        std::thread::scope(|scope| {
+            scope.spawn(|| shared.help(ladder, budget.seed, &both));
+            self.plans(budget, &shared, &both, &mut || {});
             over.raise();
         });
     }
 
-    /// Slices of the plan search, with a look at the floors (`raised`) after each.
+    /// Slices of the plan search, telling whoever asked of everything new; `between` runs
+    /// after each.
     fn plans(
         &mut self,
         budget: Budget,
-        stop: &(dyn Stopper + Sync),
-        raised: &mut dyn FnMut(&mut Self) -> bool,
+        shared: &Shared<'_>,
+        stop: &dyn Stopper,
+        between: &mut dyn FnMut(),
     ) {
         let mut steps_left = budget.steps.unwrap_or(u64::MAX);
-        let mut skip = vec![false; self.problem.items.len()];
-        let mut search = tabu::Tabu::new(self.problem, &skip, budget.seed);
-        let mut aimed = None;
-        let mut since_better = 0;
-        let mut width = 4.0;
+        let mut plans = Plans::new(self.problem, budget.seed);
         while steps_left > 0 && !stop.stop() {
-            let (left_out, in_use) = self.value(&self.best);
-            if left_out == 0 && in_use == self.floor.value() {
-                return;
-            }
-            // Provably no more can be placed: the rest is worth a better count all the same.
-            let rest = left_out > 0 && left_out == self.out_floor();
-            if rest && !skip.iter().any(|skipped| *skipped) {
-                skip = self.best.iter().map(|resource| *resource == NONE).collect();
-                search = tabu::Tabu::new(self.problem, &skip, budget.seed);
-                aimed = None;
-            }
-            if rest && (in_use == 0 || since_better >= ENOUGH_FOR_THE_REST) {
-                return;
-            }
-            let target = if left_out > 0 && !rest {
-                self.problem.resources.len()
-            } else {
-                in_use - 1
-            };
             let slice = SLICE.min(steps_left);
             steps_left -= slice;
-            since_better += slice;
-            if let Some(search) = &mut search {
-                if aimed != Some(target) {
-                    if !search.aim(&self.best, target, stop) {
-                        return;
-                    }
-                    aimed = Some(target);
-                }
-                let mut least = left_out;
-                let mut better: Option<Assignment> = None;
-                let placing = left_out > 0 && !rest;
-                if placing {
-                    search.run(slice, stop, &mut |left, on| {
-                        if left < least {
-                            least = left;
-                            better = Some(on.to_vec());
-                        }
-                    });
-                } else {
-                    // Near the end what is missing is one piece that no chain of ejections
-                    // brings in: then several resources are laid out anew together.
-                    search.run_and_return(slice, stop);
-                }
-                if !search.done() {
-                    search.rearrange(REARRANGED, &mut width, stop);
-                    if placing && search.left_out < least {
-                        better = Some(search.on.clone());
-                    }
-                }
-                if search.done() {
-                    better = Some(search.on.clone());
-                }
-                if let Some(better) = better
-                    && self.value(&better) < self.value(&self.best)
-                {
-                    self.take(better);
-                    since_better = 0;
-                    aimed = None;
-                    self.report();
-                }
-            } else if !stop.stop() {
-                // Too large for the tables: only the floors can still do something.
+            let more = shared.plan(&mut plans, slice, stop);
+            if plans.too_large() && !stop.stop() {
+                // Only the floors can still do something.
                 std::thread::sleep(std::time::Duration::from_millis(1));
             }
-            if raised(self) {
-                self.report();
+            self.hear(shared);
+            if !more {
+                return;
+            }
+            between();
+            self.hear(shared);
+        }
+        self.hear(shared);
+    }
+
+    /// Takes over what is new, and passes it on.
+    fn hear(&mut self, shared: &Shared<'_>) {
+        let Some(mut state) = shared.state.lock().ok().filter(|state| state.news) else {
+            return;
+        };
+        state.news = false;
+        let (best, floor) = (state.best.clone(), state.floor.clone());
+        drop(state);
+        self.floor = floor;
+        if best != self.best {
+            self.take(best);
+        }
+        self.report();
+    }
+}
+
+/// What the threads know together.
+struct State {
+    best: Assignment,
+    value: (u64, usize),
+    floor: FloorProof,
+    /// Something has changed since it was last told.
+    news: bool,
+}
+
+/// What the threads share.
+struct Shared<'a> {
+    problem: &'a Problem,
+    out_floor: u64,
+    /// Raised when plan and floor meet.
+    over: super::Flag,
+    state: Mutex<State>,
+}
+
+impl Shared<'_> {
+    /// Changes the state; when plan and floor have met, everybody stops.
+    fn change(&self, change: impl FnOnce(&mut State) -> bool) {
+        let Ok(mut state) = self.state.lock() else {
+            return;
+        };
+        state.news |= change(&mut state);
+        if state.value == (0, state.floor.value()) {
+            self.over.raise();
+        }
+    }
+
+    /// One slice of the plan search; whether it may give more.
+    fn plan(&self, plans: &mut Plans<'_>, steps: u64, stop: &dyn Stopper) -> bool {
+        let Ok(state) = self.state.lock() else {
+            return false;
+        };
+        let (best, value) = (state.best.clone(), state.value);
+        drop(state);
+        let known = Known {
+            best: &best,
+            value,
+            out_floor: self.out_floor,
+        };
+        match plans.slice(known, steps, stop) {
+            Slice::Over => return false,
+            Slice::Nothing => {}
+            Slice::Better(best) => self.change(|state| {
+                let value = rows::value(self.problem, &best);
+                let better = value < state.value;
+                if better {
+                    (state.best, state.value) = (best, value);
+                }
+                better
+            }),
+        }
+        true
+    }
+
+    /// One slice of the floors.
+    fn climb(&self, ladder: &mut Ladder<'_>, stop: &dyn Stopper) {
+        let Ok(state) = self.state.lock() else { return };
+        let floor = state.floor.value();
+        let (left_out, in_use) = state.value;
+        drop(state);
+        // With something left out, the question is whether everything can be placed at all.
+        let aim = match left_out {
+            0 => in_use,
+            _ => self.problem.resources.len() + 1,
+        };
+        if floor >= aim {
+            return;
+        }
+        if let Some(proof) = ladder.slice(floor, aim, stop) {
+            self.change(|state| {
+                let higher = proof.value() > state.floor.value();
+                if higher {
+                    state.floor = proof;
+                }
+                higher
+            });
+        }
+    }
+
+    /// The second thread: floors as long as they give something, else plans from another
+    /// seed.
+    fn help(&self, mut ladder: Ladder<'_>, seed: u64, stop: &dyn Stopper) {
+        let mut plans: Option<Plans<'_>> = None;
+        let mut pace = Pace::default();
+        while !stop.stop() {
+            if pace.floors_next(&ladder) {
+                self.climb(&mut ladder, stop);
+                continue;
+            }
+            let plans = plans.get_or_insert_with(|| Plans::new(self.problem, !seed));
+            if !self.plan(plans, SLICE, stop) || plans.too_large() {
+                if ladder.spent() {
+                    return;
+                }
+                self.climb(&mut ladder, stop);
             }
         }
     }
 }
 
-/// The floor search, made when it is first needed.
-struct Floors<'a> {
-    problem: &'a Problem,
-    start: Vec<usize>,
-    seed: u64,
-    search: Option<incompatible::Search>,
-    wanted: bool,
+/// How time is shared out between floors and plans: in turn, until the floors are stale.
+#[derive(Default)]
+struct Pace {
+    turns: u32,
 }
 
-impl Floors<'_> {
-    /// A few climbs; the clique when it grew.
-    fn step(&mut self, stop: &dyn Stopper) -> Option<Vec<usize>> {
-        if !self.wanted {
-            return None;
+impl Pace {
+    fn floors_next(&mut self, ladder: &Ladder<'_>) -> bool {
+        if ladder.spent() {
+            return false;
         }
-        if self.search.is_none() {
-            self.search = incompatible::Search::new(self.problem, &self.start, self.seed, stop);
-            self.wanted = self.search.is_some();
-        }
-        let search = self.search.as_mut()?;
-        search.climb().then(|| search.best.clone())
+        self.turns += 1;
+        self.turns.is_multiple_of(if ladder.stale() { 8 } else { 2 })
     }
 }
 

@@ -1,9 +1,13 @@
-//! How much is proved, and how fast, on published instances: one line each with answer,
-//! floor, by what, seconds, and memory so far. The data are not part of the project; they
-//! are looked for in `../shared/data` or the folder named in `FEWEST_DATA`.
+//! How much is proved, and how fast: one line per instance with answer, floor, by what,
+//! seconds, and memory so far.
 //!
-//! `cargo bench --bench proofs -- SET SECONDS [PART-OF-NAME [SEED]]`, such as `keb137 10`.
-//! Sources: Krishnamoorthy, Ernst, Baatar (EJOR 219, 2012) and Fages, Lapegue (CP 2013).
+//! `cargo bench --bench proofs -- SET SECONDS [PART-OF-NAME [SEED]]`, such as `keb137 10`
+//! or `shifts30 20`: published instances (Krishnamoorthy, Ernst, Baatar, EJOR 219, 2012;
+//! Fages, Lapegue, CP 2013). The data are not part of the project; they are looked for in
+//! `../shared/data` or the folder named in `FEWEST_DATA`.
+//!
+//! `cargo bench --bench proofs -- family-N SECONDS [PART-OF-NAME [SEED]]`: twenty timetables
+//! of N requests as `tests/family.rs` describes them, with answers known by construction.
 #![allow(clippy::unwrap_used, reason = "a benchmark may panic")]
 #![allow(clippy::print_stdout, reason = "a benchmark prints what it measures")]
 
@@ -15,6 +19,9 @@ use fewest::timetable::{Listed, Named, Request, Settings, Timetable};
 use std::path::{Path, PathBuf};
 use std::sync::Arc;
 use std::time::{Duration, Instant as Watch};
+
+#[path = "../family.rs"]
+mod family;
 
 /// Reads an instance: tasks as requests, workers as resources, qualifications as `only`.
 fn read(path: &Path) -> Timetable {
@@ -87,6 +94,60 @@ fn memory() -> u64 {
         >> 10
 }
 
+/// An instance with what is known of it.
+struct Instance {
+    name: String,
+    timetable: Timetable,
+    /// Proved bounds on the answer.
+    floor: usize,
+    best: usize,
+}
+
+/// Seeds of the family in a benchmark.
+const SEEDS: std::ops::Range<u64> = 1..21;
+
+fn made(n: usize, part: &str) -> Vec<Instance> {
+    let made = SEEDS.map(|seed| (seed, family::make(n, seed)));
+    made.map(|(seed, made)| {
+        if let Ok(folder) = std::env::var("FEWEST_DUMP") {
+            let name = format!("{folder}/{}-{n}-{seed:02}.toml", made.kind);
+            std::fs::write(name, &made.text).unwrap();
+        }
+        let read = fewest::document::read("family.toml", made.text.as_bytes());
+        Instance {
+            name: format!("{}-{n}-{seed:02}_", made.kind),
+            timetable: read.unwrap_or_else(|mistakes| panic!("{mistakes}")).timetable,
+            floor: made.answer,
+            best: made.answer,
+        }
+    })
+    .filter(|instance| instance.name.contains(part))
+    .collect()
+}
+
+/// The published instances; `None` when they are not here.
+fn published(set: &str, part: &str) -> Option<Vec<Instance>> {
+    let root = std::env::var_os("FEWEST_DATA")
+        .map_or_else(|| PathBuf::from("../shared/data"), PathBuf::from);
+    let folder = root.join("smptsp");
+    let Ok(answers) = std::fs::read_to_string(folder.join("answers.csv")) else {
+        println!(
+            "SKIPPED: {} is not here; name its folder in FEWEST_DATA",
+            folder.display()
+        );
+        return None;
+    };
+    let rows = answers.lines().skip(1).map(|line| line.split(',').collect());
+    let wanted = rows.filter(|cells: &Vec<&str>| cells[0] == set && cells[1].contains(part));
+    let instances = wanted.map(|cells| Instance {
+        name: cells[1].into(),
+        timetable: read(&folder.join(set).join(format!("{}.dat", cells[1]))),
+        floor: cells[5].parse().unwrap(),
+        best: cells[6].parse().unwrap(),
+    });
+    Some(instances.collect())
+}
+
 fn main() {
     let args: Vec<String> = std::env::args()
         .skip(1)
@@ -96,30 +157,23 @@ fn main() {
     let seconds: f64 = args.get(1).map_or(10.0, |text| text.parse().unwrap());
     let part = args.get(2).map_or("", String::as_str);
     let seed: u64 = args.get(3).map_or(1, |text| text.parse().unwrap());
-    let root = std::env::var_os("FEWEST_DATA")
-        .map_or_else(|| PathBuf::from("../shared/data"), PathBuf::from);
-    let folder = root.join("smptsp");
-    let Ok(answers) = std::fs::read_to_string(folder.join("answers.csv")) else {
-        println!(
-            "SKIPPED: {} is not here; name its folder in FEWEST_DATA",
-            folder.display()
-        );
-        return;
+    let instances = match set.strip_prefix("family-") {
+        Some(n) => made(n.parse().unwrap(), part),
+        None => match published(set, part) {
+            Some(instances) => instances,
+            None => return,
+        },
     };
     println!(
-        "{:<30} {:>6} {:>6} {:>12} {:>8} {:>9} {:>9} {:>6}",
-        "instance", "answer", "floor", "by", "state", "first ms", "seconds", "MiB"
+        "{:<30} {:>6} {:>6} {:>6} {:>12} {:>8} {:>9} {:>9} {:>6}",
+        "instance", "answer", "floor", "clique", "by", "state", "first ms", "seconds", "MiB"
     );
-    let (mut proved, mut all, mut times, mut firsts) = (0, 0, Vec::new(), Vec::new());
-    for line in answers.lines().skip(1) {
-        let cells: Vec<&str> = line.split(',').collect();
-        if cells[0] != set || !cells[1].contains(part) {
-            continue;
-        }
-        let timetable = read(&folder.join(set).join(format!("{}.dat", cells[1])));
+    let (mut proved, mut all, mut above) = (0, 0, 0);
+    let (mut times, mut firsts) = (Vec::new(), Vec::new());
+    for instance in instances {
         let job = Job {
             generation: 0,
-            timetable,
+            timetable: instance.timetable,
             reference: None,
             begun: Arc::default(),
         };
@@ -143,23 +197,32 @@ fn main() {
             Knowledge::Between { .. } => "between",
             Knowledge::Impossible { .. } => "impossible",
         };
-        let (floor, best): (usize, usize) = (cells[5].parse().unwrap(), cells[6].parse().unwrap());
         assert!(
-            receipt.floor() <= best && (receipt.unplaced() > 0 || receipt.in_use() >= floor),
-            "{line}"
+            receipt.floor() <= instance.best
+                && (receipt.unplaced() > 0 || receipt.in_use() >= instance.floor),
+            "{}: {receipt:?}, known are {}..{}",
+            instance.name,
+            instance.floor,
+            instance.best
         );
         all += 1;
+        above += usize::from(instance.best > settled.survey().load.most);
         if state == "proved" {
             proved += 1;
-            times.push(taken);
         }
+        times.push(if state == "proved" { taken } else { f64::INFINITY });
         let first = first.unwrap_or_default().as_secs_f64() * 1e3;
         firsts.push(first);
+        let answer = match receipt.unplaced() {
+            0 => receipt.in_use().to_string(),
+            left => format!("{}-{left}", receipt.in_use()),
+        };
         println!(
-            "{:<30} {:>6} {:>6} {:>12} {:>8} {:>9.1} {:>9.3} {:>6}",
-            cells[1],
-            receipt.in_use(),
+            "{:<30} {:>6} {:>6} {:>6} {:>12} {:>8} {:>9.1} {:>9.3} {:>6}",
+            instance.name,
+            answer,
             receipt.floor(),
+            settled.survey().load.most,
             settled.answer().floor.name(),
             state,
             first,
@@ -171,7 +234,7 @@ fn main() {
     firsts.sort_by(f64::total_cmp);
     let median = |list: &[f64]| list.get(list.len() / 2).copied().unwrap_or(f64::NAN);
     println!(
-        "{proved} of {all} proved within {seconds} s; median {:.3} s; first plan median {:.1} ms",
+        "{proved} of {all} proved within {seconds} s; median {:.3} s; first plan median {:.1} ms; the answer is above the clique in {above}",
         median(&times),
         median(&firsts)
     );

@@ -203,11 +203,13 @@ impl Search {
 
     /// One climb: add what fits, swap where one stands in the way, until neither helps; then
     /// penalise what is inside and go elsewhere: with a vertex from outside, or, when nothing
-    /// has come of that for a while, from a single one. Returns whether the best grew.
-    pub(crate) fn climb(&mut self) -> bool {
-        let before = self.best.len();
+    /// has come of that for a while, from a single one. Returns the
+    /// vertices looked at.
+    pub(crate) fn climb(&mut self) -> usize {
+        let mut looked = 0;
         let mut allowed = self.usable.clone();
         for _ in 0..4 * self.n.max(16) {
+            looked += 3 * self.n;
             if let Some(vertex) = self.pick(0, &allowed) {
                 self.add(vertex);
                 allowed[vertex] = false;
@@ -239,7 +241,7 @@ impl Search {
             }
         }
         self.leave();
-        self.best.len() > before
+        looked
     }
 
     /// Away from where the climb ended.

@@ -3,3 +3,5 @@
 pub(super) mod clique;
 pub(super) mod hall;
 pub(super) mod incompatible;
+pub(super) mod ladder;
+mod prices;

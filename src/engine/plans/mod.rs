@@ -6,7 +6,8 @@ pub(super) mod greedy;
 mod joint;
 pub(super) mod keep;
 pub(super) mod rows;
-pub(super) mod tabu;
+pub(super) mod slices;
+mod tabu;
 
 /// No resource.
 pub(crate) const NONE: u32 = u32::MAX;

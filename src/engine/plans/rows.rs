@@ -103,7 +103,7 @@ pub(crate) fn takers(problem: &Problem) -> Vec<usize> {
 }
 
 /// Distinct resources in an assignment.
-pub(crate) fn in_use(problem: &Problem, on: &[u32]) -> usize {
+fn in_use(problem: &Problem, on: &[u32]) -> usize {
     let mut used = vec![false; problem.resources.len()];
     for resource in on.iter().filter(|resource| **resource != NONE) {
         used[*resource as usize] = true;
@@ -112,10 +112,15 @@ pub(crate) fn in_use(problem: &Problem, on: &[u32]) -> usize {
 }
 
 /// The weight of what has no place.
-pub(crate) fn left_out(problem: &Problem, on: &[u32]) -> u64 {
+fn left_out(problem: &Problem, on: &[u32]) -> u64 {
     let without = on
         .iter()
         .zip(&problem.items)
         .filter(|(resource, _)| **resource == NONE);
     without.map(|(_, item)| u64::from(item.weight)).sum()
+}
+
+/// Less weight left out first, then fewer resources.
+pub(crate) fn value(problem: &Problem, on: &[u32]) -> (u64, usize) {
+    (left_out(problem, on), in_use(problem, on))
 }

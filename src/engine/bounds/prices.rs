@@ -1,0 +1,353 @@
+//! A floor from prices: every piece gets a price, each resource takes the dearest chain of
+//! pieces it could serve. What the pieces cost together, less what the resources could take
+//! beyond the price of one resource, cannot be had with fewer resources (Lagrangian
+//! relaxation; Geoffrion 1974).
+//!
+//! The prices are found in floating point by the volume algorithm (Barahona, Anbil 2000),
+//! from several starts, then rounded to whole numbers and counted again in integers: no
+//! claim rests on a float. The dearest chain is a linear sweep by end (weighted interval
+//! scheduling; Kleinberg, Tardos 2006, 6.1).
+
+use crate::claim::FloorProof;
+use crate::engine::Problem;
+use std::sync::Arc;
+
+/// The takers of a class by the end of what they occupy.
+struct Chain {
+    members: u32,
+    items: Vec<u32>,
+    /// Per taker, how many takers have ended when it starts.
+    before: Vec<u32>,
+}
+
+/// The chains of a problem.
+pub(super) struct Chains {
+    list: Vec<Chain>,
+    /// Items with any choice.
+    usable: Vec<bool>,
+    /// Entries in all chains together.
+    pub(super) entries: usize,
+}
+
+/// What a resource takes beyond its own price, and the pieces it takes for that.
+struct Taken {
+    /// Lower bound that the prices give.
+    value: f64,
+    /// Per item, how many resources take it.
+    cover: Vec<f64>,
+    /// Resources that take anything.
+    used: f64,
+}
+
+impl Chains {
+    pub(super) fn of(problem: &Problem) -> Chains {
+        let mut takers: Vec<Vec<(i64, i64, u32)>> = vec![Vec::new(); problem.classes.len()];
+        for item in 0..problem.items.len() {
+            for class in problem.choices(item) {
+                let span = problem.occupied(item, *class);
+                takers[*class as usize].push((span.end.0, span.start.0, item as u32));
+            }
+        }
+        let list = takers.into_iter().zip(&problem.classes);
+        let list: Vec<Chain> = list
+            .filter(|(takers, _)| !takers.is_empty())
+            .map(|(mut takers, class)| {
+                takers.sort_unstable();
+                let before = |start: i64| takers.partition_point(|(end, ..)| *end <= start) as u32;
+                Chain {
+                    members: class.members.len() as u32,
+                    items: takers.iter().map(|(_, _, item)| *item).collect(),
+                    before: takers.iter().map(|(_, start, _)| before(*start)).collect(),
+                }
+            })
+            .collect();
+        Chains {
+            entries: list.iter().map(|chain| chain.items.len()).sum(),
+            usable: (0..problem.items.len())
+                .map(|item| !problem.choices(item).is_empty())
+                .collect(),
+            list,
+        }
+    }
+
+    /// The bound at some prices (one resource costs 1), and who takes what.
+    fn take(&self, prices: &[f64], best: &mut Vec<f64>) -> Taken {
+        let mut taken = Taken {
+            value: prices.iter().sum(),
+            cover: vec![0.0; prices.len()],
+            used: 0.0,
+        };
+        for chain in &self.list {
+            best.clear();
+            best.push(0.0);
+            for (at, item) in chain.items.iter().enumerate() {
+                let with = prices[*item as usize] + best[chain.before[at] as usize];
+                best.push(best[at].max(with));
+            }
+            let mut at = chain.items.len();
+            let dearest = best[at];
+            if dearest <= 1.0 {
+                continue;
+            }
+            let members = f64::from(chain.members);
+            taken.value -= members * (dearest - 1.0);
+            taken.used += members;
+            while at > 0 {
+                if best[at] > best[at - 1] {
+                    taken.cover[chain.items[at - 1] as usize] += members;
+                    at = chain.before[at - 1] as usize;
+                } else {
+                    at -= 1;
+                }
+            }
+        }
+        taken
+    }
+
+    /// The bound that whole prices give when one resource costs `unit`.
+    pub(super) fn count(&self, prices: &[i64], unit: i64, best: &mut Vec<i64>) -> usize {
+        let mut value: i64 = prices.iter().sum();
+        for chain in &self.list {
+            best.clear();
+            best.push(0);
+            for (at, item) in chain.items.iter().enumerate() {
+                let with = prices[*item as usize] + best[chain.before[at] as usize];
+                best.push(best[at].max(with));
+            }
+            let beyond = (best[chain.items.len()] - unit).max(0);
+            value -= i64::from(chain.members) * beyond;
+        }
+        usize::try_from((value.max(0) + unit - 1) / unit).unwrap_or(0)
+    }
+}
+
+/// Units tried for whole prices, the plainest first: prices a reader can add up.
+const UNITS: [i64; 10] = [1, 2, 3, 4, 6, 12, 60, 840, 27_720, 1_000_000];
+
+/// Steps from one start at most.
+const STEPS_PER_START: u32 = 1_500;
+
+/// Steps without a better value after which a start is given up.
+const PATIENCE: u32 = 250;
+
+/// The search for prices; it can be run on and on in slices.
+pub(crate) struct Prices {
+    chains: Chains,
+    /// Where to begin, the next one last.
+    starts: Vec<Vec<f64>>,
+    ascent: Option<Ascent>,
+    scratch: Vec<f64>,
+    whole: Vec<i64>,
+    /// The relaxation is known to give no more than this.
+    ceiling: f64,
+    pub(crate) count: u32,
+}
+
+/// One run of the volume algorithm.
+struct Ascent {
+    best: Vec<f64>,
+    value: f64,
+    /// The average of what was taken: nearly a fractional plan.
+    cover: Vec<f64>,
+    used: f64,
+    factor: f64,
+    most_new: f64,
+    steps: u32,
+    since_better: u32,
+    failures: u32,
+}
+
+impl Prices {
+    /// `clique` is the best clique known: one of the starts leans on it.
+    pub(crate) fn new(problem: &Problem, clique: &[usize]) -> Prices {
+        let chains = Chains::of(problem);
+        let count = problem.items.len();
+        let mut mixed = vec![0.0; count];
+        // Long pieces fill a resource: a day's worth of them is worth about one.
+        let lengths: Vec<f64> = problem
+            .items
+            .iter()
+            .map(|item| (item.core.end - item.core.start) as f64)
+            .collect();
+        let longest_chain = longest(&chains, &lengths).max(1.0);
+        for (price, length) in mixed.iter_mut().zip(&lengths) {
+            *price = 0.6 * length / longest_chain;
+        }
+        for item in clique {
+            mixed[*item] += 0.4;
+        }
+        let mut leaning = vec![0.02; count];
+        for item in clique {
+            leaning[*item] = 0.9;
+        }
+        let mut starts = vec![leaning, mixed, vec![0.0; count]];
+        for start in &mut starts {
+            for (price, usable) in start.iter_mut().zip(&chains.usable) {
+                if !usable {
+                    *price = 0.0;
+                }
+            }
+        }
+        Prices {
+            chains,
+            starts,
+            ascent: None,
+            scratch: Vec::new(),
+            whole: Vec::new(),
+            ceiling: f64::INFINITY,
+            count: 0,
+        }
+    }
+
+    /// Work of one step, in entries looked at.
+    pub(crate) fn step_size(&self) -> usize {
+        self.chains.entries.max(1)
+    }
+
+    /// One step towards a floor of `wanted`, with steps as long as `aim` suggests. `None` when there is nothing more to try for
+    /// it; else the proof once there is one.
+    pub(crate) fn step(
+        &mut self,
+        problem: &Problem,
+        wanted: usize,
+        aim: usize,
+    ) -> Option<Option<FloorProof>> {
+        self.count += 1;
+        let least = wanted as f64 - 1.0;
+        if self.ceiling <= least {
+            return None;
+        }
+        let mut ascent = match self.ascent.take() {
+            Some(ascent) => ascent,
+            None => {
+                let start = self.starts.pop()?;
+                let taken = self.chains.take(&start, &mut self.scratch);
+                Ascent {
+                    best: start,
+                    value: taken.value,
+                    cover: taken.cover,
+                    used: taken.used,
+                    factor: 0.5,
+                    most_new: 0.3,
+                    steps: 0,
+                    since_better: 0,
+                    failures: 0,
+                }
+            }
+        };
+        let better = self.climb(&mut ascent, aim as f64);
+        if better
+            && ascent.value > least + 1e-7
+            && let Some(proof) = self.whole(problem, &ascent.best, wanted)
+        {
+            self.ascent = Some(ascent);
+            return Some(Some(proof));
+        }
+        // Nearly a fractional plan that uses no more than the floor: no prices can beat it.
+        let lack = |item: usize| if self.chains.usable[item] { 1.0 - ascent.cover[item] } else { 0.0 };
+        if ascent.used < least && (0..ascent.cover.len()).all(|item| lack(item) < 0.005) {
+            self.ceiling = self.ceiling.min(ascent.used);
+        }
+        if ascent.steps < STEPS_PER_START && ascent.since_better < PATIENCE {
+            self.ascent = Some(ascent);
+        }
+        Some(None)
+    }
+
+    /// One step of the volume algorithm; whether the bound grew.
+    fn climb(&mut self, ascent: &mut Ascent, target: f64) -> bool {
+        ascent.steps += 1; if ascent.steps % 100 == 0 {let w=ascent.cover.iter().cloned().fold(9.0f64,f64::min); eprintln!("  {} value {:.4} used {:.4} worst {:.3} f {:.3}", ascent.steps, ascent.value, ascent.used, w, ascent.factor);}
+        let usable = &self.chains.usable;
+        let lack = |ascent: &Ascent, item: usize| {
+            let lack = 1.0 - ascent.cover[item];
+            if !usable[item] || (lack < 0.0 && ascent.best[item] <= 0.0) {
+                0.0
+            } else {
+                lack
+            }
+        };
+        let norm: f64 = (0..usable.len()).map(|item| lack(ascent, item).powi(2)).sum();
+        let gap = (target + 0.05 - ascent.value).max(0.05);
+        let step = if norm > 1e-12 { ascent.factor * gap / norm } else { 0.0 };
+        let prices: Vec<f64> = (0..usable.len())
+            .map(|item| (ascent.best[item] + step * lack(ascent, item)).max(0.0))
+            .collect();
+        let taken = self.chains.take(&prices, &mut self.scratch);
+        // The share of the new that brings the average nearest to covering everything.
+        let (mut along, mut square) = (0.0, 0.0);
+        for item in (0..usable.len()).filter(|item| usable[*item]) {
+            let turn = taken.cover[item] - ascent.cover[item];
+            along += (1.0 - ascent.cover[item]) * turn;
+            square += turn * turn;
+        }
+        let share = if square > 1e-12 { along / square } else { ascent.most_new };
+        let share = if share < ascent.most_new / 10.0 { ascent.most_new / 10.0 } else { share.min(ascent.most_new) };
+        // Which way the new answer points, measured against the average.
+        let agrees: f64 = (0..usable.len())
+            .map(|item| lack(ascent, item) * (1.0 - taken.cover[item]))
+            .sum();
+        for (average, new) in ascent.cover.iter_mut().zip(&taken.cover) {
+            *average += share * (new - *average);
+        }
+        ascent.used += share * (taken.used - ascent.used);
+        let better = taken.value > ascent.value + 1e-9;
+        if better {
+            if taken.value > ascent.value + 1e-4 {
+                ascent.since_better = 0;
+            }
+            ascent.best = prices;
+            ascent.value = taken.value;
+            ascent.failures = 0;
+            if agrees > 0.0 {
+                ascent.factor = (ascent.factor * 1.1).min(2.0);
+            }
+        } else {
+            ascent.failures += 1;
+            if ascent.failures.is_multiple_of(20) {
+                ascent.factor = (ascent.factor * 0.66).max(1e-4);
+            }
+        }
+        ascent.since_better += 1;
+        if ascent.steps.is_multiple_of(100) {
+            ascent.most_new = (ascent.most_new * 0.7).max(0.005);
+        }
+        better
+    }
+
+    /// Whole prices that give the wanted floor, in the plainest unit.
+    fn whole(&mut self, problem: &Problem, prices: &[f64], wanted: usize) -> Option<FloorProof> {
+        let mut best = Vec::new();
+        for unit in UNITS {
+            self.whole.clear();
+            self.whole.extend(prices.iter().map(|price| (price * unit as f64).round() as i64));
+            let value = self.chains.count(&self.whole, unit, &mut best);
+            if value >= wanted {
+                let prices = self.whole.iter().enumerate().filter(|(_, price)| **price > 0);
+                return Some(FloorProof::Prices {
+                    unit,
+                    prices: prices
+                        .map(|(item, price)| (Arc::clone(&problem.ids[item]), *price))
+                        .collect(),
+                    value,
+                });
+            }
+        }
+        None
+    }
+}
+
+/// The longest that any one resource can be busy.
+fn longest(chains: &Chains, lengths: &[f64]) -> f64 {
+    let mut longest: f64 = 0.0;
+    let mut best = Vec::new();
+    for chain in &chains.list {
+        best.clear();
+        best.push(0.0f64);
+        for (at, item) in chain.items.iter().enumerate() {
+            let with = lengths[*item as usize] + best[chain.before[at] as usize];
+            best.push(best[at].max(with));
+        }
+        longest = longest.max(best[chain.items.len()]);
+    }
+    longest
+}

@@ -1,0 +1,130 @@
+//! The plan search in slices: weighted tabu, then laying out a few resources anew together,
+//! in turn, always from the best plan that anyone has found.
+
+use super::{Assignment, NONE, rows, tabu};
+use crate::engine::{Problem, Stopper};
+
+/// Steps of the tabu search in one slice.
+pub(crate) const SLICE: u64 = 5_000;
+
+/// Rearrangements after each slice.
+const REARRANGED: u32 = 300;
+
+/// When some pieces provably cannot be placed, the count of the rest has no floor of its
+/// own to meet; after so many steps without a better one it is left.
+const ENOUGH_FOR_THE_REST: u64 = 200_000;
+
+/// What a slice came to.
+pub(crate) enum Slice {
+    /// A better plan.
+    Better(Assignment),
+    /// Nothing yet.
+    Nothing,
+    /// Nothing more will come.
+    Over,
+}
+
+/// What is known when a slice begins.
+#[derive(Clone, Copy)]
+pub(crate) struct Known<'a> {
+    /// The best plan.
+    pub(crate) best: &'a [u32],
+    /// Weight left out by it, and resources in use.
+    pub(crate) value: (u64, usize),
+    /// Weight that provably stays out.
+    pub(crate) out_floor: u64,
+}
+
+/// One worker.
+pub(crate) struct Plans<'a> {
+    problem: &'a Problem,
+    seed: u64,
+    skip: Vec<bool>,
+    search: Option<tabu::Tabu<'a>>,
+    /// The value it started from and the target it aims at.
+    aimed: Option<((u64, usize), usize)>,
+    since_better: u64,
+    width: f64,
+}
+
+impl<'a> Plans<'a> {
+    pub(crate) fn new(problem: &'a Problem, seed: u64) -> Plans<'a> {
+        let skip = vec![false; problem.items.len()];
+        Plans {
+            search: tabu::Tabu::new(problem, &skip, seed),
+            problem,
+            seed,
+            skip,
+            aimed: None,
+            since_better: 0,
+            width: 4.0,
+        }
+    }
+
+    /// Whether the problem is too large for it.
+    pub(crate) fn too_large(&self) -> bool {
+        self.search.is_none()
+    }
+
+    /// Up to `steps` steps and what goes with them.
+    pub(crate) fn slice(&mut self, known: Known<'_>, steps: u64, stop: &dyn Stopper) -> Slice {
+        let (left_out, in_use) = known.value;
+        // Provably no more can be placed: the rest is worth a better count all the same.
+        let rest = left_out > 0 && left_out == known.out_floor;
+        if rest && !self.skip.iter().any(|skipped| *skipped) {
+            self.skip = known.best.iter().map(|resource| *resource == NONE).collect();
+            self.search = tabu::Tabu::new(self.problem, &self.skip, self.seed);
+            self.aimed = None;
+        }
+        if rest && (in_use == 0 || self.since_better >= ENOUGH_FOR_THE_REST) {
+            return Slice::Over;
+        }
+        let placing = left_out > 0 && !rest;
+        let target = if placing {
+            self.problem.resources.len()
+        } else {
+            in_use - 1
+        };
+        self.since_better += steps;
+        let Some(search) = &mut self.search else {
+            return Slice::Nothing;
+        };
+        if self.aimed != Some((known.value, target)) {
+            if !search.aim(known.best, target, stop) {
+                self.aimed = None;
+                return Slice::Nothing;
+            }
+            self.aimed = Some((known.value, target));
+        }
+        let mut better: Option<Assignment> = None;
+        let mut least = left_out;
+        if placing {
+            search.run(steps, stop, &mut |left, on| {
+                if left < least {
+                    least = left;
+                    better = Some(on.to_vec());
+                }
+            });
+        } else {
+            // Near the end what is missing is one piece that no chain of ejections brings
+            // in: then several resources are laid out anew together.
+            search.run_and_return(steps, stop);
+        }
+        if !search.done() {
+            search.rearrange(REARRANGED, &mut self.width, stop);
+            if placing && search.left_out < least {
+                better = Some(search.on.clone());
+            }
+        }
+        if search.done() {
+            better = Some(search.on.clone());
+        }
+        match better {
+            Some(better) if rows::value(self.problem, &better) < known.value => {
+                self.since_better = 0;
+                Slice::Better(better)
+            }
+            _ => Slice::Nothing,
+        }
+    }
+}
