@@ -146,6 +146,7 @@ fn fill(
     moment: Option<i64>,
     after: i64,
     kind: &str,
+    dense: bool,
     dice: &mut Dice,
     asked: &mut Vec<Asked>,
 ) {
@@ -166,8 +167,12 @@ fn fill(
         if now + length + after > room.open.1 {
             return;
         }
-        let tight = witness || dice.chance(50);
-        let level = if tight { room.level } else { dice.below(room.level + 1) };
+        let tight = witness || dice.chance(if dense { 75 } else { 50 });
+        let level = if tight {
+            room.level
+        } else {
+            dice.below(room.level + 1)
+        };
         let below = if level == 0 { 4 } else { SEATS[level - 1] };
         let mut size = below + 1 + dice.below((SEATS[level] - below) as usize) as u32;
         let mut needs = [false; 3];
@@ -192,7 +197,7 @@ fn fill(
             witness,
         });
         now += length + after;
-        let pause = 5 * dice.below(10) as i64;
+        let pause = 5 * dice.below(if dense { 3 } else { 10 }) as i64;
         // A pause must leave room for something that reaches over the moment.
         now = match moment.filter(|moment| *moment >= now) {
             Some(moment) => (now + pause).min(moment - 5),
@@ -210,13 +215,16 @@ pub(crate) fn make(n: usize, seed: u64) -> Made {
     let per_room = days as usize * if kind == "shifts" { 9 } else { 11 } / 2;
     let used = (n.div_ceil(per_room)).max(4);
     let after = [0, 0, 5, 10][dice.below(4)];
+    let dense = seed / 4 % 2 == 1;
     let rooms = rooms(kind, used, &mut dice);
     let mut asked = Vec::new();
     for (at, room) in rooms.iter().enumerate().filter(|(_, room)| room.used) {
         let moments = moments(kind, room, days);
         for day in 0..days {
             let moment = moments.iter().find(|(on, _)| *on == day).map(|(_, at)| *at);
-            fill(&rooms, at, day, moment, after, kind, &mut dice, &mut asked);
+            fill(
+                &rooms, at, day, moment, after, kind, dense, &mut dice, &mut asked,
+            );
         }
     }
     // Shuffled, so that the file tells nothing of the hidden plan; then down to n.

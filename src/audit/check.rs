@@ -1,7 +1,7 @@
 //! The checks themselves. Who may use what is worked out here once more, plainly, rather
 //! than taken from the code that the engine uses.
 
-use super::{Receipt, Refusal};
+use super::{Receipt, Refusal, cases};
 use crate::claim::{Answer, FloorProof, HallViolation, Plan};
 use crate::clock::{Instant, Span};
 use crate::lookup::FastMap;
@@ -83,8 +83,8 @@ pub fn check_violations(
 }
 
 /// The timetable, laid out for looking things up.
-struct Facts<'a> {
-    timetable: &'a Timetable,
+pub(super) struct Facts<'a> {
+    pub(super) timetable: &'a Timetable,
     all: Vec<Piece>,
     places: FastMap<Arc<str>, usize>,
 }
@@ -123,7 +123,7 @@ impl<'a> Facts<'a> {
         )
     }
 
-    fn occupied(piece: &Piece, resource: &Resource) -> Span {
+    pub(super) fn occupied(piece: &Piece, resource: &Resource) -> Span {
         let (before, after) = Facts::buffers(piece, resource);
         Span {
             start: piece.span.start - before,
@@ -174,7 +174,7 @@ impl<'a> Facts<'a> {
 
     /// The piece's span with its least buffers over the resources it may use, and those
     /// resources' places in the list.
-    fn least(&self, piece: &Piece) -> (Span, Vec<usize>) {
+    pub(super) fn least(&self, piece: &Piece) -> (Span, Vec<usize>) {
         let resources = &self.timetable.resources().all;
         let usable: Vec<usize> = match &piece.pin {
             Some(pin) => self
@@ -296,6 +296,12 @@ fn floor(facts: &Facts<'_>, floor: &FloorProof, refusals: &mut Vec<Refusal>) -> 
             prices: priced,
             value,
         } => prices(facts, *unit, priced, *value, refusals),
+        FloorProof::Cases { value, tree } => {
+            let spoken = named(facts, &floor.pieces(), refusals);
+            if refusals.len() == before {
+                cases::replay(facts, *value, &spoken, tree, refusals);
+            }
+        }
         FloorProof::Clique { at, pieces } => {
             for piece in named(facts, pieces, refusals) {
                 running(facts, piece, *at, refusals);
@@ -354,10 +360,10 @@ fn prices(
 }
 
 /// No single price may be above this, so that sums stay far from overflow.
-const MOST_PRICE: i64 = 1 << 40;
+pub(super) const MOST_PRICE: i64 = 1 << 40;
 
 /// The most that spans which do not overlap are worth together.
-fn dearest(chain: &mut [(Span, i64)]) -> i64 {
+pub(super) fn dearest(chain: &mut [(Span, i64)]) -> i64 {
     chain.sort_unstable_by_key(|(span, _)| span.end);
     let mut best = vec![0i64];
     for (at, (span, price)) in chain.iter().enumerate() {

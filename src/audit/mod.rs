@@ -4,6 +4,7 @@
 //! it never searches. Only its [`Receipt`] lets anything call itself proved. Imports
 //! `clock`, `timetable` and `claim`, and nothing above.
 
+mod cases;
 mod check;
 mod receipt;
 mod refusal;
@@ -11,3 +12,5 @@ mod refusal;
 pub use check::{check, check_floor, check_plan, check_violations};
 pub use receipt::{Knowledge, Proved, Receipt};
 pub use refusal::Refusal;
+
+use check::{MOST_PRICE, dearest};

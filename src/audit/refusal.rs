@@ -84,6 +84,9 @@ pub enum Refusal {
     /// Prices that are not whole numbers above 0, or far too large.
     #[error("the prices of the bound must be whole numbers above 0 (and below 2^40)")]
     BadPrices,
+    /// A case of a proof by cases does not hold.
+    #[error("the proof by cases does not hold: {0}")]
+    BadCase(Arc<str>),
     /// The plan file says a floor that its proof does not give.
     #[error("the plan file claims at least {claimed}, its proof gives {proved}")]
     OtherFloor {

@@ -84,6 +84,75 @@ pub enum FloorProof {
         /// The number of resources they are claimed to prove.
         value: usize,
     },
+    /// Every way to do with fewer is refuted, case by case.
+    Cases {
+        /// The number of resources that is claimed to be needed.
+        value: usize,
+        /// The case in which nothing has been put anywhere yet.
+        tree: Case,
+    },
+}
+
+/// One case of a proof that fewer than so many resources cannot do. Some pieces have been
+/// put on resources by the cases around it; the others have those resources left that they
+/// may use, that hold nothing in their way, and, once one resource less than the wanted
+/// number holds something, that hold something.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub enum Case {
+    /// The piece goes on one of these; each is refuted. Of alike resources that hold
+    /// nothing, one stands for all.
+    Place {
+        /// The piece.
+        piece: Arc<str>,
+        /// Every resource left for it, and the case in which it is there.
+        on: Vec<(Arc<str>, Case)>,
+    },
+    /// No resource is left for the piece.
+    NoPlace {
+        /// The piece.
+        piece: Arc<str>,
+    },
+    /// These pieces have no place yet, all run at that moment, and too few resources are
+    /// left for them (Hall 1935).
+    Short {
+        /// The moment.
+        at: Instant,
+        /// The pieces.
+        pieces: Vec<Arc<str>>,
+    },
+    /// Prices, as in [`FloorProof::Prices`], with what is left; a resource that holds
+    /// something costs `unit` in any case.
+    Prices {
+        /// The price of one resource, at least 1.
+        unit: i64,
+        /// The pieces and their prices, all above 0.
+        prices: Vec<(Arc<str>, i64)>,
+    },
+}
+
+impl Case {
+    /// Adds the pieces it speaks of.
+    fn collect(&self, pieces: &mut Vec<Arc<str>>) {
+        match self {
+            Case::Place { piece, on } => {
+                pieces.push(Arc::clone(piece));
+                on.iter().for_each(|(_, case)| case.collect(pieces));
+            }
+            Case::NoPlace { piece } => pieces.push(Arc::clone(piece)),
+            Case::Short { pieces: some, .. } => pieces.extend(some.iter().cloned()),
+            Case::Prices { prices, .. } => {
+                pieces.extend(prices.iter().map(|(piece, _)| Arc::clone(piece)));
+            }
+        }
+    }
+
+    /// How many cases there are, itself included.
+    pub fn count(&self) -> usize {
+        match self {
+            Case::Place { on, .. } => 1 + on.iter().map(|(_, case)| case.count()).sum::<usize>(),
+            _ => 1,
+        }
+    }
 }
 
 impl FloorProof {
@@ -91,7 +160,7 @@ impl FloorProof {
     pub fn value(&self) -> usize {
         match self {
             FloorProof::Clique { pieces, .. } | FloorProof::Incompatible { pieces } => pieces.len(),
-            FloorProof::Prices { value, .. } => *value,
+            FloorProof::Prices { value, .. } | FloorProof::Cases { value, .. } => *value,
         }
     }
 
@@ -104,6 +173,13 @@ impl FloorProof {
             FloorProof::Prices { prices, .. } => {
                 prices.iter().map(|(piece, _)| Arc::clone(piece)).collect()
             }
+            FloorProof::Cases { tree, .. } => {
+                let mut pieces = Vec::new();
+                tree.collect(&mut pieces);
+                pieces.sort_unstable();
+                pieces.dedup();
+                pieces
+            }
         }
     }
 
@@ -113,6 +189,7 @@ impl FloorProof {
             FloorProof::Clique { .. } => "clique",
             FloorProof::Incompatible { .. } => "incompatible",
             FloorProof::Prices { .. } => "prices",
+            FloorProof::Cases { .. } => "cases",
         }
     }
 }

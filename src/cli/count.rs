@@ -229,6 +229,7 @@ fn text(settled: &Settled, report: &Report<'_>) -> String {
         "prices" => Some(format!(
             "every {one} has a best that it could take of these, and fewer cannot take them all"
         )),
+        "cases" => Some("every way to do with fewer was gone through, placing these".into()),
         _ => None,
     };
     if let Some(ground) = ground {

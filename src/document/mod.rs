@@ -3,6 +3,7 @@
 //!
 //! Imports `clock`, `text`, `timetable`, `edit` and `claim`.
 
+mod cases;
 mod mistake;
 mod patch;
 mod plan;

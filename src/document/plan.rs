@@ -1,6 +1,6 @@
 //! Plan files: what was planned, for which timetable, and the proof that goes with it.
 
-use super::{Mistake, Mistakes};
+use super::{Mistake, Mistakes, cases};
 use crate::claim::{Answer, FloorProof, HallViolation, Placement, Plan, Reason, Unplaced};
 use crate::clock::{Instant, Span, Zone};
 use serde::{Deserialize, Serialize};
@@ -95,6 +95,8 @@ struct RawProof {
     #[serde(default, skip_serializing_if = "Vec::is_empty")]
     prices: Vec<i64>,
     #[serde(default, skip_serializing_if = "Vec::is_empty")]
+    cases: Vec<String>,
+    #[serde(default, skip_serializing_if = "Vec::is_empty")]
     shortage: Vec<RawShortage>,
 }
 
@@ -139,35 +141,44 @@ impl PlanFile {
     /// Its text; `because` puts a reason into words. Times carry the offset of the zone.
     pub fn print(&self, zone: Zone, because: &dyn Fn(&Unplaced) -> String) -> String {
         let time = |at: Instant| zone.rfc3339(at);
-        let proof = self.floor.as_ref().map(|floor| {
-            RawProof {
-                floor: floor.value(),
-                by: floor.name().into(),
-                at: match floor {
-                    FloorProof::Clique { at, .. } => Some(time(*at)),
-                    _ => None,
-                },
-                unit: match floor {
-                    FloorProof::Prices { unit, .. } => Some(*unit),
-                    _ => None,
-                },
-                pieces: ids(&floor.pieces()),
-                prices: match floor {
-                    FloorProof::Prices { prices, .. } => {
-                        prices.iter().map(|(_, price)| *price).collect()
-                    }
-                    _ => Vec::new(),
-                },
-                shortage: self
-                    .violations
-                    .iter()
-                    .map(|v| RawShortage {
-                        at: time(v.at),
-                        pieces: ids(&v.pieces),
-                        resources: ids(&v.resources),
-                    })
-                    .collect(),
-            }
+        let proof = self.floor.as_ref().map(|floor| RawProof {
+            floor: floor.value(),
+            by: floor.name().into(),
+            at: match floor {
+                FloorProof::Clique { at, .. } => Some(time(*at)),
+                _ => None,
+            },
+            unit: match floor {
+                FloorProof::Prices { unit, .. } => Some(*unit),
+                _ => None,
+            },
+            pieces: match floor {
+                FloorProof::Cases { .. } => Vec::new(),
+                _ => ids(&floor.pieces()),
+            },
+            cases: match floor {
+                FloorProof::Cases { tree, .. } => {
+                    let mut lines = Vec::new();
+                    cases::print(tree, &time, &mut lines);
+                    lines
+                }
+                _ => Vec::new(),
+            },
+            prices: match floor {
+                FloorProof::Prices { prices, .. } => {
+                    prices.iter().map(|(_, price)| *price).collect()
+                }
+                _ => Vec::new(),
+            },
+            shortage: self
+                .violations
+                .iter()
+                .map(|v| RawShortage {
+                    at: time(v.at),
+                    pieces: ids(&v.pieces),
+                    resources: ids(&v.resources),
+                })
+                .collect(),
         });
         let raw = Raw {
             format: 1,
@@ -258,19 +269,25 @@ impl PlanFile {
         let (mut floor, mut violations) = (None, Vec::new());
         if let Some(proof) = raw.proof {
             let pieces = shared(proof.pieces);
-            let proved = match (&*proof.by, proof.at, proof.unit, &*proof.prices) {
-                ("clique", Some(at), None, []) => FloorProof::Clique {
+            let parts = (proof.at, proof.unit, &*proof.prices, &*proof.cases);
+            let proved = match (&*proof.by, parts) {
+                ("clique", (Some(at), None, [], [])) => FloorProof::Clique {
                     at: time(&at)?,
                     pieces,
                 },
-                ("incompatible", None, None, []) => FloorProof::Incompatible { pieces },
-                ("prices", None, Some(unit), prices) if prices.len() == pieces.len() => {
+                ("incompatible", (None, None, [], [])) => FloorProof::Incompatible { pieces },
+                ("prices", (None, Some(unit), prices, [])) if prices.len() == pieces.len() => {
                     FloorProof::Prices {
                         unit,
                         prices: pieces.into_iter().zip(prices.iter().copied()).collect(),
                         value: proof.floor,
                     }
                 }
+                ("cases", (None, None, [], lines)) if pieces.is_empty() => FloorProof::Cases {
+                    value: proof.floor,
+                    tree: cases::parse(lines, &instant)
+                        .map_err(|said| fail(0..0, format!("in its proof by cases, {said}")))?,
+                },
                 _ => {
                     return Err(fail(
                         0..0,

@@ -6,9 +6,10 @@
 //! `claim` and `overlap`.
 //!
 //! One method per file, each with its source: `bounds` are lower bounds, `plans` are ways
-//! to a plan, `solve` is the anytime loop over both.
+//! to a plan, `exact` goes through cases, `solve` is the anytime loop over both.
 
 mod bounds;
+mod exact;
 mod plans;
 mod problem;
 mod random;

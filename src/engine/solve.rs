@@ -1,9 +1,9 @@
 //! The anytime loop: a plan at once, then better plans and better floors until they meet
 //! or somebody says stop. Every improvement goes out through a callback.
 
-use super::bounds::ladder::Ladder;
+use super::bounds::ladder::{Found, Ladder};
 use super::bounds::{clique, hall, incompatible};
-use super::plans::slices::{Known, Plans, SLICE, Slice};
+use super::plans::slices::{Known, Plans, SLICE, SLICE_WORK, Slice};
 use super::plans::{Assignment, NONE, align, alike, greedy, keep, rows};
 use super::{Problem, Stopper};
 use crate::claim::{Answer, FloorProof, HallViolation, Placement, Plan, Reason, Unplaced};
@@ -292,8 +292,8 @@ impl Solving<'_, '_> {
         if budget.threads < 2 {
             let mut pace = Pace::default();
             self.plans(budget, &shared, &both, &mut || {
-                if pace.floors_next(&ladder) {
-                    shared.climb(&mut ladder, &both);
+                while !both.stop() && pace.floors_next(&ladder) && shared.climb(&mut ladder, &both)
+                {
                 }
             });
             return;
@@ -395,21 +395,16 @@ impl Shared<'_> {
         match plans.slice(known, steps, stop) {
             Slice::Over => return false,
             Slice::Nothing => {}
-            Slice::Better(best) => self.change(|state| {
-                let value = rows::value(self.problem, &best);
-                let better = value < state.value;
-                if better {
-                    (state.best, state.value) = (best, value);
-                }
-                better
-            }),
+            Slice::Better(best) => self.offer(best),
         }
         true
     }
 
-    /// One slice of the floors.
-    fn climb(&self, ladder: &mut Ladder<'_>, stop: &dyn Stopper) {
-        let Ok(state) = self.state.lock() else { return };
+    /// One slice of the floors; whether there is anything left for them to find.
+    fn climb(&self, ladder: &mut Ladder<'_>, stop: &dyn Stopper) -> bool {
+        let Ok(state) = self.state.lock() else {
+            return false;
+        };
         let floor = state.floor.value();
         let (left_out, in_use) = state.value;
         drop(state);
@@ -419,17 +414,31 @@ impl Shared<'_> {
             _ => self.problem.resources.len() + 1,
         };
         if floor >= aim {
-            return;
+            return false;
         }
-        if let Some(proof) = ladder.slice(floor, aim, stop) {
-            self.change(|state| {
+        match ladder.slice(floor, aim, left_out > 0, stop) {
+            None => {}
+            Some(Found::Floor(proof)) => self.change(|state| {
                 let higher = proof.value() > state.floor.value();
                 if higher {
                     state.floor = proof;
                 }
                 higher
-            });
+            }),
+            Some(Found::Plan(plan)) => self.offer(plan),
         }
+        true
+    }
+
+    fn offer(&self, plan: Assignment) {
+        self.change(|state| {
+            let value = rows::value(self.problem, &plan);
+            let better = value < state.value;
+            if better {
+                (state.best, state.value) = (plan, value);
+            }
+            better
+        });
     }
 
     /// The second thread: floors as long as they give something, else plans from another
@@ -438,25 +447,24 @@ impl Shared<'_> {
         let mut plans: Option<Plans<'_>> = None;
         let mut pace = Pace::default();
         while !stop.stop() {
-            if pace.floors_next(&ladder) {
-                self.climb(&mut ladder, stop);
+            if pace.floors_next(&ladder) && self.climb(&mut ladder, stop) {
                 continue;
             }
             let plans = plans.get_or_insert_with(|| Plans::new(self.problem, !seed));
             if !self.plan(plans, SLICE, stop) || plans.too_large() {
-                if ladder.spent() {
+                if ladder.spent() || !self.climb(&mut ladder, stop) {
                     return;
                 }
-                self.climb(&mut ladder, stop);
             }
         }
     }
 }
 
-/// How time is shared out between floors and plans: in turn, until the floors are stale.
+/// How time is shared out between floors and plans, by the work they have done: half and
+/// half, until the floors are stale.
 #[derive(Default)]
 struct Pace {
-    turns: u32,
+    plan_slices: u64,
 }
 
 impl Pace {
@@ -464,8 +472,10 @@ impl Pace {
         if ladder.spent() {
             return false;
         }
-        self.turns += 1;
-        self.turns.is_multiple_of(if ladder.stale() { 8 } else { 2 })
+        let share = if ladder.stale() { 8 } else { 1 };
+        let floors = share * ladder.work <= self.plan_slices * SLICE_WORK;
+        self.plan_slices += u64::from(!floors);
+        floors
     }
 }
 

@@ -116,7 +116,9 @@ fn made(n: usize, part: &str) -> Vec<Instance> {
         let read = fewest::document::read("family.toml", made.text.as_bytes());
         Instance {
             name: format!("{}-{n}-{seed:02}_", made.kind),
-            timetable: read.unwrap_or_else(|mistakes| panic!("{mistakes}")).timetable,
+            timetable: read
+                .unwrap_or_else(|mistakes| panic!("{mistakes}"))
+                .timetable,
             floor: made.answer,
             best: made.answer,
         }
@@ -137,7 +139,10 @@ fn published(set: &str, part: &str) -> Option<Vec<Instance>> {
         );
         return None;
     };
-    let rows = answers.lines().skip(1).map(|line| line.split(',').collect());
+    let rows = answers
+        .lines()
+        .skip(1)
+        .map(|line| line.split(',').collect());
     let wanted = rows.filter(|cells: &Vec<&str>| cells[0] == set && cells[1].contains(part));
     let instances = wanted.map(|cells| Instance {
         name: cells[1].into(),
@@ -210,7 +215,11 @@ fn main() {
         if state == "proved" {
             proved += 1;
         }
-        times.push(if state == "proved" { taken } else { f64::INFINITY });
+        times.push(if state == "proved" {
+            taken
+        } else {
+            f64::INFINITY
+        });
         let first = first.unwrap_or_default().as_secs_f64() * 1e3;
         firsts.push(first);
         let answer = match receipt.unplaced() {

@@ -4,4 +4,4 @@ pub(super) mod clique;
 pub(super) mod hall;
 pub(super) mod incompatible;
 pub(super) mod ladder;
-mod prices;
+pub(super) mod prices;

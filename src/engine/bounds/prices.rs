@@ -8,20 +8,21 @@
 //! claim rests on a float. The dearest chain is a linear sweep by end (weighted interval
 //! scheduling; Kleinberg, Tardos 2006, 6.1).
 
-use crate::claim::FloorProof;
 use crate::engine::Problem;
 use std::sync::Arc;
 
 /// The takers of a class by the end of what they occupy.
 struct Chain {
     members: u32,
+    /// They are in use whatever happens: their own price is due.
+    forced: bool,
     items: Vec<u32>,
     /// Per taker, how many takers have ended when it starts.
     before: Vec<u32>,
 }
 
 /// The chains of a problem.
-pub(super) struct Chains {
+pub(crate) struct Chains {
     list: Vec<Chain>,
     /// Items with any choice.
     usable: Vec<bool>,
@@ -39,6 +40,17 @@ struct Taken {
     used: f64,
 }
 
+/// `takers` with end and start, by end.
+fn chain(members: u32, forced: bool, takers: &[(i64, i64, u32)]) -> Chain {
+    let before = |start: i64| takers.partition_point(|(end, ..)| *end <= start) as u32;
+    Chain {
+        members,
+        forced,
+        items: takers.iter().map(|(_, _, item)| *item).collect(),
+        before: takers.iter().map(|(_, start, _)| before(*start)).collect(),
+    }
+}
+
 impl Chains {
     pub(super) fn of(problem: &Problem) -> Chains {
         let mut takers: Vec<Vec<(i64, i64, u32)>> = vec![Vec::new(); problem.classes.len()];
@@ -53,12 +65,7 @@ impl Chains {
             .filter(|(takers, _)| !takers.is_empty())
             .map(|(mut takers, class)| {
                 takers.sort_unstable();
-                let before = |start: i64| takers.partition_point(|(end, ..)| *end <= start) as u32;
-                Chain {
-                    members: class.members.len() as u32,
-                    items: takers.iter().map(|(_, _, item)| *item).collect(),
-                    before: takers.iter().map(|(_, start, _)| before(*start)).collect(),
-                }
+                chain(class.members.len() as u32, false, &takers)
             })
             .collect();
         Chains {
@@ -66,6 +73,26 @@ impl Chains {
             usable: (0..problem.items.len())
                 .map(|item| !problem.choices(item).is_empty())
                 .collect(),
+            list,
+        }
+    }
+
+    /// The chains of single resources with what is left for each: the takers by end of what
+    /// they occupy, with end and start; `forced` ones are in use whatever happens.
+    pub(crate) fn left(count: usize, resources: Vec<(bool, Vec<(i64, i64, u32)>)>) -> Chains {
+        let mut usable = vec![false; count];
+        let list: Vec<Chain> = resources
+            .into_iter()
+            .map(|(forced, takers)| {
+                for (_, _, item) in &takers {
+                    usable[*item as usize] = true;
+                }
+                chain(1, forced, &takers)
+            })
+            .collect();
+        Chains {
+            entries: list.iter().map(|chain| chain.items.len()).sum(),
+            usable,
             list,
         }
     }
@@ -86,7 +113,7 @@ impl Chains {
             }
             let mut at = chain.items.len();
             let dearest = best[at];
-            if dearest <= 1.0 {
+            if dearest <= 1.0 && !chain.forced {
                 continue;
             }
             let members = f64::from(chain.members);
@@ -114,7 +141,10 @@ impl Chains {
                 let with = prices[*item as usize] + best[chain.before[at] as usize];
                 best.push(best[at].max(with));
             }
-            let beyond = (best[chain.items.len()] - unit).max(0);
+            let mut beyond = best[chain.items.len()] - unit;
+            if !chain.forced {
+                beyond = beyond.max(0);
+            }
             value -= i64::from(chain.members) * beyond;
         }
         usize::try_from((value.max(0) + unit - 1) / unit).unwrap_or(0)
@@ -140,7 +170,6 @@ pub(crate) struct Prices {
     whole: Vec<i64>,
     /// The relaxation is known to give no more than this.
     ceiling: f64,
-    pub(crate) count: u32,
 }
 
 /// One run of the volume algorithm.
@@ -180,7 +209,12 @@ impl Prices {
         for item in clique {
             leaning[*item] = 0.9;
         }
-        let mut starts = vec![leaning, mixed, vec![0.0; count]];
+        let starts = vec![leaning, mixed, vec![0.0; count]];
+        Prices::from(chains, starts)
+    }
+
+    /// A search over some chains; the starts are used from the last to the first.
+    pub(crate) fn from(chains: Chains, mut starts: Vec<Vec<f64>>) -> Prices {
         for start in &mut starts {
             for (price, usable) in start.iter_mut().zip(&chains.usable) {
                 if !usable {
@@ -195,7 +229,6 @@ impl Prices {
             scratch: Vec::new(),
             whole: Vec::new(),
             ceiling: f64::INFINITY,
-            count: 0,
         }
     }
 
@@ -206,13 +239,7 @@ impl Prices {
 
     /// One step towards a floor of `wanted`, with steps as long as `aim` suggests. `None` when there is nothing more to try for
     /// it; else the proof once there is one.
-    pub(crate) fn step(
-        &mut self,
-        problem: &Problem,
-        wanted: usize,
-        aim: usize,
-    ) -> Option<Option<FloorProof>> {
-        self.count += 1;
+    pub(crate) fn step(&mut self, wanted: usize, aim: usize) -> Option<Option<Whole>> {
         let least = wanted as f64 - 1.0;
         if self.ceiling <= least {
             return None;
@@ -238,13 +265,19 @@ impl Prices {
         let better = self.climb(&mut ascent, aim as f64);
         if better
             && ascent.value > least + 1e-7
-            && let Some(proof) = self.whole(problem, &ascent.best, wanted)
+            && let Some(proof) = self.whole(&ascent.best, wanted)
         {
             self.ascent = Some(ascent);
             return Some(Some(proof));
         }
         // Nearly a fractional plan that uses no more than the floor: no prices can beat it.
-        let lack = |item: usize| if self.chains.usable[item] { 1.0 - ascent.cover[item] } else { 0.0 };
+        let lack = |item: usize| {
+            if self.chains.usable[item] {
+                1.0 - ascent.cover[item]
+            } else {
+                0.0
+            }
+        };
         if ascent.used < least && (0..ascent.cover.len()).all(|item| lack(item) < 0.005) {
             self.ceiling = self.ceiling.min(ascent.used);
         }
@@ -256,7 +289,7 @@ impl Prices {
 
     /// One step of the volume algorithm; whether the bound grew.
     fn climb(&mut self, ascent: &mut Ascent, target: f64) -> bool {
-        ascent.steps += 1; if ascent.steps % 100 == 0 {let w=ascent.cover.iter().cloned().fold(9.0f64,f64::min); eprintln!("  {} value {:.4} used {:.4} worst {:.3} f {:.3}", ascent.steps, ascent.value, ascent.used, w, ascent.factor);}
+        ascent.steps += 1;
         let usable = &self.chains.usable;
         let lack = |ascent: &Ascent, item: usize| {
             let lack = 1.0 - ascent.cover[item];
@@ -266,9 +299,15 @@ impl Prices {
                 lack
             }
         };
-        let norm: f64 = (0..usable.len()).map(|item| lack(ascent, item).powi(2)).sum();
+        let norm: f64 = (0..usable.len())
+            .map(|item| lack(ascent, item).powi(2))
+            .sum();
         let gap = (target + 0.05 - ascent.value).max(0.05);
-        let step = if norm > 1e-12 { ascent.factor * gap / norm } else { 0.0 };
+        let step = if norm > 1e-12 {
+            ascent.factor * gap / norm
+        } else {
+            0.0
+        };
         let prices: Vec<f64> = (0..usable.len())
             .map(|item| (ascent.best[item] + step * lack(ascent, item)).max(0.0))
             .collect();
@@ -280,8 +319,16 @@ impl Prices {
             along += (1.0 - ascent.cover[item]) * turn;
             square += turn * turn;
         }
-        let share = if square > 1e-12 { along / square } else { ascent.most_new };
-        let share = if share < ascent.most_new / 10.0 { ascent.most_new / 10.0 } else { share.min(ascent.most_new) };
+        let share = if square > 1e-12 {
+            along / square
+        } else {
+            ascent.most_new
+        };
+        let share = if share < ascent.most_new / 10.0 {
+            ascent.most_new / 10.0
+        } else {
+            share.min(ascent.most_new)
+        };
         // Which way the new answer points, measured against the average.
         let agrees: f64 = (0..usable.len())
             .map(|item| lack(ascent, item) * (1.0 - taken.cover[item]))
@@ -315,24 +362,45 @@ impl Prices {
     }
 
     /// Whole prices that give the wanted floor, in the plainest unit.
-    fn whole(&mut self, problem: &Problem, prices: &[f64], wanted: usize) -> Option<FloorProof> {
+    fn whole(&mut self, prices: &[f64], wanted: usize) -> Option<Whole> {
         let mut best = Vec::new();
         for unit in UNITS {
             self.whole.clear();
-            self.whole.extend(prices.iter().map(|price| (price * unit as f64).round() as i64));
+            let scaled = prices.iter().map(|price| (price * unit as f64).round());
+            self.whole.extend(scaled.map(|price| price as i64));
             let value = self.chains.count(&self.whole, unit, &mut best);
             if value >= wanted {
-                let prices = self.whole.iter().enumerate().filter(|(_, price)| **price > 0);
-                return Some(FloorProof::Prices {
+                let prices = (0u32..).zip(&self.whole).filter(|(_, price)| **price > 0);
+                return Some(Whole {
                     unit,
-                    prices: prices
-                        .map(|(item, price)| (Arc::clone(&problem.ids[item]), *price))
-                        .collect(),
+                    prices: prices.map(|(item, price)| (item, *price)).collect(),
                     value,
                 });
             }
         }
         None
+    }
+
+    /// The best prices so far, to begin with elsewhere.
+    pub(crate) fn best(&self) -> Option<(&[f64], f64)> {
+        let ascent = self.ascent.as_ref()?;
+        Some((&ascent.best, ascent.value))
+    }
+}
+
+/// Whole prices, what one resource costs, and the floor they prove.
+pub(crate) struct Whole {
+    pub(crate) unit: i64,
+    /// Items and their prices, all above 0.
+    pub(crate) prices: Vec<(u32, i64)>,
+    pub(crate) value: usize,
+}
+
+impl Whole {
+    /// The same with the names of the pieces.
+    pub(crate) fn named(&self, problem: &Problem) -> Vec<(Arc<str>, i64)> {
+        let named = |(item, price): &(u32, i64)| (Arc::clone(&problem.ids[*item as usize]), *price);
+        self.prices.iter().map(named).collect()
     }
 }
 

@@ -126,7 +126,9 @@ impl Scratch {
                 self.order.push((key, at as u32));
             }
             self.order.select_nth_unstable(BEAM);
-            let kept = self.order[..BEAM].iter().map(|(_, at)| self.next[*at as usize]);
+            let kept = self.order[..BEAM]
+                .iter()
+                .map(|(_, at)| self.next[*at as usize]);
             self.ways.extend(kept);
         } else {
             self.ways.extend_from_slice(&self.next);
@@ -270,13 +272,22 @@ impl Tabu<'_> {
         for (at, item) in items.iter().enumerate() {
             let weight = u64::from(self.weight[*item as usize]);
             let here = scratch.pieces[at];
-            // What has ended before anything still to come is nothing.
+            // What has ended before anything still to come is nothing; where more has ended
+            // since the last piece, that has to be looked at again.
             let later = scratch.pieces[at + 1];
+            let mut ending = [0usize; MOST];
+            let mut endings = 0;
+            for k in 0..count {
+                if later[k].over > here[k].over {
+                    ending[endings] = k;
+                    endings += 1;
+                }
+            }
             let clear = |mut state: State| {
-                for (k, later) in later.iter().enumerate().take(count) {
-                    let running = rank(state, k);
-                    if running != RESTS && running <= later.over {
-                        state = with_rank(state, k, 0);
+                for k in &ending[..endings] {
+                    let running = rank(state, *k);
+                    if running != RESTS && running <= later[*k].over {
+                        state = with_rank(state, *k, 0);
                     }
                 }
                 state
@@ -298,8 +309,13 @@ impl Tabu<'_> {
                 }
                 for (k, here) in here.iter().enumerate().take(count) {
                     if here.allowed && rank(way.state, k) <= here.free {
+                        let rank = if here.rank <= later[k].over {
+                            0
+                        } else {
+                            here.rank
+                        };
                         let put = Way {
-                            state: clear(with_rank(way.state, k, here.rank)),
+                            state: clear(with_rank(way.state, k, rank)),
                             cost: way.cost,
                             before,
                             choice: k as u8,
@@ -323,7 +339,9 @@ impl Tabu<'_> {
     /// Spans and ranks of the pieces on the resources; one more entry stands for the end.
     fn prepare(&self, scratch: &mut Scratch, items: &[u32], resources: &[usize]) {
         scratch.pieces.clear();
-        scratch.pieces.resize(items.len() + 1, [Here::default(); MOST]);
+        scratch
+            .pieces
+            .resize(items.len() + 1, [Here::default(); MOST]);
         for (k, r) in resources.iter().enumerate() {
             let class = self.problem.class_of[*r];
             scratch.ends.clear();

@@ -8,7 +8,10 @@ use crate::engine::{Problem, Stopper};
 pub(crate) const SLICE: u64 = 5_000;
 
 /// Rearrangements after each slice.
-const REARRANGED: u32 = 300;
+const REARRANGED: u32 = 1000;
+
+/// About how much work that is, in the entries that the floors count.
+pub(crate) const SLICE_WORK: u64 = 30_000_000;
 
 /// When some pieces provably cannot be placed, the count of the rest has no floor of its
 /// own to meet; after so many steps without a better one it is left.
@@ -72,7 +75,11 @@ impl<'a> Plans<'a> {
         // Provably no more can be placed: the rest is worth a better count all the same.
         let rest = left_out > 0 && left_out == known.out_floor;
         if rest && !self.skip.iter().any(|skipped| *skipped) {
-            self.skip = known.best.iter().map(|resource| *resource == NONE).collect();
+            self.skip = known
+                .best
+                .iter()
+                .map(|resource| *resource == NONE)
+                .collect();
             self.search = tabu::Tabu::new(self.problem, &self.skip, self.seed);
             self.aimed = None;
         }

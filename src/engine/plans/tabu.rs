@@ -66,8 +66,8 @@ pub(crate) struct Tabu<'a> {
     /// Real weight of what is unplaced.
     pub(crate) left_out: u64,
     skipped: Vec<bool>,
-    /// Where the fewest were missing in this slice, while that is watched.
-    low: Option<(usize, Assignment, Vec<bool>)>,
+    /// Where the least weight was missing in this slice, while that is watched.
+    low: Option<(u64, Assignment, Vec<bool>)>,
     step: u64,
     pub(super) random: Random,
     pub(super) scratch: super::joint::Scratch,
@@ -196,17 +196,19 @@ impl<'a> Tabu<'a> {
         self.rest_unplaced -= self.resting.iter().filter(|rests| **rests).count();
     }
 
-    /// How many things are missing.
-    fn waiting(&self) -> usize {
-        self.unplaced.len() + self.rest_unplaced
+    /// The weight of what is missing, as it has grown.
+    fn missing(&self) -> u64 {
+        let weight = |item: &u32| u64::from(self.weight[*item as usize]);
+        let pieces: u64 = self.unplaced.iter().map(weight).sum();
+        pieces + self.rest_unplaced as u64 * u64::from(self.rest_weight)
     }
 
-    /// Up to `steps` steps, then back to the state in which the fewest were missing.
+    /// Up to `steps` steps, then back to the state in which the least weight was missing.
     pub(crate) fn run_and_return(&mut self, steps: u64, stop: &dyn Stopper) {
-        self.low = Some((usize::MAX, Vec::new(), Vec::new()));
+        self.low = Some((u64::MAX, Vec::new(), Vec::new()));
         self.run(steps, stop, &mut |_, _| {});
-        if let Some((waiting, on, resting)) = self.low.take()
-            && self.waiting() > waiting
+        if let Some((missing, on, resting)) = self.low.take()
+            && self.missing() > missing
         {
             self.back_to(&on, &resting);
         }
@@ -248,9 +250,9 @@ impl<'a> Tabu<'a> {
             if self
                 .low
                 .as_ref()
-                .is_some_and(|(waiting, ..)| self.waiting() < *waiting)
+                .is_some_and(|(least, ..)| self.missing() < *least)
             {
-                self.low = Some((self.waiting(), self.on.clone(), self.resting.clone()));
+                self.low = Some((self.missing(), self.on.clone(), self.resting.clone()));
             }
         }
     }
