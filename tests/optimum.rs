@@ -167,7 +167,8 @@ proptest! {
         prop_assert!(receipt.unplaced_floor() <= left);
         match receipt.knowledge() {
             Knowledge::Proved(proved) => prop_assert_eq!((0, proved.count()), (left, used)),
-            Knowledge::Between { floor, .. } => prop_assert!(left > 0 || floor <= used),
+            // On cases this small the proof is always found.
+            Knowledge::Between { .. } => prop_assert!(false, "{:?}", receipt),
             Knowledge::Impossible { least, .. } => {
                 prop_assert!(left > 0);
                 prop_assert!(!least || receipt.unplaced_weight() == left);

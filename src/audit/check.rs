@@ -87,6 +87,10 @@ pub(super) struct Facts<'a> {
     pub(super) timetable: &'a Timetable,
     all: Vec<Piece>,
     places: FastMap<Arc<str>, usize>,
+    /// Resources by their own names and by those of their kinds, for looking up `only`.
+    meant: FastMap<&'a str, Vec<usize>>,
+    /// Seconds kept free before and after, when that is the same everywhere.
+    uniform: Option<(i64, i64)>,
 }
 
 impl<'a> Facts<'a> {
@@ -97,10 +101,21 @@ impl<'a> Facts<'a> {
             .enumerate()
             .map(|(at, piece)| (Arc::clone(&piece.id), at))
             .collect();
+        let resources = &timetable.resources().all;
+        let mut meant: FastMap<&str, Vec<usize>> = FastMap::default();
+        for (at, resource) in resources.iter().enumerate() {
+            for name in resource.kind.iter().chain([&resource.id]) {
+                meant.entry(name).or_default().push(at);
+            }
+        }
+        let own = (timetable.settings.setup, timetable.settings.turnaround);
+        let uniform = resources.iter().all(|r| (r.setup, r.turnaround) == own);
         Facts {
             timetable,
             all,
             places,
+            meant,
+            uniform: uniform.then_some(own),
         }
     }
 
@@ -138,6 +153,15 @@ impl<'a> Facts<'a> {
         if piece.pin.as_ref().is_some_and(|pin| *pin != resource.id) {
             return Some("it is pinned elsewhere");
         }
+        let listed = request.only.is_empty() || request.only.iter().any(here);
+        let unlisted = || (!listed).then_some("it is not among those allowed");
+        Facts::against_meant(piece, resource).or_else(unlisted)
+    }
+
+    /// The same for a resource that is meant by what the piece may only use.
+    fn against_meant(piece: &Piece, resource: &Resource) -> Option<&'static str> {
+        let request = &piece.request;
+        let here = |name: &Arc<str>| *name == resource.id || Some(name) == resource.kind.as_ref();
         if resource
             .seats
             .is_some_and(|seats| piece.size.unwrap_or(0) > seats)
@@ -150,9 +174,6 @@ impl<'a> Facts<'a> {
             .any(|need| !resource.offers.contains(need))
         {
             return Some("it lacks something needed");
-        }
-        if !request.only.is_empty() && !request.only.iter().any(here) {
-            return Some("it is not among those allowed");
         }
         if request.never.iter().any(here) {
             return Some("it is ruled out");
@@ -172,6 +193,18 @@ impl<'a> Facts<'a> {
         None
     }
 
+    /// The piece's span with its least buffers.
+    fn core(&self, piece: &Piece) -> Span {
+        match self.uniform {
+            // Then it does not matter which resources the piece may use.
+            Some((before, after)) => piece.span.widened(
+                piece.request.setup.unwrap_or(before),
+                piece.request.turnaround.unwrap_or(after),
+            ),
+            None => self.least(piece).0,
+        }
+    }
+
     /// The piece's span with its least buffers over the resources it may use, and those
     /// resources' places in the list.
     pub(super) fn least(&self, piece: &Piece) -> (Span, Vec<usize>) {
@@ -183,11 +216,25 @@ impl<'a> Facts<'a> {
                 .position(pin)
                 .into_iter()
                 .collect(),
-            None => (0..resources.len()).collect(),
+            None if piece.request.only.is_empty() => (0..resources.len()).collect(),
+            None => {
+                let names = piece.request.only.iter();
+                let mut meant: Vec<usize> = names
+                    .filter_map(|name| self.meant.get(&**name))
+                    .flatten()
+                    .copied()
+                    .collect();
+                meant.sort_unstable();
+                meant.dedup();
+                meant
+            }
         };
         let usable: Vec<usize> = usable
             .into_iter()
-            .filter(|at| Facts::against(piece, &resources[*at]).is_none())
+            .filter(|at| match piece.pin {
+                Some(_) => Facts::against(piece, &resources[*at]).is_none(),
+                None => Facts::against_meant(piece, &resources[*at]).is_none(),
+            })
             .collect();
         let settings = &self.timetable.settings;
         let buffers = usable
@@ -304,7 +351,9 @@ fn floor(facts: &Facts<'_>, floor: &FloorProof, refusals: &mut Vec<Refusal>) -> 
         }
         FloorProof::Clique { at, pieces } => {
             for piece in named(facts, pieces, refusals) {
-                running(facts, piece, *at, refusals);
+                if !facts.core(piece).contains(*at) {
+                    refusals.push(Refusal::NotRunning(Arc::clone(&piece.id)));
+                }
             }
         }
         FloorProof::Incompatible { pieces } => {

@@ -3,7 +3,7 @@
 
 use crate::clock::{Instant, Span};
 use crate::lookup::{FastMap, FastSet};
-use crate::timetable::{Hours, Piece, Resource, Timetable, Wishes, may_use, suits};
+use crate::timetable::{Hours, Piece, Resource, Timetable, Wishes, may_use, suits, suits_if_named};
 use std::collections::HashMap;
 use std::sync::Arc;
 
@@ -68,7 +68,8 @@ impl Problem {
                 piece.pin.as_ref().or(stays)
             })
             .collect();
-        let (classes, class_of) = classify(resources, &pieces, &pins);
+        let spoken = Spoken::by(&pieces);
+        let (classes, class_of) = classify(resources, &spoken, &pins);
         let mut problem = Problem {
             items: Vec::with_capacity(pieces.len()),
             ids: pieces.iter().map(|piece| Arc::clone(&piece.id)).collect(),
@@ -80,25 +81,63 @@ impl Problem {
                 .collect(),
             choices: Vec::new(),
         };
-        problem.fill(timetable, &pieces, &pins);
+        problem.fill(timetable, &pieces, &pins, &spoken);
         problem
     }
 
-    fn fill(&mut self, timetable: &Timetable, pieces: &[&Piece], pins: &[Option<&Arc<str>>]) {
+    fn fill(
+        &mut self,
+        timetable: &Timetable,
+        pieces: &[&Piece],
+        pins: &[Option<&Arc<str>>],
+        spoken: &Spoken<'_>,
+    ) {
         let all = &timetable.resources().all;
         let representatives: Vec<&Resource> = self
             .classes
             .iter()
             .map(|class| &all[class.members[0] as usize])
             .collect();
+        let classes_of = spoken.classes(all, &self.class_of);
+        self.choices.reserve(spoken.named.len());
         // Most pieces say the same of themselves as many others.
         let mut suited: FastMap<Wishes<'_>, Vec<u32>> = FastMap::default();
-        for (piece, pin) in pieces.iter().zip(pins) {
+        let mut named: Vec<u32> = Vec::new();
+        let unlimited: Vec<bool> = representatives
+            .iter()
+            .map(|resource| resource.hours.unlimited())
+            .collect();
+        let open = |piece: &Piece, class: u32| {
+            let resource = representatives[class as usize];
+            unlimited[class as usize]
+                || resource
+                    .hours
+                    .allow(crate::timetable::occupied(piece, resource))
+        };
+        for ((piece, pin), only) in pieces.iter().zip(pins).zip(&spoken.only) {
             let from = self.choices.len() as u32;
             if let Some(pin) = pin {
                 let place = timetable.resources().position(pin);
                 let fits = place.filter(|at| may_use(piece, &all[*at]).is_ok());
                 self.choices.extend(fits.map(|at| self.class_of[at]));
+            } else if !only.is_empty() {
+                // Long lists of names are common where every resource is its own.
+                named.clear();
+                for name in &spoken.named[only.clone()] {
+                    named.extend_from_slice(&classes_of[*name as usize]);
+                }
+                if !named.is_sorted_by(|a, b| a < b) {
+                    named.sort_unstable();
+                    named.dedup();
+                }
+                let request = &piece.request;
+                let plain = request.never.is_empty() && request.needs.is_empty();
+                let plain = plain && piece.size.is_none();
+                let suit = named.iter().copied().filter(|class| {
+                    let resource = representatives[*class as usize];
+                    (plain || suits_if_named(piece, resource).is_ok()) && open(piece, *class)
+                });
+                self.choices.extend(suit);
             } else {
                 let suited = suited.entry(Wishes::of(piece)).or_insert_with(|| {
                     let classes = representatives.iter().zip(0..);
@@ -107,13 +146,9 @@ impl Problem {
                         .map(|(_, class)| class)
                         .collect()
                 });
-                self.choices.extend(suited.iter().filter(|class| {
-                    let resource = representatives[**class as usize];
-                    resource.hours.unlimited()
-                        || resource
-                            .hours
-                            .allow(crate::timetable::occupied(piece, resource))
-                }));
+                let suited = suited.iter().copied();
+                self.choices
+                    .extend(suited.filter(|class| open(piece, *class)));
             }
             let to = self.choices.len() as u32;
             let mut item = Item {
@@ -195,27 +230,83 @@ struct Likeness<'a> {
     alone: Option<usize>,
 }
 
+/// The names of resources and kinds in `only` and `never`, each looked at once: the same
+/// text in memory is the same name, and lists of them are long where every resource is its
+/// own.
+struct Spoken<'a> {
+    names: Vec<&'a str>,
+    numbers: FastMap<&'a str, u32>,
+    /// Numbers of the names in `only`, piece after piece.
+    named: Vec<u32>,
+    /// Which of them belong to each piece.
+    only: Vec<std::ops::Range<usize>>,
+}
+
+impl<'a> Spoken<'a> {
+    fn by(pieces: &[&'a Piece]) -> Spoken<'a> {
+        let mut spoken = Spoken {
+            names: Vec::new(),
+            numbers: FastMap::default(),
+            named: Vec::with_capacity(pieces.iter().map(|piece| piece.request.only.len()).sum()),
+            only: Vec::with_capacity(pieces.len()),
+        };
+        let mut seen: FastMap<*const u8, u32> = FastMap::default();
+        for piece in pieces {
+            let from = spoken.named.len();
+            for name in &piece.request.only {
+                let number = *seen
+                    .entry(name.as_ptr())
+                    .or_insert_with(|| spoken.number(name));
+                spoken.named.push(number);
+            }
+            spoken.only.push(from..spoken.named.len());
+            for name in &piece.request.never {
+                spoken.number(name);
+            }
+        }
+        spoken
+    }
+
+    fn number(&mut self, name: &'a str) -> u32 {
+        *self.numbers.entry(name).or_insert_with(|| {
+            self.names.push(name);
+            self.names.len() as u32 - 1
+        })
+    }
+
+    fn of(&self, name: &str) -> bool {
+        self.numbers.contains_key(name)
+    }
+
+    /// The classes that each name stands for.
+    fn classes(&self, resources: &[Resource], class_of: &[u32]) -> Vec<Vec<u32>> {
+        let mut classes = vec![Vec::new(); self.names.len()];
+        for (resource, class) in resources.iter().zip(class_of) {
+            for name in resource.kind.iter().chain([&resource.id]) {
+                if let Some(number) = self.numbers.get(&**name) {
+                    let classes = &mut classes[*number as usize];
+                    if !classes.contains(class) {
+                        classes.push(*class);
+                    }
+                }
+            }
+        }
+        classes
+    }
+}
+
 fn classify(
     resources: &[Resource],
-    pieces: &[&Piece],
+    spoken: &Spoken<'_>,
     pins: &[Option<&Arc<str>>],
 ) -> (Vec<Class>, Vec<u32>) {
-    let mut pinned: FastSet<&str> = FastSet::default();
-    let mut spoken_of: FastSet<&str> = FastSet::default();
-    for (piece, pin) in pieces.iter().zip(pins) {
-        pinned.extend(pin.iter().map(|pin| pin.as_ref()));
-        let names = piece.request.only.iter().chain(&piece.request.never);
-        spoken_of.extend(names.map(AsRef::as_ref));
-    }
+    let pinned: FastSet<&str> = pins.iter().flatten().map(|pin| &***pin).collect();
     let mut known: HashMap<Likeness<'_>, u32> = HashMap::new();
     let mut classes: Vec<Class> = Vec::new();
     let mut class_of = Vec::with_capacity(resources.len());
     for (at, resource) in resources.iter().enumerate() {
-        let own = spoken_of.contains(&*resource.id);
-        let kind = resource
-            .kind
-            .as_deref()
-            .filter(|kind| spoken_of.contains(kind));
+        let own = spoken.of(&resource.id);
+        let kind = resource.kind.as_deref().filter(|kind| spoken.of(kind));
         let likeness = Likeness {
             seats: resource.seats,
             offers: &resource.offers,

@@ -101,8 +101,8 @@ pub fn solve(
         found,
     };
     solving.first_plan();
-    solving.first_floor();
     solving.report();
+    solving.first_floor();
     if !solving.settled() && !stop.stop() {
         solving.second_plan(stop);
         if !solving.settled() {
@@ -170,13 +170,16 @@ impl Solving<'_, '_> {
         self.best = on;
     }
 
+    /// What can be said at once of why not fewer, and of what is left out.
     fn first_floor(&mut self) {
         let (left_out, in_use) = self.value(&self.best);
         if left_out > 0 {
             self.violations = hall::disjoint(self.problem);
         }
-        if in_use > self.floor.value() {
-            self.raise(&incompatible::by_groups(self.problem));
+        let higher =
+            in_use > self.floor.value() && self.raise(&incompatible::by_groups(self.problem));
+        if higher || !self.violations.is_empty() {
+            self.report();
         }
     }
 
@@ -451,10 +454,9 @@ impl Shared<'_> {
                 continue;
             }
             let plans = plans.get_or_insert_with(|| Plans::new(self.problem, !seed));
-            if !self.plan(plans, SLICE, stop) || plans.too_large() {
-                if ladder.spent() || !self.climb(&mut ladder, stop) {
-                    return;
-                }
+            let more = self.plan(plans, SLICE, stop) && !plans.too_large();
+            if !more && (ladder.spent() || !self.climb(&mut ladder, stop)) {
+                return;
             }
         }
     }

@@ -15,7 +15,7 @@ mod stated;
 pub(crate) use finding::Wishes;
 pub use finding::{Finding, FindingKind, findings};
 pub use hours::{Closure, Days, Hours, Opening, subtract};
-pub use piece::{Piece, Unfit, least_buffers, may_use, occupied, suits};
+pub use piece::{Piece, Unfit, least_buffers, may_use, occupied, suits, suits_if_named};
 pub(crate) use resources::member_number;
 pub use resources::{Resource, Resources};
 pub use stated::{Common, Count, Kind, Listed, Named, Noun, Request, Settings, TimeStated};

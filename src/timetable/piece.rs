@@ -79,21 +79,32 @@ pub fn occupied(piece: &Piece, resource: &Resource) -> Span {
     )
 }
 
+/// Whether one of the names means the resource or its kind.
+fn named(names: &[Arc<str>], resource: &Resource) -> bool {
+    names
+        .iter()
+        .any(|name| *name == resource.id || resource.kind.as_ref().is_some_and(|kind| name == kind))
+}
+
 /// Whether the resource suits the piece at any time (its pin aside).
 ///
 /// # Errors
 /// The first reason against it.
 pub fn suits(piece: &Piece, resource: &Resource) -> Result<(), Unfit> {
-    let request = &piece.request;
-    let named = |names: &[Arc<str>]| {
-        names.iter().any(|name| {
-            *name == resource.id || resource.kind.as_ref().is_some_and(|kind| name == kind)
-        })
-    };
-    if !request.only.is_empty() && !named(&request.only) {
+    let only = &piece.request.only;
+    if !only.is_empty() && !named(only, resource) {
         return Err(Unfit::NotInOnly);
     }
-    if named(&request.never) {
+    suits_if_named(piece, resource)
+}
+
+/// The same for a resource that is known to be among those the piece may only use.
+///
+/// # Errors
+/// The first reason against it.
+pub fn suits_if_named(piece: &Piece, resource: &Resource) -> Result<(), Unfit> {
+    let request = &piece.request;
+    if named(&request.never, resource) {
         return Err(Unfit::InNever);
     }
     if let (Some(size), Some(seats)) = (piece.size, resource.seats)

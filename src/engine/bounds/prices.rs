@@ -21,6 +21,15 @@ struct Chain {
     before: Vec<u32>,
 }
 
+/// A resource on which some pieces may already have been put.
+pub(crate) struct Held {
+    /// It is in use whatever happens.
+    pub(crate) forced: bool,
+    /// What it holds and who it is left for: end and start of what they occupy, and the
+    /// item, by end.
+    pub(crate) takers: Vec<(i64, i64, u32)>,
+}
+
 /// The chains of a problem.
 pub(crate) struct Chains {
     list: Vec<Chain>,
@@ -77,13 +86,12 @@ impl Chains {
         }
     }
 
-    /// The chains of single resources with what is left for each: the takers by end of what
-    /// they occupy, with end and start; `forced` ones are in use whatever happens.
-    pub(crate) fn left(count: usize, resources: Vec<(bool, Vec<(i64, i64, u32)>)>) -> Chains {
+    /// The chains of single resources with what is left for each of them.
+    pub(crate) fn left(count: usize, resources: Vec<Held>) -> Chains {
         let mut usable = vec![false; count];
         let list: Vec<Chain> = resources
             .into_iter()
-            .map(|(forced, takers)| {
+            .map(|Held { forced, takers }| {
                 for (_, _, item) in &takers {
                     usable[*item as usize] = true;
                 }

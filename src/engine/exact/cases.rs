@@ -247,7 +247,7 @@ impl Search<'_> {
     /// A refutation by prices, or the best prices that were found.
     fn priced(&mut self, start: &[f64]) -> Result<Case, Option<Vec<f64>>> {
         let chains = self.left.chains();
-        let pairs: usize = chains.iter().map(|(_, chain)| chain.len()).sum();
+        let pairs: usize = chains.iter().map(|held| held.takers.len()).sum();
         if pairs > MOST_PRICED {
             return Err(None);
         }

@@ -2,6 +2,7 @@
 //! pieces that have been put somewhere. `audit` works the same rules out on its own.
 
 use crate::engine::Problem;
+use crate::engine::bounds::prices::Held;
 
 /// Most (piece, resource) pairs of a problem that is looked at case by case.
 const MOST_PAIRS: usize = 2_000_000;
@@ -176,7 +177,7 @@ impl<'a> Left<'a> {
     }
 
     /// Per resource what it holds and who it is left for, by end, for a bound from prices.
-    pub(super) fn chains(&self) -> Vec<(bool, Vec<(i64, i64, u32)>)> {
+    pub(super) fn chains(&self) -> Vec<Held> {
         let chain = |r: usize| {
             let left = self.users[r].iter().filter(|(_, _, item)| {
                 let item = *item as usize;
@@ -185,11 +186,14 @@ impl<'a> Left<'a> {
                     None => self.open(item, r),
                 }
             });
-            let mut chain: Vec<(i64, i64, u32)> = left
+            let mut takers: Vec<(i64, i64, u32)> = left
                 .map(|(start, end, item)| (*end, *start, *item))
                 .collect();
-            chain.sort_unstable();
-            (self.holds[r] > 0, chain)
+            takers.sort_unstable();
+            Held {
+                forced: self.holds[r] > 0,
+                takers,
+            }
         };
         (0..self.resources.len()).map(chain).collect()
     }

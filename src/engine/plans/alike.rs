@@ -41,6 +41,19 @@ pub fn partition(spans: &[Span]) -> (Vec<u32>, usize) {
 /// go, and the members are enough. The plan is then the best there is.
 pub(crate) fn by_groups(problem: &Problem) -> Option<Assignment> {
     let mut groups: BTreeMap<&[u32], Vec<usize>> = BTreeMap::new();
+    // Most problems are not like that, which shows at the first few items.
+    let mut owner: Vec<&[u32]> = vec![&[]; problem.classes.len()];
+    for item in 0..problem.items.len() {
+        let choices = problem.choices(item);
+        for class in choices {
+            let owner = &mut owner[*class as usize];
+            if owner.is_empty() {
+                *owner = choices;
+            } else if *owner != choices {
+                return None;
+            }
+        }
+    }
     for item in 0..problem.items.len() {
         let choices = problem.choices(item);
         let (first, rest) = choices.split_first()?;
@@ -53,14 +66,8 @@ pub(crate) fn by_groups(problem: &Problem) -> Option<Assignment> {
         }
         groups.entry(choices).or_default().push(item);
     }
-    let mut owned = vec![false; problem.classes.len()];
     let mut on = vec![NONE; problem.items.len()];
     for (choices, items) in groups {
-        for class in choices {
-            if std::mem::replace(&mut owned[*class as usize], true) {
-                return None;
-            }
-        }
         let spans: Vec<Span> = items.iter().map(|item| problem.items[*item].core).collect();
         let (rows, count) = partition(&spans);
         let mut members: Vec<u32> = choices

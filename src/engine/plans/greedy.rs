@@ -8,19 +8,25 @@ use crate::engine::{Problem, Stopper};
 /// stopped, what is not placed yet stays unplaced.
 pub(crate) fn tightest_fit(problem: &Problem, stop: &dyn Stopper) -> Assignment {
     let takers = takers(problem);
-    let mut order: Vec<usize> = (0..problem.items.len()).collect();
-    let room = |item: &usize| -> usize {
-        let classes = problem.choices(*item).iter();
-        classes
-            .map(|class| problem.classes[*class as usize].members.len())
-            .sum()
+    let members: Vec<u32> = problem
+        .classes
+        .iter()
+        .map(|class| class.members.len() as u32)
+        .collect();
+    let room = |item: usize| -> u32 {
+        let classes = problem.choices(item).iter();
+        classes.map(|class| members[*class as usize]).sum()
     };
-    order.sort_by_cached_key(|item| (problem.items[*item].span.start, room(item)));
+    let mut order: Vec<(i64, u32, u32)> = (0..problem.items.len())
+        .map(|item| (problem.items[item].span.start.0, room(item), item as u32))
+        .collect();
+    order.sort_unstable();
     let mut rows = Rows::empty(problem);
     // Pieces with one choice cannot give way, so they sit first.
-    let (single, several): (Vec<usize>, Vec<usize>) =
-        order.into_iter().partition(|item| room(item) == 1);
-    for (count, item) in single.into_iter().chain(several).enumerate() {
+    let singles = order.iter().filter(|(_, room, _)| *room == 1);
+    let others = order.iter().filter(|(_, room, _)| *room != 1);
+    let order = singles.chain(others).map(|(.., item)| *item as usize);
+    for (count, item) in order.enumerate() {
         if count % 256 == 255 && stop.stop() {
             break;
         }
