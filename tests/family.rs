@@ -5,10 +5,11 @@
 //! 08:00 to 20:00 in steps of five minutes, two days for up to 400 requests, five above;
 //! rooms are open all day or (kind `shifts`) mornings 08:00-13:00 or afternoons 13:00-20:00
 //! as well. The hidden plan fills every used room on every day with requests of 30 to 180
-//! minutes (30, 60, 90, 120, 180 with weights 2, 4, 4, 3, 1) and pauses of 0 to 45 minutes;
-//! half the timetables keep 5 or 10 minutes free after everything. A request is as large as
-//! its room demands (above the next smaller size) in half of the cases, else it would fit a
-//! room of any smaller size; it needs each offer of its room with a chance of 30 %. One
+//! minutes (30, 60, 90, 120, 180 with weights 2, 4, 4, 3, 1) and pauses of 0 to 45 minutes
+//! (in half the timetables, the dense ones, 0 to 10); half keep 5 or 10 minutes free after
+//! everything. A request is as large as its room demands (above the next smaller size) in
+//! half of the cases (three quarters in dense ones), else it would fit a room of any smaller
+//! size; it needs each offer of its room with a chance of 30 %. One
 //! request in ten is pinned, all of them on two rooms in five.
 //!
 //! Why the hidden plan is the best, by kind (one after the other by seed):
@@ -79,6 +80,15 @@ struct Asked {
     witness: bool,
 }
 
+/// What a whole timetable has in common.
+struct Manner {
+    /// Minutes kept free after everything.
+    after: i64,
+    kind: &'static str,
+    /// Hardly any pauses, and mostly requests that need all of their room.
+    dense: bool,
+}
+
 const DAY: (i64, i64) = (8 * 60, 20 * 60);
 const MORNING: (i64, i64) = (8 * 60, 13 * 60);
 const AFTERNOON: (i64, i64) = (13 * 60, 20 * 60);
@@ -140,17 +150,13 @@ fn moments(kind: &str, room: &Room, days: i64) -> Vec<(i64, i64)> {
 
 /// The requests of one room on one day.
 fn fill(
-    rooms: &[Room],
-    at: usize,
-    day: i64,
-    moment: Option<i64>,
-    after: i64,
-    kind: &str,
-    dense: bool,
+    (at, room): (usize, &Room),
+    (day, moment): (i64, Option<i64>),
+    manner: &Manner,
     dice: &mut Dice,
     asked: &mut Vec<Asked>,
 ) {
-    let room = &rooms[at];
+    let Manner { after, kind, dense } = *manner;
     let mut now = room.open.0 + 5 * dice.below(10) as i64;
     loop {
         let lengths = [30, 30, 60, 60, 60, 60, 90, 90, 90, 90, 120, 120, 120, 180];
@@ -216,15 +222,14 @@ pub(crate) fn make(n: usize, seed: u64) -> Made {
     let used = (n.div_ceil(per_room)).max(4);
     let after = [0, 0, 5, 10][dice.below(4)];
     let dense = seed / 4 % 2 == 1;
+    let manner = Manner { after, kind, dense };
     let rooms = rooms(kind, used, &mut dice);
     let mut asked = Vec::new();
     for (at, room) in rooms.iter().enumerate().filter(|(_, room)| room.used) {
         let moments = moments(kind, room, days);
         for day in 0..days {
             let moment = moments.iter().find(|(on, _)| *on == day).map(|(_, at)| *at);
-            fill(
-                &rooms, at, day, moment, after, kind, dense, &mut dice, &mut asked,
-            );
+            fill((at, room), (day, moment), &manner, &mut dice, &mut asked);
         }
     }
     // Shuffled, so that the file tells nothing of the hidden plan; then down to n.

@@ -106,13 +106,9 @@ struct Instance {
 /// Seeds of the family in a benchmark.
 const SEEDS: std::ops::Range<u64> = 1..21;
 
-fn made(n: usize, part: &str) -> Vec<Instance> {
-    let made = SEEDS.map(|seed| (seed, family::make(n, seed)));
-    made.map(|(seed, made)| {
-        if let Ok(folder) = std::env::var("FEWEST_DUMP") {
-            let name = format!("{folder}/{}-{n}-{seed:02}.toml", made.kind);
-            std::fs::write(name, &made.text).unwrap();
-        }
+fn made(n: usize, part: &str) -> impl Iterator<Item = Instance> + '_ {
+    let made = SEEDS.map(move |seed| (seed, family::make(n, seed)));
+    made.map(move |(seed, made)| {
         let read = fewest::document::read("family.toml", made.text.as_bytes());
         Instance {
             name: format!("{}-{n}-{seed:02}_", made.kind),
@@ -123,12 +119,11 @@ fn made(n: usize, part: &str) -> Vec<Instance> {
             best: made.answer,
         }
     })
-    .filter(|instance| instance.name.contains(part))
-    .collect()
+    .filter(move |instance| instance.name.contains(part))
 }
 
-/// The published instances; `None` when they are not here.
-fn published(set: &str, part: &str) -> Option<Vec<Instance>> {
+/// The published instances, each read when its turn comes; `None` when they are not here.
+fn published(set: &str, part: &str) -> Option<impl Iterator<Item = Instance>> {
     let root = std::env::var_os("FEWEST_DATA")
         .map_or_else(|| PathBuf::from("../shared/data"), PathBuf::from);
     let folder = root.join("smptsp");
@@ -139,18 +134,18 @@ fn published(set: &str, part: &str) -> Option<Vec<Instance>> {
         );
         return None;
     };
-    let rows = answers
-        .lines()
-        .skip(1)
-        .map(|line| line.split(',').collect());
-    let wanted = rows.filter(|cells: &Vec<&str>| cells[0] == set && cells[1].contains(part));
-    let instances = wanted.map(|cells| Instance {
-        name: cells[1].into(),
-        timetable: read(&folder.join(set).join(format!("{}.dat", cells[1]))),
+    let wanted = answers.lines().skip(1).filter_map(|line| {
+        let cells: Vec<String> = line.split(',').map(str::to_string).collect();
+        (cells[0] == set && cells[1].contains(part)).then_some(cells)
+    });
+    let wanted: Vec<Vec<String>> = wanted.collect();
+    let folder = folder.join(set);
+    Some(wanted.into_iter().map(move |cells| Instance {
+        timetable: read(&folder.join(format!("{}.dat", cells[1]))),
         floor: cells[5].parse().unwrap(),
         best: cells[6].parse().unwrap(),
-    });
-    Some(instances.collect())
+        name: cells[1].clone(),
+    }))
 }
 
 fn main() {
@@ -162,10 +157,10 @@ fn main() {
     let seconds: f64 = args.get(1).map_or(10.0, |text| text.parse().unwrap());
     let part = args.get(2).map_or("", String::as_str);
     let seed: u64 = args.get(3).map_or(1, |text| text.parse().unwrap());
-    let instances = match set.strip_prefix("family-") {
-        Some(n) => made(n.parse().unwrap(), part),
+    let instances: Box<dyn Iterator<Item = Instance>> = match set.strip_prefix("family-") {
+        Some(n) => Box::new(made(n.parse().unwrap(), part)),
         None => match published(set, part) {
-            Some(instances) => instances,
+            Some(instances) => Box::new(instances),
             None => return,
         },
     };

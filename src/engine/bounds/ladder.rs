@@ -3,7 +3,7 @@
 
 use super::incompatible;
 use super::prices::Prices;
-use crate::claim::FloorProof;
+use crate::claim::{Case, FloorProof};
 use crate::engine::exact::cases::{self, Outcome};
 use crate::engine::plans::Assignment;
 use crate::engine::{Problem, Stopper};
@@ -150,6 +150,14 @@ impl<'a> Ladder<'a> {
         };
         self.cases.next += 1;
         match cases::refute(self.problem, part, wanted, most, &mut self.work, stop) {
+            // Where prices refute it all, nothing had to be told apart.
+            Outcome::Refuted(Case::Prices { unit, prices }) => {
+                Some(Found::Floor(FloorProof::Prices {
+                    unit,
+                    prices,
+                    value: wanted,
+                }))
+            }
             Outcome::Refuted(tree) => Some(Found::Floor(FloorProof::Cases {
                 value: wanted,
                 tree,
