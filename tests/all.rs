@@ -9,6 +9,7 @@
 mod captures;
 mod commands;
 mod edits;
+mod family;
 mod optimum;
 mod outside;
 mod panels;

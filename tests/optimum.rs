@@ -253,3 +253,29 @@ fn generated_with_a_known_answer() {
         );
     }
 }
+
+/// Small members of the family that users have: the answer known by construction is found
+/// and proved, and every kind of proof comes up.
+#[test]
+fn the_family_is_proved() {
+    let mut above = 0;
+    let mut by = std::collections::BTreeSet::new();
+    for seed in 1..=12 {
+        let made = crate::family::make(90, seed);
+        let settled = solve(&timetable(&made.text), 2_000_000);
+        let proved = matches!(
+            settled.receipt().knowledge(),
+            Knowledge::Proved(proved) if proved.count() == made.answer
+        );
+        assert!(proved, "{} {seed}: {:?}", made.kind, settled.receipt());
+        above += usize::from(made.answer > settled.survey().load.most);
+        by.insert(settled.answer().floor.name());
+    }
+    assert!(above >= 6, "{above}");
+    assert!(
+        ["clique", "incompatible", "prices"]
+            .iter()
+            .all(|name| by.contains(name)),
+        "{by:?}"
+    );
+}

@@ -1,6 +1,6 @@
 //! Plans and proofs that are wrong, each refused for the right reason.
 
-use crate::tools::{err, fewest, folder_with};
+use crate::tools::{err, fewest, file, folder_with};
 use std::path::Path;
 
 /// A script applied to a sample leaves a plan that audit lets through; here it is broken in
@@ -177,6 +177,40 @@ fn corrupted_plans_are_refused_with_the_right_reason() {
             err(&output)
         );
     }
+}
+
+/// `tests/cases/refused-plans`: for each timetable one plan with a proof that holds
+/// (`NAME.good.plan.toml`), and plans with one lie each (`NAME.LIE.plan.toml`) beside what
+/// audit says to it (`NAME.LIE.says`).
+#[test]
+fn a_folder_of_lies_is_refused() {
+    let folder = file("tests/cases/refused-plans");
+    let mut lies = 0;
+    for entry in std::fs::read_dir(&folder).unwrap() {
+        let path = entry.unwrap().path();
+        let name = path.file_name().unwrap().to_str().unwrap();
+        let Some((base, what)) = name
+            .strip_suffix(".plan.toml")
+            .and_then(|n| n.split_once('.'))
+        else {
+            continue;
+        };
+        let place = tempfile::tempdir().unwrap();
+        let timetable = place.path().join(format!("{base}.toml"));
+        std::fs::copy(folder.join(format!("{base}.toml")), &timetable).unwrap();
+        std::fs::copy(&path, place.path().join(format!("{base}.plan.toml"))).unwrap();
+        let output = fewest(&["audit", timetable.to_str().unwrap()]);
+        if what == "good" {
+            assert_eq!(output.status.code(), Some(0), "{name}: {}", err(&output));
+            continue;
+        }
+        lies += 1;
+        let says = std::fs::read_to_string(folder.join(format!("{base}.{what}.says"))).unwrap();
+        let said = err(&output).replace(&format!("{}/", place.path().display()), "");
+        assert_eq!(output.status.code(), Some(2), "{name}: {said}");
+        assert_eq!(said, says, "{name}");
+    }
+    assert!(lies >= 30, "only {lies}");
 }
 
 #[test]

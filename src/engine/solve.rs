@@ -318,7 +318,7 @@ impl Solving<'_, '_> {
         between: &mut dyn FnMut(),
     ) {
         let mut steps_left = budget.steps.unwrap_or(u64::MAX);
-        let mut plans = Plans::new(self.problem, budget.seed);
+        let mut plans = Plans::new(self.problem, budget.seed, true);
         while steps_left > 0 && !stop.stop() {
             let slice = SLICE.min(steps_left);
             steps_left -= slice;
@@ -445,7 +445,7 @@ impl Shared<'_> {
     }
 
     /// The second thread: floors as long as they give something, else plans from another
-    /// seed.
+    /// seed and with another choice of where to go on from.
     fn help(&self, mut ladder: Ladder<'_>, seed: u64, stop: &dyn Stopper) {
         let mut plans: Option<Plans<'_>> = None;
         let mut pace = Pace::default();
@@ -453,7 +453,7 @@ impl Shared<'_> {
             if pace.floors_next(&ladder) && self.climb(&mut ladder, stop) {
                 continue;
             }
-            let plans = plans.get_or_insert_with(|| Plans::new(self.problem, !seed));
+            let plans = plans.get_or_insert_with(|| Plans::new(self.problem, !seed, false));
             let more = self.plan(plans, SLICE, stop) && !plans.too_large();
             if !more && (ladder.spent() || !self.climb(&mut ladder, stop)) {
                 return;

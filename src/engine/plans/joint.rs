@@ -19,10 +19,11 @@ const ALONG: usize = 2;
 
 /// Most pieces laid out at once: their ends have ranks below [`RESTS`]. Where the resources
 /// hold more, a window of time is laid out and the rest stays.
-const MOST_PIECES: usize = 160;
+const MOST_PIECES: usize = 120;
 
-/// The stand-in that keeps a resource idle, in place of a rank.
-const RESTS: u8 = u8::MAX;
+/// The stand-in that keeps a resource idle, in place of a rank: above all of them, and
+/// below 128, so that all bytes of a state can be compared at once.
+const RESTS: u8 = 127;
 
 /// Slots of the table that finds equal states: a power of two well above what one layer
 /// can offer.
@@ -30,6 +31,19 @@ const SLOTS: usize = 8192;
 
 /// Per resource the rank of the end of what runs there (0 for nothing), one byte each.
 type State = u64;
+
+/// The high bit of every byte.
+const HIGH: u64 = 0x8080_8080_8080_8080;
+
+/// The high bit of every byte in which `state` is at most `limit`; all are below 128.
+fn at_most(state: State, limit: u64) -> u64 {
+    ((limit | HIGH) - state) & HIGH
+}
+
+/// The state without what is at most `over` (byte by byte).
+fn without(state: State, over: u64) -> State {
+    state & !((at_most(state, over) >> 7) * 0xff)
+}
 
 fn rank(state: State, k: usize) -> u8 {
     (state >> (8 * k)) as u8
@@ -49,23 +63,33 @@ struct Way {
     choice: u8,
 }
 
-/// A piece on the resources at hand: ranks are among the ends on that resource.
+/// A piece on the resources at hand, one byte for each; ranks are among the ends there.
 #[derive(Clone, Copy, Default)]
 struct Here {
-    allowed: bool,
-    start: i64,
-    end: i64,
+    /// The high bit where it may go.
+    allowed: u64,
     /// Its own rank.
-    rank: u8,
+    rank: u64,
     /// The highest rank that has ended when it starts.
-    free: u8,
+    free: u64,
     /// The highest rank that has ended before anything from this piece on starts.
-    over: u8,
+    over: u64,
+}
+
+/// A few resources, and what is laid out on them anew.
+struct Around {
+    /// By start.
+    items: Vec<u32>,
+    resources: Vec<usize>,
+    /// Per resource the end of what stays before, and the start of what stays after.
+    edges: Vec<(i64, i64)>,
 }
 
 /// What is used again from one call to the next.
 pub(crate) struct Scratch {
-    pieces: Vec<[Here; MOST]>,
+    pieces: Vec<Here>,
+    /// Start, end, and whether it may go there, on the resource that is being looked at.
+    spans: Vec<Option<(i64, i64)>>,
     ends: Vec<i64>,
     /// Ways of all layers, one after the other.
     ways: Vec<Way>,
@@ -81,6 +105,7 @@ impl Scratch {
     pub(crate) fn new() -> Scratch {
         Scratch {
             pieces: Vec::new(),
+            spans: Vec::new(),
             ends: Vec::new(),
             ways: Vec::new(),
             layers: Vec::new(),
@@ -153,11 +178,11 @@ impl Tabu<'_> {
             if self.done() || (attempt % 8 == 7 && stop.stop()) {
                 break;
             }
-            let (items, resources) = self.neighbourhood(*width as usize);
-            if resources.len() < 2 {
+            let around = self.neighbourhood(*width as usize);
+            if around.resources.len() < 2 {
                 break;
             }
-            let fullest = self.lay_out(&mut scratch, &items, &resources);
+            let fullest = self.lay_out(&mut scratch, &around);
             // Slowly: one crowded neighbourhood says little about the next.
             if fullest > BEAM {
                 *width = (*width - 0.1).max(2.0);
@@ -170,7 +195,7 @@ impl Tabu<'_> {
 
     /// A few resources that could exchange pieces, by a walk from something without a place,
     /// and the pieces to lay out on them, by start.
-    fn neighbourhood(&mut self, width: usize) -> (Vec<u32>, Vec<usize>) {
+    fn neighbourhood(&mut self, width: usize) -> Around {
         let mut resources: Vec<usize> = Vec::with_capacity(width);
         let mut along: Vec<u32> = Vec::new();
         let total = self.rows.len();
@@ -219,8 +244,36 @@ impl Tabu<'_> {
         for r in &resources {
             items.extend(self.rows[*r].iter().map(|(_, _, item)| *item));
         }
-        items.sort_unstable_by_key(|item| (self.problem.items[*item as usize].core, *item));
-        (items, resources)
+        let key = |item: &u32| (self.problem.items[*item as usize].core, *item);
+        items.sort_unstable_by_key(key);
+        let mut edges = vec![(i64::MIN, i64::MAX); resources.len()];
+        if items.len() > MOST_PIECES {
+            let centre = self.random.below(items.len());
+            let centre = match self.unplaced.is_empty() {
+                true => centre,
+                false => items
+                    .iter()
+                    .position(|item| self.on[*item as usize] == NONE)
+                    .unwrap_or(centre),
+            };
+            let from = centre.saturating_sub(MOST_PIECES / 2);
+            items = items[from..items.len().min(from + MOST_PIECES)].to_vec();
+            let (first, last) = (key(&items[0]), key(&items[items.len() - 1]));
+            for (r, (begin, finish)) in resources.iter().zip(&mut edges) {
+                for (start, end, item) in &self.rows[*r] {
+                    if key(item) < first {
+                        *begin = (*begin).max(*end);
+                    } else if key(item) > last {
+                        *finish = (*finish).min(*start);
+                    }
+                }
+            }
+        }
+        Around {
+            items,
+            resources,
+            edges,
+        }
     }
 
     /// How many pieces on either resource the other could take, clashes aside.
@@ -250,10 +303,8 @@ impl Tabu<'_> {
 
     /// Lays the pieces out on the resources as cheaply as the beam finds; returns how many
     /// states the fullest layer had.
-    fn lay_out(&mut self, scratch: &mut Scratch, items: &[u32], resources: &[usize]) -> usize {
-        if items.len() > MOST_PIECES {
-            return 0;
-        }
+    fn lay_out(&mut self, scratch: &mut Scratch, around: &Around) -> usize {
+        let (items, resources) = (&around.items, &around.resources);
         let count = resources.len();
         let resting = resources.iter().filter(|r| self.resting[**r]).count();
         let rests = (resting + self.rest_unplaced.min(1)).min(count);
@@ -263,65 +314,43 @@ impl Tabu<'_> {
             .map(|item| u64::from(self.weight[*item as usize]))
             .sum();
         let bound = dropped + (rests - resting) as u64 * u64::from(self.rest_weight);
-        self.prepare(scratch, items, resources);
+        self.prepare(scratch, around);
         let mut random = self.random.clone();
         scratch.ways.clear();
         scratch.layers.clear();
-        self.beginnings(scratch, count, rests, bound);
+        self.beginnings(scratch, around, rests, bound);
         let mut fullest = 0;
         for (at, item) in items.iter().enumerate() {
             let weight = u64::from(self.weight[*item as usize]);
             let here = scratch.pieces[at];
-            // What has ended before anything still to come is nothing; where more has ended
-            // since the last piece, that has to be looked at again.
-            let later = scratch.pieces[at + 1];
-            let mut ending = [0usize; MOST];
-            let mut endings = 0;
-            for k in 0..count {
-                if later[k].over > here[k].over {
-                    ending[endings] = k;
-                    endings += 1;
-                }
-            }
-            let clear = |mut state: State| {
-                for k in &ending[..endings] {
-                    let running = rank(state, *k);
-                    if running != RESTS && running <= later[*k].over {
-                        state = with_rank(state, *k, 0);
-                    }
-                }
-                state
-            };
+            // What has ended before anything still to come is nothing.
+            let over = scratch.pieces[at + 1].over;
             let first = scratch.layers[at];
             let last = scratch.ways.len();
             for place in first..last {
                 let way = scratch.ways[place];
                 let before = (place - first) as u16;
                 if way.cost + weight <= bound {
-                    let state = clear(way.state);
                     let dropped = Way {
-                        state,
+                        state: without(way.state, over),
                         cost: way.cost + weight,
                         before,
                         choice: MOST as u8,
                     };
                     scratch.offer(dropped, &mut random);
                 }
-                for (k, here) in here.iter().enumerate().take(count) {
-                    if here.allowed && rank(way.state, k) <= here.free {
-                        let rank = if here.rank <= later[k].over {
-                            0
-                        } else {
-                            here.rank
-                        };
-                        let put = Way {
-                            state: clear(with_rank(way.state, k, rank)),
-                            cost: way.cost,
-                            before,
-                            choice: k as u8,
-                        };
-                        scratch.offer(put, &mut random);
-                    }
+                let mut free = at_most(way.state, here.free) & here.allowed;
+                while free != 0 {
+                    let k = free.trailing_zeros() as usize / 8;
+                    free &= free - 1;
+                    let byte = 0xff << (8 * k);
+                    let put = Way {
+                        state: without(way.state & !byte | here.rank & byte, over),
+                        cost: way.cost,
+                        before,
+                        choice: k as u8,
+                    };
+                    scratch.offer(put, &mut random);
                 }
             }
             let found = scratch.advance(&mut random);
@@ -337,46 +366,54 @@ impl Tabu<'_> {
     }
 
     /// Spans and ranks of the pieces on the resources; one more entry stands for the end.
-    fn prepare(&self, scratch: &mut Scratch, items: &[u32], resources: &[usize]) {
+    fn prepare(&self, scratch: &mut Scratch, around: &Around) {
+        let (items, resources) = (&around.items, &around.resources);
         scratch.pieces.clear();
-        scratch
-            .pieces
-            .resize(items.len() + 1, [Here::default(); MOST]);
+        scratch.pieces.resize(items.len() + 1, Here::default());
         for (k, r) in resources.iter().enumerate() {
             let class = self.problem.class_of[*r];
-            scratch.ends.clear();
-            for (item, here) in items.iter().zip(&mut scratch.pieces) {
+            let span = |item: &u32| {
                 let choices = self.problem.choices(*item as usize);
-                if choices.binary_search(&class).is_ok() {
-                    let span = self.problem.occupied(*item as usize, class);
-                    here[k].allowed = true;
-                    (here[k].start, here[k].end) = (span.start.0, span.end.0);
-                    scratch.ends.push(span.end.0);
-                }
-            }
+                choices.binary_search(&class).ok()?;
+                let span = self.problem.occupied(*item as usize, class);
+                let (begin, finish) = around.edges[k];
+                (begin <= span.start.0 && span.end.0 <= finish)
+                    .then_some((span.start.0, span.end.0))
+            };
+            scratch.spans.clear();
+            scratch.spans.extend(items.iter().map(span));
+            scratch.ends.clear();
+            let ends = scratch.spans.iter().flatten().map(|(_, end)| *end);
+            scratch.ends.extend(ends);
             scratch.ends.sort_unstable();
             scratch.ends.dedup();
-            let ended = |by: i64| scratch.ends.partition_point(|end| *end <= by) as u8;
+            let ended = |by: i64| scratch.ends.partition_point(|end| *end <= by) as u64;
             let mut coming = i64::MAX;
-            for here in scratch.pieces.iter_mut().rev() {
-                let here = &mut here[k];
-                if here.allowed {
-                    coming = coming.min(here.start);
-                    here.rank = ended(here.end);
-                    here.free = ended(here.start);
+            let spans = scratch.spans.iter().copied().chain([None]);
+            let spans: Vec<Option<(i64, i64)>> = spans.collect();
+            for (here, span) in scratch.pieces.iter_mut().zip(spans).rev() {
+                if let Some((start, end)) = span {
+                    coming = coming.min(start);
+                    here.allowed |= 0x80 << (8 * k);
+                    here.rank |= ended(end) << (8 * k);
+                    here.free |= ended(start) << (8 * k);
                 }
-                here.over = ended(coming);
+                here.over |= ended(coming) << (8 * k);
             }
         }
     }
 
     /// Which of the resources rest from the beginning: every way to choose them.
-    fn beginnings(&self, scratch: &mut Scratch, count: usize, rests: usize, bound: u64) {
+    fn beginnings(&self, scratch: &mut Scratch, around: &Around, rests: usize, bound: u64) {
         scratch.layers.push(0);
+        let count = around.resources.len();
+        // Where something stays before or after, the resource cannot rest.
+        let stays = |k: &usize| around.edges[*k] != (i64::MIN, i64::MAX);
+        let working = (0..count).filter(stays).fold(0, |set, k| set | 1 << k);
         for set in 0u32..1 << count {
             let resting = set.count_ones() as usize;
             let cost = rests.saturating_sub(resting) as u64 * u64::from(self.rest_weight);
-            if resting > rests || cost > bound {
+            if resting > rests || cost > bound || set & working != 0 {
                 continue;
             }
             let chosen = (0..count).filter(|k| set & (1 << k) != 0);
@@ -402,10 +439,13 @@ impl Tabu<'_> {
             at = scratch.layers[layer - 1] + usize::from(way.before);
         }
         let rests = scratch.ways[at].state;
-        for r in resources {
-            while let Some((_, _, item)) = self.rows[*r].last().copied() {
-                self.eject(item, *r);
+        for item in items {
+            let on = self.on[*item as usize];
+            if on != NONE {
+                self.eject(*item, on as usize);
             }
+        }
+        for r in resources {
             if std::mem::replace(&mut self.resting[*r], false) {
                 self.rest_unplaced += 1;
             }

@@ -48,10 +48,12 @@ pub(crate) struct Plans<'a> {
     aimed: Option<((u64, usize), usize)>,
     since_better: u64,
     width: f64,
+    /// Go back to where the least weight was missing rather than the fewest pieces.
+    by_weight: bool,
 }
 
 impl<'a> Plans<'a> {
-    pub(crate) fn new(problem: &'a Problem, seed: u64) -> Plans<'a> {
+    pub(crate) fn new(problem: &'a Problem, seed: u64, by_weight: bool) -> Plans<'a> {
         let skip = vec![false; problem.items.len()];
         Plans {
             search: tabu::Tabu::new(problem, &skip, seed),
@@ -61,6 +63,7 @@ impl<'a> Plans<'a> {
             aimed: None,
             since_better: 0,
             width: 4.0,
+            by_weight,
         }
     }
 
@@ -115,7 +118,7 @@ impl<'a> Plans<'a> {
         } else {
             // Near the end what is missing is one piece that no chain of ejections brings
             // in: then several resources are laid out anew together.
-            search.run_and_return(steps, stop);
+            search.run_and_return(steps, self.by_weight, stop);
         }
         if !search.done() {
             search.rearrange(REARRANGED, &mut self.width, stop);

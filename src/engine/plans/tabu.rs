@@ -66,7 +66,8 @@ pub(crate) struct Tabu<'a> {
     /// Real weight of what is unplaced.
     pub(crate) left_out: u64,
     skipped: Vec<bool>,
-    /// Where the least weight was missing in this slice, while that is watched.
+    by_weight: bool,
+    /// Where the least was missing in this slice, while that is watched.
     low: Option<(u64, Assignment, Vec<bool>)>,
     step: u64,
     pub(super) random: Random,
@@ -132,6 +133,7 @@ impl<'a> Tabu<'a> {
             unplaced: Vec::new(),
             left_out: 0,
             skipped: skip.to_vec(),
+            by_weight: true,
             low: None,
             step: 0,
             random: Random::seeded(seed),
@@ -196,15 +198,20 @@ impl<'a> Tabu<'a> {
         self.rest_unplaced -= self.resting.iter().filter(|rests| **rests).count();
     }
 
-    /// The weight of what is missing, as it has grown.
+    /// The weight of what is missing, as it has grown, or how much is.
     fn missing(&self) -> u64 {
+        if !self.by_weight {
+            return (self.unplaced.len() + self.rest_unplaced) as u64;
+        }
         let weight = |item: &u32| u64::from(self.weight[*item as usize]);
         let pieces: u64 = self.unplaced.iter().map(weight).sum();
         pieces + self.rest_unplaced as u64 * u64::from(self.rest_weight)
     }
 
-    /// Up to `steps` steps, then back to the state in which the least weight was missing.
-    pub(crate) fn run_and_return(&mut self, steps: u64, stop: &dyn Stopper) {
+    /// Up to `steps` steps, then back to the state in which the least weight was missing, or
+    /// the fewest pieces.
+    pub(crate) fn run_and_return(&mut self, steps: u64, by_weight: bool, stop: &dyn Stopper) {
+        self.by_weight = by_weight;
         self.low = Some((u64::MAX, Vec::new(), Vec::new()));
         self.run(steps, stop, &mut |_, _| {});
         if let Some((missing, on, resting)) = self.low.take()
