@@ -2,9 +2,12 @@
 //! a small integer programme solved by the microlp library.
 
 use crate::tools::{solve, timetable};
-use fewest::audit::Knowledge;
+use fewest::audit::{self, Knowledge};
+use fewest::claim::{Case, FloorProof};
+use fewest::clock::Instant;
 use proptest::prelude::*;
 use std::fmt::Write;
+use std::sync::Arc;
 
 /// Start, length, size, needs the projector, pin, weight, never.
 type Wanted = (i64, i64, u32, bool, Option<usize>, u64, Option<usize>);
@@ -278,4 +281,84 @@ fn the_family_is_proved() {
             .all(|name| by.contains(name)),
         "{by:?}"
     );
+}
+
+/// A random case: audit must see through it.
+fn case(pieces: usize, rooms: usize) -> impl Strategy<Value = Case> {
+    let piece = move || (0..pieces.max(1)).prop_map(|at| Arc::<str>::from(format!("r{at}")));
+    let some = move || prop::collection::btree_set(piece(), 1..pieces.max(2));
+    let none = piece().prop_map(|piece| Case::NoPlace { piece });
+    let moment = (0i64..33).prop_map(|ten| Instant(MONDAY_AT_EIGHT + ten * 600));
+    let short = (moment, some()).prop_map(|(at, pieces)| Case::Short {
+        at,
+        pieces: pieces.into_iter().collect(),
+    });
+    let prices = (
+        1i64..4,
+        some(),
+        prop::collection::vec(1i64..5, pieces.max(1)),
+    )
+        .prop_map(|(unit, pieces, prices)| Case::Prices {
+            unit,
+            prices: pieces.into_iter().zip(prices).collect(),
+        });
+    let leaf = prop_oneof![none, short, prices];
+    leaf.prop_recursive(3, 20, rooms as u32, move |inner| {
+        (piece(), prop::collection::vec(inner, rooms)).prop_map(|(piece, cases)| {
+            let rooms = (0..).map(|room| Arc::<str>::from(format!("room-{room}")));
+            Case::Place {
+                piece,
+                on: rooms.zip(cases).collect(),
+            }
+        })
+    })
+}
+
+/// 2027-01-11T08:00:00Z, where the tiny timetables begin.
+const MONDAY_AT_EIGHT: i64 = 1_799_654_400;
+
+fn tiny_with_case() -> impl Strategy<Value = (Tiny, Case)> {
+    tiny().prop_flat_map(|tiny| {
+        let case = case(tiny.requests.len(), tiny.rooms.len());
+        (Just(tiny), case)
+    })
+}
+
+proptest! {
+    #![proptest_config(ProptestConfig::with_cases(3_000))]
+    /// Whatever prices somebody writes down: a floor that audit lets through is true.
+    #[test]
+    fn no_false_prices_pass_audit(
+        tiny in tiny().prop_filter("all can be placed", |t| t.best().0 == 0),
+        unit in 1i64..5,
+        prices in prop::collection::vec(0i64..5, 8),
+    ) {
+        let (_, used) = tiny.best();
+        let timetable = timetable(&tiny.text());
+        let prices: Vec<(Arc<str>, i64)> = (0..tiny.requests.len())
+            .zip(prices)
+            .filter(|(_, price)| *price > 0)
+            .map(|(at, price)| (format!("r{at}").into(), price))
+            .collect();
+        let value = used + 1;
+        prop_assert!(audit::check_floor(&timetable, &FloorProof::Prices { unit, prices, value }).is_err());
+    }
+
+    /// Nor do cases prove anything false, whether made up or the engine's own with a larger
+    /// claim; and the engine's own pass.
+    #[test]
+    fn no_false_cases_pass_audit((tiny, tree) in tiny_with_case()) {
+        let (left, used) = tiny.best();
+        prop_assume!(left == 0);
+        let timetable = timetable(&tiny.text());
+        let claims = |value, tree: &Case| {
+            let tree = tree.clone();
+            audit::check_floor(&timetable, &FloorProof::Cases { value, tree })
+        };
+        prop_assert!(claims(used + 1, &tree).is_err(), "{tree:?}");
+        if let FloorProof::Cases { value, tree } = &solve(&timetable, 1_000).answer().floor {
+            prop_assert_eq!(claims(*value, tree).ok(), Some(*value));
+            prop_assert!(claims(used + 1, tree).is_err(), "{tree:?}");
+        }
+    }
 }

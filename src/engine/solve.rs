@@ -416,7 +416,9 @@ impl Shared<'_> {
             0 => in_use,
             _ => self.problem.resources.len() + 1,
         };
-        if floor >= aim {
+        // Where something stays out for a reason that is known, a floor that says so once
+        // more would only hide it.
+        if floor >= aim || self.out_floor > 0 {
             return false;
         }
         match ladder.slice(floor, aim, left_out > 0, stop) {

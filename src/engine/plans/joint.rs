@@ -61,6 +61,8 @@ struct Way {
     before: u16,
     /// The resource chosen for the last piece, or `MOST` when it was dropped.
     choice: u8,
+    /// Decides between ways of the same cost: every one of them is as likely.
+    lot: u32,
 }
 
 /// A piece on the resources at hand, one byte for each; ranks are among the ends there.
@@ -118,7 +120,8 @@ impl Scratch {
 
     /// Offers a way to the next layer; of two to the same state the cheaper stays, ties at
     /// random.
-    fn offer(&mut self, way: Way, random: &mut Random) {
+    fn offer(&mut self, mut way: Way, random: &mut Random) {
+        way.lot = random.next() as u32;
         let mut slot = (way.state.wrapping_mul(0x9e37_79b9_7f4a_7c15) >> 48) as usize % SLOTS;
         loop {
             let (round, at) = self.slots[slot];
@@ -129,7 +132,7 @@ impl Scratch {
             }
             let known = &mut self.next[at as usize];
             if known.state == way.state {
-                if way.cost < known.cost || (way.cost == known.cost && random.next() & 1 == 0) {
+                if (way.cost, way.lot) < (known.cost, known.lot) {
                     *known = way;
                 }
                 return;
@@ -140,14 +143,14 @@ impl Scratch {
 
     /// Keeps the cheapest of the next layer, ties at random, and moves on to it. Returns how
     /// many there were.
-    fn advance(&mut self, random: &mut Random) -> usize {
+    fn advance(&mut self) -> usize {
         let count = self.next.len();
         self.layers.push(self.ways.len());
         if count > BEAM {
             self.order.clear();
             for (at, way) in self.next.iter().enumerate() {
                 // The cost first; the low bits decide ties.
-                let key = way.cost << 16 | (random.next() & 0xffff);
+                let key = way.cost << 24 | u64::from(way.lot >> 8);
                 self.order.push((key, at as u32));
             }
             self.order.select_nth_unstable(BEAM);
@@ -336,6 +339,7 @@ impl Tabu<'_> {
                         cost: way.cost + weight,
                         before,
                         choice: MOST as u8,
+                        lot: 0,
                     };
                     scratch.offer(dropped, &mut random);
                 }
@@ -349,11 +353,12 @@ impl Tabu<'_> {
                         cost: way.cost,
                         before,
                         choice: k as u8,
+                        lot: 0,
                     };
                     scratch.offer(put, &mut random);
                 }
             }
-            let found = scratch.advance(&mut random);
+            let found = scratch.advance();
             fullest = fullest.max(found);
             if found == 0 {
                 self.random = random;
@@ -422,6 +427,7 @@ impl Tabu<'_> {
                 cost,
                 before: 0,
                 choice: MOST as u8,
+                lot: 0,
             });
         }
         scratch.next.clear();

@@ -7,8 +7,11 @@ use crate::engine::{Problem, Stopper};
 /// Steps of the tabu search in one slice.
 pub(crate) const SLICE: u64 = 5_000;
 
-/// Rearrangements after each slice.
-const REARRANGED: u32 = 1000;
+/// Rearrangements after each slice, and how many more after each that was in vain: the
+/// longer nothing comes, the less the short steps have to give.
+const REARRANGED: u32 = 1_000;
+const MORE: u32 = 200;
+const MOST_REARRANGED: u32 = 8_000;
 
 /// About how much work that is, in the entries that the floors count.
 pub(crate) const SLICE_WORK: u64 = 30_000_000;
@@ -47,6 +50,8 @@ pub(crate) struct Plans<'a> {
     /// The value it started from and the target it aims at.
     aimed: Option<((u64, usize), usize)>,
     since_better: u64,
+    /// Slices in vain.
+    slices: u32,
     width: f64,
     /// Go back to where the least weight was missing rather than the fewest pieces.
     by_weight: bool,
@@ -62,6 +67,7 @@ impl<'a> Plans<'a> {
             skip,
             aimed: None,
             since_better: 0,
+            slices: 0,
             width: 4.0,
             by_weight,
         }
@@ -121,7 +127,9 @@ impl<'a> Plans<'a> {
             search.run_and_return(steps, self.by_weight, stop);
         }
         if !search.done() {
-            search.rearrange(REARRANGED, &mut self.width, stop);
+            let attempts = REARRANGED.saturating_add(MORE * self.slices);
+            self.slices += 1;
+            search.rearrange(attempts.min(MOST_REARRANGED), &mut self.width, stop);
             if placing && search.left_out < least {
                 better = Some(search.on.clone());
             }
@@ -132,6 +140,7 @@ impl<'a> Plans<'a> {
         match better {
             Some(better) if rows::value(self.problem, &better) < known.value => {
                 self.since_better = 0;
+                self.slices = 0;
                 Slice::Better(better)
             }
             _ => Slice::Nothing,
