@@ -4,9 +4,8 @@
 use super::{Receipt, Refusal, cases};
 use crate::claim::{Answer, FloorProof, HallViolation, Plan};
 use crate::clock::{Instant, Span};
-use crate::lookup::FastMap;
+use crate::lookup::{FastMap, FastSet};
 use crate::timetable::{Piece, Resource, Timetable};
-use std::collections::HashSet;
 use std::sync::Arc;
 
 /// Checks a whole answer: the plan, the floor, the violations.
@@ -252,7 +251,8 @@ impl<'a> Facts<'a> {
 
 fn plan(facts: &Facts<'_>, plan: &Plan, refusals: &mut Vec<Refusal>) -> usize {
     let resources = facts.timetable.resources();
-    let mut seen: HashSet<&str> = HashSet::with_capacity(facts.all.len());
+    let mut seen: FastSet<&str> = FastSet::default();
+    seen.reserve(facts.all.len());
     let mut rows: Vec<Vec<(Span, &Arc<str>)>> = vec![Vec::new(); resources.all.len()];
     let named = plan.placements.iter().map(|placement| &placement.piece);
     for id in named.chain(plan.unplaced.iter().map(|unplaced| &unplaced.piece)) {
@@ -321,7 +321,7 @@ fn named<'a>(
     ids: &[Arc<str>],
     refusals: &mut Vec<Refusal>,
 ) -> Vec<&'a Piece> {
-    let mut seen = HashSet::new();
+    let mut seen = FastSet::default();
     let mut pieces = Vec::with_capacity(ids.len());
     for id in ids {
         if !seen.insert(id) {
@@ -461,10 +461,10 @@ fn running(
 
 fn violations(facts: &Facts<'_>, claimed: &[HallViolation], refusals: &mut Vec<Refusal>) -> u64 {
     let resources = facts.timetable.resources();
-    let mut seen: HashSet<&Arc<str>> = HashSet::new();
+    let mut seen: FastSet<&Arc<str>> = FastSet::default();
     let mut least = 0;
     for violation in claimed {
-        let stated: HashSet<&str> = violation.resources.iter().map(|id| &**id).collect();
+        let stated: FastSet<&str> = violation.resources.iter().map(|id| &**id).collect();
         let mut weights = Vec::new();
         for piece in named(facts, &violation.pieces, refusals) {
             weights.push(u64::from(piece.request.weight));

@@ -114,6 +114,15 @@ impl Problem {
                     .hours
                     .allow(crate::timetable::occupied(piece, resource))
         };
+        // Where the same time is kept free everywhere there is nothing to compare.
+        let first = self
+            .classes
+            .first()
+            .map(|class| (class.setup, class.turnaround));
+        let uniform = first.filter(|first| {
+            let mut classes = self.classes.iter();
+            classes.all(|class| (class.setup, class.turnaround) == *first)
+        });
         for ((piece, pin), only) in pieces.iter().zip(pins).zip(&spoken.only) {
             let from = self.choices.len() as u32;
             if let Some(pin) = pin {
@@ -159,7 +168,13 @@ impl Problem {
                 turnaround: piece.request.turnaround,
                 choices: (from, to),
             };
-            item.core = self.least(timetable, &item);
+            item.core = match uniform.filter(|_| from < to) {
+                Some((before, after)) => item.span.widened(
+                    item.setup.unwrap_or(before),
+                    item.turnaround.unwrap_or(after),
+                ),
+                None => self.least(timetable, &item),
+            };
             self.items.push(item);
         }
     }

@@ -416,11 +416,13 @@ impl Shared<'_> {
             0 => in_use,
             _ => self.problem.resources.len() + 1,
         };
-        // Where something stays out for a reason that is known, a floor that says so once
-        // more would only hide it.
-        if floor >= aim || self.out_floor > 0 {
+        // Where something stays out for a reason that is known, only a clique still says
+        // something: the other floors would rise for that same reason and hide it.
+        let known = self.out_floor > 0;
+        if floor >= aim || (known && ladder.stale()) {
             return false;
         }
+        ladder.only_cliques(known);
         match ladder.slice(floor, aim, left_out > 0, stop) {
             None => {}
             Some(Found::Floor(proof)) => self.change(|state| {

@@ -28,6 +28,8 @@ pub(crate) struct Ladder<'a> {
     prices: Option<Prices>,
     prices_wanted: bool,
     cases: Cases,
+    /// Only incompatibility cliques are looked for.
+    only: bool,
     /// About how many entries have been looked at.
     pub(crate) work: u64,
 }
@@ -82,20 +84,27 @@ impl<'a> Ladder<'a> {
             prices: None,
             prices_wanted: true,
             cases: Cases::default(),
+            only: false,
             work: 0,
         }
+    }
+
+    /// Gives up everything but incompatibility cliques.
+    pub(crate) fn only_cliques(&mut self, only: bool) {
+        self.only = only;
+        self.prices_wanted &= !only;
     }
 
     /// Whether nothing new has come for so long that time is better spent elsewhere.
     pub(crate) fn stale(&self) -> bool {
         let large = self.problem.items.len() > PART;
-        let cases = self.cases.over() || (large && self.cases.round > 0);
+        let cases = self.only || self.cases.over() || (large && self.cases.round > 0);
         !self.prices_wanted && cases && (!self.clique_wanted || self.climbs >= STALE)
     }
 
     /// Whether there is nothing at all left to try.
     pub(crate) fn spent(&self) -> bool {
-        !self.prices_wanted && !self.clique_wanted && self.cases.over()
+        !self.prices_wanted && !self.clique_wanted && (self.only || self.cases.over())
     }
 
     /// One slice towards a floor above `floor`, at most `aim`: what the best plan uses, or
@@ -109,7 +118,7 @@ impl<'a> Ladder<'a> {
     ) -> Option<Found> {
         // When there are few pieces, going through the cases settles it at once.
         let wanted = if placing { aim } else { floor + 1 };
-        let small = self.problem.items.len() <= SMALL && self.cases.round == 0;
+        let small = self.problem.items.len() <= SMALL && self.cases.round == 0 && !self.only;
         if small && let Some(found) = self.refute(wanted, stop) {
             return Some(found);
         }
@@ -121,7 +130,10 @@ impl<'a> Ladder<'a> {
         if self.prices_wanted {
             return self.price(floor, aim, stop).map(Found::Floor);
         }
-        self.refute(wanted, stop)
+        match self.only {
+            true => None,
+            false => self.refute(wanted, stop),
+        }
     }
 
     /// One part of the problem, case by case.
