@@ -227,9 +227,9 @@ fn text(settled: &Settled, report: &Report<'_>) -> String {
             "no two of these can share a {one}, by time or by what they may use"
         )),
         "prices" => Some(format!(
-            "every {one} has a best that it could take of these, and fewer cannot take them all"
+            "even if every {one} takes what suits it best, fewer cannot take all of these"
         )),
-        "cases" => Some("every way to do with fewer was gone through, placing these".into()),
+        "cases" => Some("every way to do with fewer fails at these".into()),
         _ => None,
     };
     if let Some(ground) = ground {

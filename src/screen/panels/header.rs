@@ -62,7 +62,9 @@ pub(in crate::screen) fn draw(model: &Model, buffer: &mut Buffer, area: Rect) {
         let load = &settled.survey().load;
         let mut peaks = words::peaks(load.most, &load.peaks(), settings.zone);
         if settled.receipt().floor() > load.most {
-            peaks.push_str("; no two of { } can share");
+            // What the braces on the board are about.
+            let floor = settled.receipt().floor();
+            peaks = peaks.replacen(':', &format!(", {{ }} need {floor}:"), 1);
         }
         let room = usize::from(area.width).saturating_sub(usize::from(x) + 3 + width(&saved) + 1);
         x = put(

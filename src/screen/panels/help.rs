@@ -13,7 +13,7 @@ const SIGNS: [(&str, &str); 14] = [
     ("[ ]", "a piece"),
     (
         "{ }",
-        "a piece that the floor counts: no two of them can share",
+        "a piece that the floor counts: they need as many as it says",
     ),
     ("< >", "the piece in hand"),
     ("( )", "the piece that is carried"),
