@@ -101,8 +101,16 @@ pub fn solve(
         found,
     };
     solving.first_plan();
-    solving.report();
-    solving.first_floor();
+    // After an edit the count should come with its reason; who opens a file wants a plan.
+    if reference.is_some() {
+        solving.first_floor();
+        solving.report();
+    } else {
+        solving.report();
+        if solving.first_floor() {
+            solving.report();
+        }
+    }
     if !solving.settled() && !stop.stop() {
         solving.second_plan(stop);
         if !solving.settled() {
@@ -170,17 +178,15 @@ impl Solving<'_, '_> {
         self.best = on;
     }
 
-    /// What can be said at once of why not fewer, and of what is left out.
-    fn first_floor(&mut self) {
+    /// What can be said at once of why not fewer, and of what is left out; whether anything.
+    fn first_floor(&mut self) -> bool {
         let (left_out, in_use) = self.value(&self.best);
         if left_out > 0 {
             self.violations = hall::disjoint(self.problem);
         }
         let higher =
             in_use > self.floor.value() && self.raise(&incompatible::by_groups(self.problem));
-        if higher || !self.violations.is_empty() {
-            self.report();
-        }
+        higher || !self.violations.is_empty()
     }
 
     /// Takes an incompatibility clique as the floor if it is a higher one.

@@ -139,7 +139,10 @@ impl<'a> Ladder<'a> {
     /// One part of the problem, case by case.
     fn refute(&mut self, wanted: usize, stop: &dyn Stopper) -> Option<Found> {
         if self.cases.wanted != wanted {
+            // Parts that were found to do with less than the old number may not do with less
+            // than a smaller one.
             let parts = self.cases.parts.take();
+            let parts = parts.filter(|_| self.cases.wanted < wanted);
             self.cases = Cases {
                 wanted,
                 parts,

@@ -162,6 +162,9 @@ impl Chains {
 /// Units tried for whole prices, the plainest first: prices a reader can add up.
 const UNITS: [i64; 10] = [1, 2, 3, 4, 6, 12, 60, 840, 27_720, 1_000_000];
 
+/// The dearest a piece may be, in resources.
+const MOST_PRICE: f64 = 1e5;
+
 /// Steps from one start at most.
 const STEPS_PER_START: u32 = 1_500;
 
@@ -372,6 +375,10 @@ impl Prices {
     /// Whole prices that give the wanted floor, in the plainest unit.
     fn whole(&mut self, prices: &[f64], wanted: usize) -> Option<Whole> {
         let mut best = Vec::new();
+        // Where nothing fits the prices grow without end; audit takes no larger ones.
+        if prices.iter().any(|price| *price > MOST_PRICE) {
+            return None;
+        }
         for unit in UNITS {
             self.whole.clear();
             let scaled = prices.iter().map(|price| (price * unit as f64).round());
