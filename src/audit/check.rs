@@ -2,7 +2,7 @@
 //! than taken from the code that the engine uses.
 
 use super::{Receipt, Refusal, cases};
-use crate::claim::{Answer, FloorProof, HallViolation, Plan};
+use crate::claim::{Answer, FloorProof, HallViolation, OutPrices, Plan};
 use crate::clock::{Instant, Span};
 use crate::lookup::{FastMap, FastSet};
 use crate::timetable::{Piece, Resource, Timetable};
@@ -17,7 +17,12 @@ pub fn check(timetable: &Timetable, answer: &Answer) -> Result<Receipt, Vec<Refu
     let mut refusals = Vec::new();
     let in_use = plan(&facts, &answer.plan, &mut refusals);
     let floor = floor(&facts, &answer.floor, &mut refusals);
-    let unplaced_floor = violations(&facts, &answer.violations, &mut refusals);
+    let by_halls = violations(&facts, &answer.violations, &mut refusals);
+    let by_prices = answer
+        .out
+        .as_ref()
+        .map_or(0, |claimed| out(&facts, claimed, &mut refusals));
+    let unplaced_floor = by_halls.max(by_prices);
     if !refusals.is_empty() {
         return Err(refusals);
     }
@@ -406,6 +411,48 @@ fn prices(
     if proved < claimed {
         refusals.push(Refusal::OtherFloor { claimed, proved });
     }
+}
+
+/// Recounts prices that say how much stays out.
+fn out(facts: &Facts<'_>, claimed: &OutPrices, refusals: &mut Vec<Refusal>) -> u64 {
+    let ids: Vec<Arc<str>> = claimed
+        .prices
+        .iter()
+        .map(|(id, _)| Arc::clone(id))
+        .collect();
+    let pieces = named(facts, &ids, refusals);
+    let fits = |price: &i64| (1..=MOST_PRICE).contains(price);
+    let dear = pieces
+        .iter()
+        .zip(&claimed.prices)
+        .any(|(piece, (_, price))| {
+            i128::from(*price) > i128::from(claimed.unit) * i128::from(piece.request.weight)
+        });
+    let whole = fits(&claimed.unit) && claimed.prices.iter().all(|(_, price)| fits(price));
+    if !whole || dear || ids.len() != pieces.len() {
+        refusals.push(Refusal::BadPrices);
+        return 0;
+    }
+    let all = &facts.timetable.resources().all;
+    let mut chains: Vec<Vec<(Span, i64)>> = vec![Vec::new(); all.len()];
+    for (piece, (_, price)) in pieces.iter().zip(&claimed.prices) {
+        for at in facts.least(piece).1 {
+            chains[at].push((Facts::occupied(piece, &all[at]), *price));
+        }
+    }
+    let mut value: i128 = claimed.prices.iter().map(|(_, p)| i128::from(*p)).sum();
+    for chain in &mut chains {
+        value -= i128::from(dearest(chain));
+    }
+    let unit = i128::from(claimed.unit);
+    let proved = u64::try_from((value.max(0) + unit - 1) / unit).unwrap_or(u64::MAX);
+    if proved < claimed.weight {
+        refusals.push(Refusal::OtherWeight {
+            claimed: claimed.weight,
+            proved,
+        });
+    }
+    claimed.weight
 }
 
 /// No single price may be above this, so that sums stay far from overflow.

@@ -82,8 +82,18 @@ pub enum Refusal {
     #[error("a claimed shortage has enough resources")]
     NoShortage,
     /// Prices that are not whole numbers above 0, or far too large.
-    #[error("the prices of the bound must be whole numbers above 0 (and below 2^40)")]
+    #[error(
+        "the prices of the bound must be whole numbers above 0 (and below 2^40, and of what stays out no more than its weight)"
+    )]
     BadPrices,
+    /// Less stays out than claimed.
+    #[error("the plan file claims that a weight of {claimed} stays out, its prices give {proved}")]
+    OtherWeight {
+        /// As claimed.
+        claimed: u64,
+        /// As proved.
+        proved: u64,
+    },
     /// A case of a proof by cases does not hold.
     #[error("the proof by cases does not hold: {0}")]
     BadCase(Arc<str>),

@@ -206,6 +206,20 @@ pub struct HallViolation {
     pub resources: Vec<Arc<str>>,
 }
 
+/// Whole prices that prove how much weight stays unplaced: no piece costs more than `unit`
+/// for each unit of its weight, and what the pieces cost together beyond the dearest chain
+/// of every resource, divided by `unit` and rounded up, has no place (Lagrangian
+/// relaxation; Geoffrion 1974).
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct OutPrices {
+    /// What one unit of weight costs, at least 1.
+    pub unit: i64,
+    /// The pieces and their prices, all above 0.
+    pub prices: Vec<(Arc<str>, i64)>,
+    /// The weight that is claimed to stay out.
+    pub weight: u64,
+}
+
 /// What the engine claims of a timetable.
 #[derive(Clone, Debug)]
 pub struct Answer {
@@ -215,6 +229,8 @@ pub struct Answer {
     pub floor: FloorProof,
     /// Why not everything; no two of them share a piece.
     pub violations: Vec<HallViolation>,
+    /// Why not everything, by prices: where they prove more.
+    pub out: Option<OutPrices>,
     /// Seconds of search so far.
     pub seconds: f64,
 }

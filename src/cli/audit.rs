@@ -93,6 +93,7 @@ fn judge(
         plan,
         floor,
         violations,
+        out,
         state,
         ..
     } = file;
@@ -123,6 +124,7 @@ fn judge(
             plan,
             floor,
             violations,
+            out,
             seconds: 0.0,
         },
     ) {

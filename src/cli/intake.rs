@@ -273,5 +273,6 @@ fn issued(intake: &Intake, timetable: String) -> PlanFile {
         },
         floor: None,
         violations: Vec::new(),
+        out: None,
     }
 }

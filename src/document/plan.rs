@@ -1,7 +1,9 @@
 //! Plan files: what was planned, for which timetable, and the proof that goes with it.
 
 use super::{Mistake, Mistakes, cases};
-use crate::claim::{Answer, FloorProof, HallViolation, Placement, Plan, Reason, Unplaced};
+use crate::claim::{
+    Answer, FloorProof, HallViolation, OutPrices, Placement, Plan, Reason, Unplaced,
+};
 use crate::clock::{Instant, Span, Zone};
 use serde::{Deserialize, Serialize};
 use std::path::{Path, PathBuf};
@@ -36,6 +38,8 @@ pub struct PlanFile {
     pub floor: Option<FloorProof>,
     /// Why not everything.
     pub violations: Vec<HallViolation>,
+    /// Why not everything, by prices.
+    pub out: Option<OutPrices>,
 }
 
 /// `NAME.plan.toml` beside `NAME.toml`.
@@ -96,6 +100,8 @@ struct RawProof {
     prices: Vec<i64>,
     #[serde(default, skip_serializing_if = "Vec::is_empty")]
     cases: Vec<String>,
+    #[serde(default, skip_serializing_if = "Option::is_none")]
+    out: Option<RawOut>,
     #[serde(default, skip_serializing_if = "Vec::is_empty")]
     shortage: Vec<RawShortage>,
 }
@@ -106,6 +112,15 @@ struct RawShortage {
     at: String,
     pieces: Vec<String>,
     resources: Vec<String>,
+}
+
+#[derive(Serialize, Deserialize)]
+#[serde(deny_unknown_fields)]
+struct RawOut {
+    weight: u64,
+    unit: i64,
+    pieces: Vec<String>,
+    prices: Vec<i64>,
 }
 
 /// An RFC 3339 time, to the second.
@@ -135,6 +150,7 @@ impl PlanFile {
             plan: answer.plan.clone(),
             floor: Some(answer.floor.clone()),
             violations: answer.violations.clone(),
+            out: answer.out.clone(),
         }
     }
 
@@ -170,6 +186,12 @@ impl PlanFile {
                 }
                 _ => Vec::new(),
             },
+            out: self.out.as_ref().map(|out| RawOut {
+                weight: out.weight,
+                unit: out.unit,
+                pieces: out.prices.iter().map(|(id, _)| id.to_string()).collect(),
+                prices: out.prices.iter().map(|(_, price)| *price).collect(),
+            }),
             shortage: self
                 .violations
                 .iter()
@@ -266,7 +288,7 @@ impl PlanFile {
                 because: Reason::Said(u.because.into()),
             });
         }
-        let (mut floor, mut violations) = (None, Vec::new());
+        let (mut floor, mut violations, mut out) = (None, Vec::new(), None);
         if let Some(proof) = raw.proof {
             let pieces = shared(proof.pieces);
             let parts = (proof.at, proof.unit, &*proof.prices, &*proof.cases);
@@ -306,6 +328,17 @@ impl PlanFile {
                 ));
             }
             floor = Some(proved);
+            if let Some(raw) = proof.out {
+                if raw.pieces.len() != raw.prices.len() {
+                    let said = "what stays out has not one price for each piece";
+                    return Err(fail(0..0, said.into()));
+                }
+                out = Some(OutPrices {
+                    unit: raw.unit,
+                    prices: shared(raw.pieces).into_iter().zip(raw.prices).collect(),
+                    weight: raw.weight,
+                });
+            }
             for v in proof.shortage {
                 violations.push(HallViolation {
                     at: time(&v.at)?,
@@ -322,6 +355,7 @@ impl PlanFile {
             plan,
             floor,
             violations,
+            out,
         })
     }
 }

@@ -6,7 +6,9 @@ use super::bounds::{clique, hall, incompatible};
 use super::plans::slices::{Known, Plans, SLICE, SLICE_WORK, Slice};
 use super::plans::{Assignment, NONE, align, alike, greedy, keep, rows};
 use super::{Problem, Stopper};
-use crate::claim::{Answer, FloorProof, HallViolation, Placement, Plan, Reason, Unplaced};
+use crate::claim::{
+    Answer, FloorProof, HallViolation, OutPrices, Placement, Plan, Reason, Unplaced,
+};
 use crate::lookup::FastMap;
 use crate::timetable::Timetable;
 use std::sync::Arc;
@@ -97,6 +99,7 @@ pub fn solve(
         began: Instant::now(),
         floor: clique::largest(problem),
         violations: Vec::new(),
+        out: None,
         best: vec![NONE; problem.items.len()],
         found,
     };
@@ -126,6 +129,7 @@ struct Solving<'a, 'f> {
     began: Instant,
     floor: FloorProof,
     violations: Vec<HallViolation>,
+    out: Option<OutPrices>,
     best: Assignment,
     found: &'f mut dyn FnMut(&Answer),
 }
@@ -243,6 +247,7 @@ impl Solving<'_, '_> {
             plan,
             floor: self.floor.clone(),
             violations: self.violations.clone(),
+            out: self.out.clone(),
             seconds: self.began.elapsed().as_secs_f64(),
         }
     }
@@ -288,9 +293,10 @@ impl Solving<'_, '_> {
         let both = BothRefs(stop, &over);
         let shared = Shared {
             problem: self.problem,
-            out_floor: self.out_floor(),
             over: over.clone(),
             state: Mutex::new(State {
+                out_floor: self.out_floor(),
+                out: None,
                 value: self.value(&self.best),
                 best: self.best.clone(),
                 floor: self.floor.clone(),
@@ -350,6 +356,7 @@ impl Solving<'_, '_> {
         };
         state.news = false;
         let (best, floor) = (state.best.clone(), state.floor.clone());
+        self.out.clone_from(&state.out);
         drop(state);
         self.floor = floor;
         if best != self.best {
@@ -364,6 +371,9 @@ struct State {
     best: Assignment,
     value: (u64, usize),
     floor: FloorProof,
+    /// Weight that provably stays out, and the prices that say so if they say most.
+    out_floor: u64,
+    out: Option<OutPrices>,
     /// Something has changed since it was last told.
     news: bool,
 }
@@ -371,7 +381,6 @@ struct State {
 /// What the threads share.
 struct Shared<'a> {
     problem: &'a Problem,
-    out_floor: u64,
     /// Raised when plan and floor meet.
     over: super::Flag,
     state: Mutex<State>,
@@ -394,12 +403,12 @@ impl Shared<'_> {
         let Ok(state) = self.state.lock() else {
             return false;
         };
-        let (best, value) = (state.best.clone(), state.value);
+        let (best, value, out_floor) = (state.best.clone(), state.value, state.out_floor);
         drop(state);
         let known = Known {
             best: &best,
             value,
-            out_floor: self.out_floor,
+            out_floor,
         };
         match plans.slice(known, steps, stop) {
             Slice::Over => return false,
@@ -416,7 +425,21 @@ impl Shared<'_> {
         };
         let floor = state.floor.value();
         let (left_out, in_use) = state.value;
+        let out_floor = state.out_floor;
         drop(state);
+        if out_floor < left_out && ladder.out_wanted() {
+            if let Some(out) = ladder.stays_out(out_floor, left_out, stop) {
+                self.change(|state| {
+                    let more = out.weight > state.out_floor;
+                    if more {
+                        state.out_floor = out.weight;
+                        state.out = Some(out);
+                    }
+                    more
+                });
+            }
+            return true;
+        }
         // With something left out, the question is whether everything can be placed at all.
         let aim = match left_out {
             0 => in_use,
@@ -424,7 +447,7 @@ impl Shared<'_> {
         };
         // Where something stays out for a reason that is known, only a clique still says
         // something: the other floors would rise for that same reason and hide it.
-        let known = self.out_floor > 0;
+        let known = out_floor > 0;
         if floor >= aim || (known && ladder.stale()) {
             return false;
         }

@@ -3,7 +3,7 @@
 
 use super::incompatible;
 use super::prices::Prices;
-use crate::claim::{Case, FloorProof};
+use crate::claim::{Case, FloorProof, OutPrices};
 use crate::engine::exact::cases::{self, Outcome};
 use crate::engine::plans::Assignment;
 use crate::engine::{Problem, Stopper};
@@ -28,6 +28,8 @@ pub(crate) struct Ladder<'a> {
     prices: Option<Prices>,
     prices_wanted: bool,
     cases: Cases,
+    out: Option<Prices>,
+    out_wanted: bool,
     /// Only incompatibility cliques are looked for.
     only: bool,
     /// About how many entries have been looked at.
@@ -84,9 +86,46 @@ impl<'a> Ladder<'a> {
             prices: None,
             prices_wanted: true,
             cases: Cases::default(),
+            out: None,
+            out_wanted: true,
             only: false,
             work: 0,
         }
+    }
+
+    /// Whether prices may still show that more stays out.
+    pub(crate) fn out_wanted(&self) -> bool {
+        self.out_wanted
+    }
+
+    /// One slice towards a proof that more than a weight of `known` stays out, where a plan
+    /// leaves out `left_out`.
+    pub(crate) fn stays_out(
+        &mut self,
+        known: u64,
+        left_out: u64,
+        stop: &dyn Stopper,
+    ) -> Option<OutPrices> {
+        let out = self.out.get_or_insert_with(|| Prices::out(self.problem));
+        let until = self.work + SLICE;
+        while self.work < until && !stop.stop() {
+            self.work += 2 * out.step_size() as u64;
+            match out.step(known as usize + 1, left_out as usize) {
+                None => {
+                    self.out_wanted = false;
+                    return None;
+                }
+                Some(Some(whole)) => {
+                    return Some(OutPrices {
+                        unit: whole.unit,
+                        prices: whole.named(self.problem),
+                        weight: whole.value as u64,
+                    });
+                }
+                Some(None) => {}
+            }
+        }
+        None
     }
 
     /// Gives up everything but incompatibility cliques.

@@ -37,6 +37,8 @@ pub(crate) struct Chains {
     usable: Vec<bool>,
     /// Entries in all chains together.
     pub(super) entries: usize,
+    /// Whether one resource costs 1, or nothing.
+    costs: bool,
 }
 
 /// What a resource takes beyond its own price, and the pieces it takes for that.
@@ -83,6 +85,7 @@ impl Chains {
                 .map(|item| !problem.choices(item).is_empty())
                 .collect(),
             list,
+            costs: true,
         }
     }
 
@@ -102,6 +105,7 @@ impl Chains {
             entries: list.iter().map(|chain| chain.items.len()).sum(),
             usable,
             list,
+            costs: true,
         }
     }
 
@@ -121,11 +125,12 @@ impl Chains {
             }
             let mut at = chain.items.len();
             let dearest = best[at];
-            if dearest <= 1.0 && !chain.forced {
+            let cost = if self.costs { 1.0 } else { 0.0 };
+            if dearest <= cost && !chain.forced {
                 continue;
             }
             let members = f64::from(chain.members);
-            taken.value -= members * (dearest - 1.0);
+            taken.value -= members * (dearest - cost);
             taken.used += members;
             while at > 0 {
                 if best[at] > best[at - 1] {
@@ -149,7 +154,8 @@ impl Chains {
                 let with = prices[*item as usize] + best[chain.before[at] as usize];
                 best.push(best[at].max(with));
             }
-            let mut beyond = best[chain.items.len()] - unit;
+            let cost = if self.costs { unit } else { 0 };
+            let mut beyond = best[chain.items.len()] - cost;
             if !chain.forced {
                 beyond = beyond.max(0);
             }
@@ -181,6 +187,8 @@ pub(crate) struct Prices {
     whole: Vec<i64>,
     /// The relaxation is known to give no more than this.
     ceiling: f64,
+    /// No price may be above this.
+    caps: Option<Vec<f64>>,
 }
 
 /// One run of the volume algorithm.
@@ -240,6 +248,27 @@ impl Prices {
             scratch: Vec::new(),
             whole: Vec::new(),
             ceiling: f64::INFINITY,
+            caps: None,
+        }
+    }
+
+    /// A search for how much weight stays out: resources cost nothing, and no piece costs
+    /// more than its weight.
+    pub(crate) fn out(problem: &Problem) -> Prices {
+        let mut chains = Chains::of(problem);
+        chains.costs = false;
+        // What has no choice at all stays out for its whole weight.
+        chains.usable = vec![true; problem.items.len()];
+        let weights: Vec<f64> = problem
+            .items
+            .iter()
+            .map(|item| f64::from(item.weight))
+            .collect();
+        let half = weights.iter().map(|weight| weight / 2.0).collect();
+        let starts = vec![vec![0.0; weights.len()], half, weights.clone()];
+        Prices {
+            caps: Some(weights),
+            ..Prices::from(chains, starts)
         }
     }
 
@@ -302,9 +331,11 @@ impl Prices {
     fn climb(&mut self, ascent: &mut Ascent, target: f64) -> bool {
         ascent.steps += 1;
         let usable = &self.chains.usable;
+        let caps = self.caps.as_deref();
         let lack = |ascent: &Ascent, item: usize| {
             let lack = 1.0 - ascent.cover[item];
-            if !usable[item] || (lack < 0.0 && ascent.best[item] <= 0.0) {
+            let capped = caps.is_some_and(|caps| lack > 0.0 && ascent.best[item] >= caps[item]);
+            if !usable[item] || capped || (lack < 0.0 && ascent.best[item] <= 0.0) {
                 0.0
             } else {
                 lack
@@ -320,7 +351,10 @@ impl Prices {
             0.0
         };
         let prices: Vec<f64> = (0..usable.len())
-            .map(|item| (ascent.best[item] + step * lack(ascent, item)).max(0.0))
+            .map(|item| {
+                let price = (ascent.best[item] + step * lack(ascent, item)).max(0.0);
+                caps.map_or(price, |caps| price.min(caps[item]))
+            })
             .collect();
         let taken = self.chains.take(&prices, &mut self.scratch);
         // The share of the new that brings the average nearest to covering everything.
