@@ -22,7 +22,13 @@ pub fn check(timetable: &Timetable, answer: &Answer) -> Result<Receipt, Vec<Refu
         .out
         .as_ref()
         .map_or(0, |claimed| out(&facts, claimed, &mut refusals));
-    let unplaced_floor = by_halls.max(by_prices);
+    let mut unplaced_floor = by_halls.max(by_prices);
+    if floor > timetable.resources().all.len() {
+        // Not everything fits, so something stays out: at least the lightest.
+        let counted = facts.all.iter().filter(|piece| !piece.withdrawn);
+        let lightest = counted.map(|piece| u64::from(piece.request.weight)).min();
+        unplaced_floor = unplaced_floor.max(lightest.unwrap_or(0));
+    }
     if !refusals.is_empty() {
         return Err(refusals);
     }

@@ -5,7 +5,7 @@ use crate::audit::{Refusal, check, check_plan};
 use crate::claim::Answer;
 use crate::document::{self, PlanFile, State, issued_path, plan_path};
 use crate::store;
-use crate::text::clean;
+use crate::text::{clean, cut};
 use crate::timetable::Timetable;
 use crate::words::{self, state_name};
 use std::fmt::Write;
@@ -160,9 +160,14 @@ fn said(state: State) -> &'static str {
     }
 }
 
+/// Cells of a refusal at most.
+const LONGEST_LINE: usize = 400;
+
 fn refuse(name: &str, refusals: &[Refusal], outcome: &mut Outcome) -> Verdict {
     for refusal in refusals.iter().take(MOST_SHOWN) {
-        let _ = writeln!(outcome.err, "{name}: {}", clean(&refusal.to_string()));
+        // Names in a plan file may be of any length.
+        let said = cut(&clean(&refusal.to_string()), LONGEST_LINE);
+        let _ = writeln!(outcome.err, "{name}: {said}");
     }
     if refusals.len() > MOST_SHOWN {
         let _ = writeln!(

@@ -236,7 +236,7 @@ impl Search {
             self.seconds
         };
         let within = std::time::Duration::try_from_secs_f64(within)
-            .map_err(|_| Outcome::bad("--seconds takes a number of seconds, 0 or more"))?;
+            .map_err(|_| Outcome::bad("--seconds takes a number of seconds from 0 to 10^19"))?;
         let until = std::time::Instant::now().checked_add(within);
         let until = until.ok_or_else(|| Outcome::bad("--seconds is too large"))?;
         job.run(self.budget(), &crate::engine::Until(until), &mut |_| {})

@@ -6,6 +6,8 @@
 //! short TIME: REQUEST REQUEST   too few are left for these, which all run then
 //! prices UNIT: REQUEST=PRICE    what is left cannot take these
 //! ```
+//!
+//! A request that has been placed may have a price too; it counts on its room alone.
 
 use crate::claim::Case;
 use crate::clock::Instant;

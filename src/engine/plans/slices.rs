@@ -52,6 +52,8 @@ pub(crate) struct Plans<'a> {
     since_better: u64,
     /// Slices in vain.
     slices: u32,
+    /// Slices altogether.
+    turns: u32,
     width: f64,
     /// Go back to where the least weight was missing rather than the fewest pieces.
     by_weight: bool,
@@ -68,6 +70,7 @@ impl<'a> Plans<'a> {
             aimed: None,
             since_better: 0,
             slices: 0,
+            turns: 0,
             width: 4.0,
             by_weight,
         }
@@ -102,6 +105,7 @@ impl<'a> Plans<'a> {
             in_use - 1
         };
         self.since_better += steps;
+        self.turns += 1;
         let Some(search) = &mut self.search else {
             return Slice::Nothing;
         };
@@ -114,7 +118,15 @@ impl<'a> Plans<'a> {
         }
         let mut better: Option<Assignment> = None;
         let mut least = left_out;
-        if placing {
+        if placing && self.turns.is_multiple_of(2) {
+            // What is left out is judged by real weights, not by those that the search has
+            // grown: from the best plan, with nothing else in mind.
+            search.forget();
+            if !search.aim(known.best, target, stop) {
+                self.aimed = None;
+                return Slice::Nothing;
+            }
+        } else if placing {
             search.run(steps, stop, &mut |left, on| {
                 if left < least {
                     least = left;

@@ -141,6 +141,14 @@ impl<'a> Tabu<'a> {
         })
     }
 
+    /// Forgets how the weights have grown; to be followed by [`Tabu::aim`].
+    pub(crate) fn forget(&mut self) {
+        for (weight, item) in self.weight.iter_mut().zip(&self.problem.items) {
+            *weight = item.weight.min(1 << 12);
+        }
+        self.rest_weight = 1;
+    }
+
     /// Takes over a plan and aims at `target` resources; weights stay. `false` when stopped
     /// before it was done: the search is then of no use.
     pub(crate) fn aim(&mut self, plan: &[u32], target: usize, stop: &dyn Stopper) -> bool {
