@@ -401,6 +401,17 @@ fn prices(
         refusals.push(Refusal::BadPrices);
         return;
     }
+    let value = beyond(facts, &pieces, priced, unit);
+    let unit = i128::from(unit);
+    let proved = usize::try_from((value.max(0) + unit - 1) / unit).unwrap_or(usize::MAX);
+    if proved < claimed {
+        refusals.push(Refusal::OtherFloor { claimed, proved });
+    }
+}
+
+/// What pieces cost together, less what each resource could take at best beyond its own
+/// `cost`.
+fn beyond(facts: &Facts<'_>, pieces: &[&Piece], priced: &[(Arc<str>, i64)], cost: i64) -> i128 {
     let all = &facts.timetable.resources().all;
     let mut chains: Vec<Vec<(Span, i64)>> = vec![Vec::new(); all.len()];
     for (piece, (_, price)) in pieces.iter().zip(priced) {
@@ -408,15 +419,9 @@ fn prices(
             chains[at].push((Facts::occupied(piece, &all[at]), *price));
         }
     }
-    let mut value: i128 = priced.iter().map(|(_, price)| i128::from(*price)).sum();
-    for chain in &mut chains {
-        value -= i128::from((dearest(chain) - unit).max(0));
-    }
-    let unit = i128::from(unit);
-    let proved = usize::try_from((value.max(0) + unit - 1) / unit).unwrap_or(usize::MAX);
-    if proved < claimed {
-        refusals.push(Refusal::OtherFloor { claimed, proved });
-    }
+    let together: i128 = priced.iter().map(|(_, price)| i128::from(*price)).sum();
+    let taken = chains.iter_mut().map(|chain| dearest(chain) - cost);
+    together - taken.map(|taken| i128::from(taken.max(0))).sum::<i128>()
 }
 
 /// Recounts prices that say how much stays out.
@@ -439,17 +444,7 @@ fn out(facts: &Facts<'_>, claimed: &OutPrices, refusals: &mut Vec<Refusal>) -> u
         refusals.push(Refusal::BadPrices);
         return 0;
     }
-    let all = &facts.timetable.resources().all;
-    let mut chains: Vec<Vec<(Span, i64)>> = vec![Vec::new(); all.len()];
-    for (piece, (_, price)) in pieces.iter().zip(&claimed.prices) {
-        for at in facts.least(piece).1 {
-            chains[at].push((Facts::occupied(piece, &all[at]), *price));
-        }
-    }
-    let mut value: i128 = claimed.prices.iter().map(|(_, p)| i128::from(*p)).sum();
-    for chain in &mut chains {
-        value -= i128::from(dearest(chain));
-    }
+    let value = beyond(facts, &pieces, &claimed.prices, 0);
     let unit = i128::from(claimed.unit);
     let proved = u64::try_from((value.max(0) + unit - 1) / unit).unwrap_or(u64::MAX);
     if proved < claimed.weight {

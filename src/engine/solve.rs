@@ -297,6 +297,8 @@ impl Solving<'_, '_> {
             state: Mutex::new(State {
                 out_floor: self.out_floor(),
                 out: None,
+                slices: 0,
+                waiting: None,
                 value: self.value(&self.best),
                 best: self.best.clone(),
                 floor: self.floor.clone(),
@@ -307,9 +309,10 @@ impl Solving<'_, '_> {
         if budget.threads < 2 {
             let mut pace = Pace::default();
             self.plans(budget, &shared, &both, &mut || {
-                while !both.stop() && pace.floors_next(&ladder) && shared.climb(&mut ladder, &both)
-                {
-                }
+                while !both.stop()
+                    && pace.floors_next(&ladder)
+                    && shared.climb(&mut ladder, true, &both)
+                {}
             });
             return;
         }
@@ -334,7 +337,7 @@ impl Solving<'_, '_> {
         while steps_left > 0 && !stop.stop() {
             let slice = SLICE.min(steps_left);
             steps_left -= slice;
-            let more = shared.plan(&mut plans, slice, stop);
+            let more = shared.plan(&mut plans, slice, true, stop);
             if plans.too_large() && !stop.stop() {
                 // Only the floors can still do something.
                 std::thread::sleep(std::time::Duration::from_millis(1));
@@ -366,6 +369,9 @@ impl Solving<'_, '_> {
     }
 }
 
+/// Slices after which the first thread takes plans from others.
+const ITS_SAY: u32 = 2;
+
 /// What the threads know together.
 struct State {
     best: Assignment,
@@ -374,6 +380,9 @@ struct State {
     /// Weight that provably stays out, and the prices that say so if they say most.
     out_floor: u64,
     out: Option<OutPrices>,
+    /// Slices of the first thread, and a plan that another found meanwhile.
+    slices: u32,
+    waiting: Option<Assignment>,
     /// Something has changed since it was last told.
     news: bool,
 }
@@ -398,8 +407,9 @@ impl Shared<'_> {
         }
     }
 
-    /// One slice of the plan search; whether it may give more.
-    fn plan(&self, plans: &mut Plans<'_>, steps: u64, stop: &dyn Stopper) -> bool {
+    /// One slice of the plan search, on the `first` thread or another; whether it may give
+    /// more.
+    fn plan(&self, plans: &mut Plans<'_>, steps: u64, first: bool, stop: &dyn Stopper) -> bool {
         let Ok(state) = self.state.lock() else {
             return false;
         };
@@ -413,13 +423,24 @@ impl Shared<'_> {
         match plans.slice(known, steps, stop) {
             Slice::Over => return false,
             Slice::Nothing => {}
-            Slice::Better(best) => self.offer(best),
+            Slice::Better(best) => self.offer(best, first),
+        }
+        if first {
+            let waiting = self.state.lock().ok().and_then(|mut state| {
+                state.slices += 1;
+                let heard = state.slices >= ITS_SAY;
+                state.waiting.take_if(|_| heard)
+            });
+            if let Some(plan) = waiting {
+                self.offer(plan, true);
+            }
         }
         true
     }
 
-    /// One slice of the floors; whether there is anything left for them to find.
-    fn climb(&self, ladder: &mut Ladder<'_>, stop: &dyn Stopper) -> bool {
+    /// One slice of the floors, `alone` or beside the first thread; whether there is anything
+    /// left for them to find.
+    fn climb(&self, ladder: &mut Ladder<'_>, alone: bool, stop: &dyn Stopper) -> bool {
         let Ok(state) = self.state.lock() else {
             return false;
         };
@@ -461,13 +482,19 @@ impl Shared<'_> {
                 }
                 higher
             }),
-            Some(Found::Plan(plan)) => self.offer(plan),
+            Some(Found::Plan(plan)) => self.offer(plan, alone),
         }
         true
     }
 
-    fn offer(&self, plan: Assignment) {
+    /// Takes a plan over when it is better. The first thread has its say first, so that
+    /// what is quickly found is the same every time.
+    fn offer(&self, plan: Assignment, first: bool) {
         self.change(|state| {
+            if !first && state.slices < ITS_SAY {
+                state.waiting = Some(plan);
+                return false;
+            }
             let value = rows::value(self.problem, &plan);
             let better = value < state.value;
             if better {
@@ -483,12 +510,12 @@ impl Shared<'_> {
         let mut plans: Option<Plans<'_>> = None;
         let mut pace = Pace::default();
         while !stop.stop() {
-            if pace.floors_next(&ladder) && self.climb(&mut ladder, stop) {
+            if pace.floors_next(&ladder) && self.climb(&mut ladder, false, stop) {
                 continue;
             }
             let plans = plans.get_or_insert_with(|| Plans::new(self.problem, !seed, false));
-            let more = self.plan(plans, SLICE, stop) && !plans.too_large();
-            if !more && (ladder.spent() || !self.climb(&mut ladder, stop)) {
+            let more = self.plan(plans, SLICE, false, stop) && !plans.too_large();
+            if !more && (ladder.spent() || !self.climb(&mut ladder, false, stop)) {
                 return;
             }
         }
