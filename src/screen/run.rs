@@ -177,6 +177,11 @@ impl Loop {
                         self.waiting = None;
                     }
                     self.dirty = true;
+                    // A frame may have been drawn for the new size before we were told of it,
+                    // while the terminal still had the old one.
+                    if matches!(msg, Msg::Resize(..)) {
+                        self.redraw();
+                    }
                     update(&mut self.model, msg)
                 }
             };
