@@ -203,8 +203,7 @@ impl Search {
 
     /// One climb: add what fits, swap where one stands in the way, until neither helps; then
     /// penalise what is inside and go elsewhere: with a vertex from outside, or, when nothing
-    /// has come of that for a while, from a single one. Returns the
-    /// vertices looked at.
+    /// has come of that for a while, from a single one. Returns the vertices looked at.
     pub(crate) fn climb(&mut self) -> usize {
         let mut looked = 0;
         let mut allowed = self.usable.clone();
