@@ -15,6 +15,7 @@ mod outside;
 mod panels;
 mod plans;
 mod reading;
+mod repeats;
 mod safety;
 mod samples;
 mod terminal;

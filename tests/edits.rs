@@ -5,6 +5,7 @@ use fewest::clock::{Instant, Span, Zone};
 use fewest::desk::Desk;
 use fewest::document;
 use fewest::edit::{Change, Context, Edit, Field, parse, print};
+use fewest::timetable::Prefer;
 use proptest::prelude::*;
 use std::path::Path;
 use std::sync::Arc;
@@ -53,6 +54,19 @@ count = 2   # two of them
 [[resource]] # the hall
 id = "hall"
 closed = [{ from = 2027-01-20T08:00:00, to = 2027-01-20T12:00:00, because = "repair" }] # once
+
+# Every Monday but one.
+[[request]]
+id = "w"
+start = 2027-01-18T15:00:00
+end = 2027-01-18T16:00:00
+repeat = "FREQ=WEEKLY;COUNT=4" # the term
+except = [2027-02-08]
+
+[[occurrence]]
+of = "w"
+date = 2027-01-25
+pin = "hall" # the big one
 
 # First.
 [[request]]
@@ -117,6 +131,42 @@ fn an_edit_changes_its_value_and_no_other_byte() {
             "end   =   2027-01-11T11:00:00\nfastened = true",
         ),
         ("loosen b", "\n  fastened = true # by hand", ""),
+        (
+            "move w to 2027-01-18 16:00",
+            "start = 2027-01-18T15:00:00\nend = 2027-01-18T16:00:00",
+            "start = 2027-01-18T16:00:00\nend = 2027-01-18T17:00:00",
+        ),
+        (
+            "move w@2027-01-25 to 16:30",
+            "pin = \"hall\" # the big one",
+            "pin = \"hall\" # the big one\nstart = 2027-01-25T16:30:00",
+        ),
+        ("unpin w@2027-01-25", "\npin = \"hall\" # the big one", ""),
+        (
+            "withdraw w@2027-02-01",
+            "length = \"1h\"\n",
+            "length = \"1h\"\n\n[[occurrence]]\nof = \"w\"\ndate = 2027-02-01\nwithdrawn = true\n",
+        ),
+        (
+            "set w together yes",
+            "except = [2027-02-08]",
+            "except = [2027-02-08]\ntogether = true",
+        ),
+        (
+            "set w repeat \"FREQ=DAILY;COUNT=10\"",
+            "\"FREQ=WEEKLY;COUNT=4\"",
+            "\"FREQ=DAILY;COUNT=10\"",
+        ),
+        (
+            "settle until 2027-01-12 08:00",
+            "settled_until = 2027-01-01T00:00:00",
+            "settled_until = 2027-01-12T08:00:00",
+        ),
+        (
+            "prefer changes",
+            "settled_until = 2027-01-01T00:00:00",
+            "settled_until = 2027-01-01T00:00:00\nprefer = \"changes\"",
+        ),
         (
             "withdraw b",
             "  fastened = true # by hand",
@@ -328,7 +378,7 @@ fn requests_and_resources_are_added_set_and_dropped() {
         ("set a only cellar", "there is no resource or kind cellar"),
         (
             "set a colour red",
-            "column 7: \"colour\" cannot be set; known are: title, size, needs, people, only, never, weight, length, setup, turnaround, seats, offers",
+            "column 7: \"colour\" cannot be set; known are: title, size, needs, people, only, never, weight, length, setup, turnaround, seats, offers, repeat, together",
         ),
         (
             "set a size many",
@@ -353,7 +403,7 @@ fn requests_and_resources_are_added_set_and_dropped() {
     make(&mut desk, "pin a on hall").unwrap();
     assert_eq!(
         make(&mut desk, "drop hall").unwrap_err(),
-        "a speaks of hall in its pin, only or never; change that first"
+        "w speaks of hall in its pin, only or never; change that first"
     );
 }
 
@@ -559,11 +609,27 @@ fn field() -> impl Strategy<Value = Field> {
         (1i64..90_000).prop_map(Field::Length),
         length().prop_map(Field::Setup),
         length().prop_map(Field::Turnaround),
+        prop::option::of(prop::sample::select(vec![
+            "FREQ=WEEKLY;COUNT=3",
+            "FREQ=DAILY;UNTIL=20270202",
+        ]))
+        .prop_map(|rule| Field::Repeat(rule.map(Arc::from))),
+        any::<bool>().prop_map(Field::Together),
     ]
 }
 
 fn change() -> impl Strategy<Value = Change> {
-    let id = || prop::sample::select(vec!["a", "b", "c", "old"]).prop_map(Arc::<str>::from);
+    let ids = vec![
+        "a",
+        "b",
+        "c",
+        "old",
+        "w",
+        "w@2027-01-18",
+        "w@2027-01-25",
+        "w@2027-02-01",
+    ];
+    let id = move || prop::sample::select(ids.clone()).prop_map(Arc::<str>::from);
     let resource =
         || prop::sample::select(vec!["hall", "big-1", "big-2"]).prop_map(Arc::<str>::from);
     let span =
@@ -599,6 +665,8 @@ fn change() -> impl Strategy<Value = Change> {
         (prop_oneof![id(), resource(), known_or_fresh()], field())
             .prop_map(|(id, field)| Change::Set { id, field }),
         prop_oneof![id(), resource(), known_or_fresh()].prop_map(Change::Drop),
+        moment().prop_map(Change::Settle),
+        prop::sample::select(vec![Prefer::Count, Prefer::Changes]).prop_map(Change::Prefer),
         Just(Change::Undo),
         Just(Change::Redo),
     ]

@@ -49,10 +49,7 @@ fn the_event_takes_nine_halls_and_has_room_to_move() {
             panic!("{line}")
         };
         assert!(
-            event
-                .request(id)
-                .unwrap()
-                .start_allowed(*to, &event.settings),
+            event.piece(id).unwrap().start_allowed(*to, &event.settings),
             "{line} is within may_start"
         );
         apply(&mut moved, &edit).unwrap();

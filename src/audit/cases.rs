@@ -4,7 +4,7 @@ use super::check::Facts;
 use super::{MOST_PRICE, Refusal, dearest};
 use crate::claim::Case;
 use crate::clock::Span;
-use crate::lookup::FastMap;
+use crate::lookup::{FastMap, FastSet};
 use crate::timetable::Piece;
 use std::collections::HashMap;
 use std::sync::Arc;
@@ -12,10 +12,9 @@ use std::sync::Arc;
 /// Cases within cases beyond which a proof is refused.
 const DEEPEST: usize = 1_000;
 
-/// A piece that the proof speaks of.
+/// What the proof speaks of: a piece, with what it stays together with.
 struct Spoken<'a> {
-    piece: &'a Piece,
-    core: Span,
+    pieces: Vec<&'a Piece>,
     /// Places of the resources it may use, ascending.
     usable: Vec<usize>,
     on: Option<usize>,
@@ -42,18 +41,21 @@ pub(super) fn replay(
     refusals: &mut Vec<Refusal>,
 ) {
     let resources = &facts.timetable.resources().all;
-    let pieces: Vec<Spoken<'_>> = spoken
-        .iter()
-        .map(|piece| {
-            let (core, usable) = facts.least(piece);
-            Spoken {
-                piece,
-                core,
-                usable,
+    let mut pieces: Vec<Spoken<'_>> = Vec::with_capacity(spoken.len());
+    let mut places: FastMap<Arc<str>, usize> = FastMap::default();
+    let mut numbers: FastMap<usize, usize> = FastMap::default();
+    for piece in spoken {
+        let item = facts.item(piece);
+        let at = *numbers.entry(item).or_insert_with(|| {
+            pieces.push(Spoken {
+                pieces: facts.of_item(item).collect(),
+                usable: facts.least(piece).1,
                 on: None,
-            }
-        })
-        .collect();
+            });
+            pieces.len() - 1
+        });
+        places.insert(Arc::clone(&piece.id), at);
+    }
     // Alike to all of these pieces: the same of them may use it, with the same time kept
     // free around them.
     let mut users: Vec<Vec<usize>> = vec![Vec::new(); resources.len()];
@@ -69,14 +71,10 @@ pub(super) fn replay(
         *kinds.entry(likeness).or_insert(count)
     });
     let alike = alike.collect();
-    let places = pieces
-        .iter()
-        .enumerate()
-        .map(|(at, spoken)| (Arc::clone(&spoken.piece.id), at));
     let mut replay = Replay {
         facts,
         wanted,
-        places: places.collect(),
+        places,
         pieces,
         alike,
         held: vec![Vec::new(); resources.len()],
@@ -104,9 +102,12 @@ impl Replay<'_, '_> {
         at
     }
 
-    fn occupied(&self, piece: usize, resource: usize) -> Span {
+    fn occupied(&self, piece: usize, resource: usize) -> Vec<Span> {
         let resource = &self.facts.timetable.resources().all[resource];
-        Facts::occupied(self.pieces[piece].piece, resource)
+        let pieces = self.pieces[piece].pieces.iter();
+        pieces
+            .map(|piece| Facts::occupied(piece, resource))
+            .collect()
     }
 
     /// The resources left for a piece without a place.
@@ -115,9 +116,10 @@ impl Replay<'_, '_> {
         let usable = self.pieces[piece].usable.iter().copied();
         usable
             .filter(|r| {
-                let span = self.occupied(piece, *r);
+                let spans = self.occupied(piece, *r);
                 let held = &self.held[*r];
-                let clear = held.iter().all(|other| !other.overlaps(span));
+                let free = |span: &Span| held.iter().all(|other| !other.overlaps(*span));
+                let clear = spans.iter().all(free);
                 clear && (may_begin || !held.is_empty())
             })
             .collect()
@@ -164,12 +166,13 @@ impl Replay<'_, '_> {
             let Some(at) = at.filter(|at| left.contains(at)) else {
                 return self.refuse(format!("{id} cannot go on {name}"));
             };
-            let span = self.occupied(piece, at);
-            self.held[at].push(span);
+            let spans = self.occupied(piece, at);
+            let before = self.held[at].len();
+            self.held[at].extend(spans);
             self.pieces[piece].on = Some(at);
             self.case(case, depth + 1);
             self.pieces[piece].on = None;
-            self.held[at].pop();
+            self.held[at].truncate(before);
             if !self.refusals.is_empty() {
                 return;
             }
@@ -183,7 +186,12 @@ impl Replay<'_, '_> {
             let Some(piece) = self.waiting(id) else {
                 return;
             };
-            if seen.contains(&piece) || !self.pieces[piece].core.contains(at) {
+            let mut named = self.pieces[piece]
+                .pieces
+                .iter()
+                .filter(|named| named.id == *id);
+            let runs = named.any(|named| self.facts.least(named).0.contains(at));
+            if seen.contains(&piece) || !runs {
                 return self.refuse(format!("{id} does not count at that moment"));
             }
             seen.push(piece);
@@ -205,11 +213,10 @@ impl Replay<'_, '_> {
             return self.refusals.push(Refusal::BadPrices);
         }
         let mut chains: Vec<Vec<(Span, i64)>> = vec![Vec::new(); self.held.len()];
-        let mut seen = vec![false; self.pieces.len()];
+        let mut seen: FastSet<&Arc<str>> = FastSet::default();
         for (id, price) in prices {
             let known = self.places.get(id).copied();
-            let Some(piece) = known.filter(|piece| !std::mem::replace(&mut seen[*piece], true))
-            else {
+            let Some(piece) = known.filter(|_| seen.insert(id)) else {
                 return self.refuse(format!("{id} does not count, or is priced twice"));
             };
             let left = match self.pieces[piece].on {
@@ -217,7 +224,13 @@ impl Replay<'_, '_> {
                 None => self.left(piece),
             };
             for r in left {
-                chains[r].push((self.occupied(piece, r), *price));
+                let resource = &self.facts.timetable.resources().all[r];
+                let named = self.pieces[piece]
+                    .pieces
+                    .iter()
+                    .find(|named| named.id == *id);
+                let span = named.map(|named| Facts::occupied(named, resource));
+                chains[r].extend(span.map(|span| (span, *price)));
             }
         }
         let mut value: i128 = prices.iter().map(|(_, price)| i128::from(*price)).sum();

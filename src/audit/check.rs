@@ -17,6 +17,12 @@ pub fn check(timetable: &Timetable, answer: &Answer) -> Result<Receipt, Vec<Refu
     let mut refusals = Vec::new();
     let in_use = plan(&facts, &answer.plan, &mut refusals);
     let floor = floor(&facts, &answer.floor, &mut refusals);
+    let before = refusals.len();
+    pairwise(&facts, &answer.clique, &mut refusals);
+    let clique = match refusals.len() > before {
+        true => 0,
+        false => answer.clique.len(),
+    };
     let by_halls = violations(&facts, &answer.violations, &mut refusals);
     let by_prices = answer
         .out
@@ -25,8 +31,9 @@ pub fn check(timetable: &Timetable, answer: &Answer) -> Result<Receipt, Vec<Refu
     let mut unplaced_floor = by_halls.max(by_prices);
     if floor > timetable.resources().all.len() {
         // Not everything fits, so something stays out: at least the lightest.
-        let counted = facts.all.iter().filter(|piece| !piece.withdrawn);
-        let lightest = counted.map(|piece| u64::from(piece.request.weight)).min();
+        let counted = facts.items.iter().enumerate();
+        let counted = counted.filter(|(_, pieces)| !facts.all[pieces[0]].withdrawn);
+        let lightest = counted.map(|(item, _)| facts.weight(item)).min();
         unplaced_floor = unplaced_floor.max(lightest.unwrap_or(0));
     }
     if !refusals.is_empty() {
@@ -40,6 +47,7 @@ pub fn check(timetable: &Timetable, answer: &Answer) -> Result<Receipt, Vec<Refu
     Ok(Receipt {
         in_use,
         floor,
+        clique,
         unplaced: answer.plan.unplaced.len(),
         unplaced_weight: weights.map(|piece| u64::from(piece.request.weight)).sum(),
         unplaced_floor,
@@ -97,6 +105,12 @@ pub(super) struct Facts<'a> {
     pub(super) timetable: &'a Timetable,
     all: Vec<Piece>,
     places: FastMap<Arc<str>, usize>,
+    /// Per piece the number of what it stays together with; withdrawn pieces are alone.
+    item_of: Vec<usize>,
+    /// The pieces of each item.
+    items: Vec<Vec<usize>>,
+    /// The resources each item of several pieces may use, once anybody has asked.
+    shared: Vec<std::cell::OnceCell<Vec<usize>>>,
     /// Resources by their own names and by those of their kinds, for looking up `only`.
     meant: FastMap<&'a str, Vec<usize>>,
     /// Seconds kept free before and after, when that is the same everywhere.
@@ -111,6 +125,21 @@ impl<'a> Facts<'a> {
             .enumerate()
             .map(|(at, piece)| (Arc::clone(&piece.id), at))
             .collect();
+        let (mut item_of, mut items) = (Vec::with_capacity(all.len()), Vec::<Vec<usize>>::new());
+        let mut joined: FastMap<&str, usize> = FastMap::default();
+        for (at, piece) in all.iter().enumerate() {
+            let request = &piece.request;
+            let joins = request.together && request.repeats.is_some() && !piece.withdrawn;
+            let item = match joins {
+                true => *joined.entry(&request.id).or_insert(items.len()),
+                false => items.len(),
+            };
+            if item == items.len() {
+                items.push(Vec::new());
+            }
+            items[item].push(at);
+            item_of.push(item);
+        }
         let resources = &timetable.resources().all;
         let mut meant: FastMap<&str, Vec<usize>> = FastMap::default();
         for (at, resource) in resources.iter().enumerate() {
@@ -122,6 +151,9 @@ impl<'a> Facts<'a> {
         let uniform = resources.iter().all(|r| (r.setup, r.turnaround) == own);
         Facts {
             timetable,
+            shared: vec![std::cell::OnceCell::new(); items.len()],
+            item_of,
+            items,
             all,
             places,
             meant,
@@ -131,6 +163,25 @@ impl<'a> Facts<'a> {
 
     fn piece(&self, id: &str) -> Option<&Piece> {
         self.places.get(id).map(|at| &self.all[*at])
+    }
+
+    /// The item of a piece.
+    pub(super) fn item(&self, piece: &Piece) -> usize {
+        self.places
+            .get(&piece.id)
+            .map_or(usize::MAX, |at| self.item_of[*at])
+    }
+
+    /// The pieces of an item.
+    pub(super) fn of_item(&self, item: usize) -> impl Iterator<Item = &Piece> {
+        self.items[item].iter().map(|at| &self.all[*at])
+    }
+
+    /// How much it hurts to leave an item out.
+    fn weight(&self, item: usize) -> u64 {
+        self.of_item(item)
+            .map(|piece| u64::from(piece.request.weight))
+            .sum()
     }
 
     fn counted(&self, id: &Arc<str>) -> Result<&Piece, Refusal> {
@@ -215,9 +266,44 @@ impl<'a> Facts<'a> {
         }
     }
 
-    /// The piece's span with its least buffers over the resources it may use, and those
-    /// resources' places in the list.
-    pub(super) fn least(&self, piece: &Piece) -> (Span, Vec<usize>) {
+    /// The resources that everything the piece stays together with may use, at all of its
+    /// times, by their places in the list.
+    fn usable(&self, piece: &Piece) -> Vec<usize> {
+        let item = self.item(piece);
+        if self.items.get(item).is_none_or(|pieces| pieces.len() < 2) {
+            return self.usable_alone(piece);
+        }
+        let work_out = || {
+            let resources = &self.timetable.resources().all;
+            let mut pieces = self.of_item(item);
+            let mut usable = pieces
+                .next()
+                .map_or_else(Vec::new, |first| self.usable_alone(first));
+            for piece in pieces {
+                let listed = |r: &Resource| {
+                    let only = &piece.request.only;
+                    let here = |name: &Arc<str>| *name == r.id || Some(name) == r.kind.as_ref();
+                    only.is_empty() || only.iter().any(here)
+                };
+                usable.retain(|at| {
+                    let resource = &resources[*at];
+                    listed(resource) && Facts::against(piece, resource).is_none()
+                });
+            }
+            usable.retain(|at| {
+                let spans = self
+                    .of_item(item)
+                    .map(|p| Facts::occupied(p, &resources[*at]));
+                let mut spans: Vec<Span> = spans.collect();
+                spans.sort_unstable();
+                spans.windows(2).all(|pair| pair[0].end <= pair[1].start)
+            });
+            usable
+        };
+        self.shared[item].get_or_init(work_out).clone()
+    }
+
+    fn usable_alone(&self, piece: &Piece) -> Vec<usize> {
         let resources = &self.timetable.resources().all;
         let usable: Vec<usize> = match &piece.pin {
             Some(pin) => self
@@ -239,13 +325,20 @@ impl<'a> Facts<'a> {
                 meant
             }
         };
-        let usable: Vec<usize> = usable
+        usable
             .into_iter()
             .filter(|at| match piece.pin {
                 Some(_) => Facts::against(piece, &resources[*at]).is_none(),
                 None => Facts::against_meant(piece, &resources[*at]).is_none(),
             })
-            .collect();
+            .collect()
+    }
+
+    /// The piece's span with its least buffers over the resources it may use, and those
+    /// resources' places in the list.
+    pub(super) fn least(&self, piece: &Piece) -> (Span, Vec<usize>) {
+        let resources = &self.timetable.resources().all;
+        let usable = self.usable(piece);
         let settings = &self.timetable.settings;
         let buffers = usable
             .iter()
@@ -323,7 +416,29 @@ fn plan(facts: &Facts<'_>, plan: &Plan, refusals: &mut Vec<Refusal>) -> usize {
             refusals.push(Refusal::Forgotten(Arc::clone(&piece.id)));
         }
     }
+    together(facts, plan, refusals);
     in_use
+}
+
+/// What stays together is on one resource, or has no place as a whole.
+fn together(facts: &Facts<'_>, plan: &Plan, refusals: &mut Vec<Refusal>) {
+    if facts.items.iter().all(|pieces| pieces.len() < 2) {
+        return;
+    }
+    let placed = plan.placements.iter();
+    let on: FastMap<&str, &Arc<str>> = placed.map(|p| (&*p.piece, &p.resource)).collect();
+    for pieces in facts.items.iter().filter(|pieces| pieces.len() > 1) {
+        let first = &facts.all[pieces[0]].id;
+        for other in &pieces[1..] {
+            let other = &facts.all[*other].id;
+            if on.get(&**first) != on.get(&**other) {
+                refusals.push(Refusal::Apart {
+                    first: Arc::clone(first),
+                    second: Arc::clone(other),
+                });
+            }
+        }
+    }
 }
 
 /// The pieces a bound names, once each, none unknown or withdrawn.
@@ -360,7 +475,11 @@ fn floor(facts: &Facts<'_>, floor: &FloorProof, refusals: &mut Vec<Refusal>) -> 
                 cases::replay(facts, *value, &spoken, tree, refusals);
             }
         }
-        FloorProof::Clique { at, pieces } => {
+        FloorProof::Clique { at: None, pieces } => pairwise(facts, pieces, refusals),
+        FloorProof::Clique {
+            at: Some(at),
+            pieces,
+        } => {
             for piece in named(facts, pieces, refusals) {
                 if !facts.core(piece).contains(*at) {
                     refusals.push(Refusal::NotRunning(Arc::clone(&piece.id)));
@@ -370,8 +489,9 @@ fn floor(facts: &Facts<'_>, floor: &FloorProof, refusals: &mut Vec<Refusal>) -> 
         FloorProof::Incompatible { pieces } => {
             let members: Vec<(&Piece, Vec<usize>)> = named(facts, pieces, refusals)
                 .into_iter()
-                .map(|piece| (piece, facts.least(piece).1))
+                .map(|piece| (piece, facts.usable(piece)))
                 .collect();
+            once_each(facts, &members, refusals);
             for (at, (first, one)) in members.iter().enumerate() {
                 for (second, two) in &members[..at] {
                     apart(facts, (first, one), (second, two), refusals);
@@ -383,6 +503,47 @@ fn floor(facts: &Facts<'_>, floor: &FloorProof, refusals: &mut Vec<Refusal>) -> 
         return 0;
     }
     floor.value()
+}
+
+/// Says that a piece counts twice, once.
+fn twice(piece: &Piece, refusals: &mut Vec<Refusal>) {
+    let refusal = Refusal::BoundTwice(Arc::clone(&piece.id));
+    if !refusals.contains(&refusal) {
+        refusals.push(refusal);
+    }
+}
+
+/// Refuses where two pieces stay together: they count as one.
+fn once_each<T>(facts: &Facts<'_>, members: &[(&Piece, T)], refusals: &mut Vec<Refusal>) {
+    let mut seen = FastSet::default();
+    for (piece, _) in members {
+        if !seen.insert(facts.item(piece)) {
+            twice(piece, refusals);
+        }
+    }
+}
+
+/// Checks that of these pieces, and what they stay together with, any two overlap.
+fn pairwise(facts: &Facts<'_>, ids: &[Arc<str>], refusals: &mut Vec<Refusal>) {
+    let members: Vec<(&Piece, Vec<Span>)> = named(facts, ids, refusals)
+        .into_iter()
+        .map(|piece| {
+            let item = facts.of_item(facts.item(piece));
+            (piece, item.map(|piece| facts.core(piece)).collect())
+        })
+        .collect();
+    once_each(facts, &members, refusals);
+    for (at, (first, one)) in members.iter().enumerate() {
+        for (second, two) in &members[..at] {
+            let meet = |span: &Span| two.iter().any(|other| other.overlaps(*span));
+            if !one.iter().any(meet) {
+                refusals.push(Refusal::NeverMeet {
+                    first: Arc::clone(&first.id),
+                    second: Arc::clone(&second.id),
+                });
+            }
+        }
+    }
 }
 
 /// Recounts a floor by prices with whole numbers: the dearest chain of each resource by a
@@ -415,7 +576,7 @@ fn beyond(facts: &Facts<'_>, pieces: &[&Piece], priced: &[(Arc<str>, i64)], cost
     let all = &facts.timetable.resources().all;
     let mut chains: Vec<Vec<(Span, i64)>> = vec![Vec::new(); all.len()];
     for (piece, (_, price)) in pieces.iter().zip(priced) {
-        for at in facts.least(piece).1 {
+        for at in facts.usable(piece) {
             chains[at].push((Facts::occupied(piece, &all[at]), *price));
         }
     }
@@ -433,12 +594,14 @@ fn out(facts: &Facts<'_>, claimed: &OutPrices, refusals: &mut Vec<Refusal>) -> u
         .collect();
     let pieces = named(facts, &ids, refusals);
     let fits = |price: &i64| (1..=MOST_PRICE).contains(price);
-    let dear = pieces
+    // What stays together may share its price out among its pieces.
+    let mut by_item: FastMap<usize, i128> = FastMap::default();
+    for (piece, (_, price)) in pieces.iter().zip(&claimed.prices) {
+        *by_item.entry(facts.item(piece)).or_default() += i128::from(*price);
+    }
+    let dear = by_item
         .iter()
-        .zip(&claimed.prices)
-        .any(|(piece, (_, price))| {
-            i128::from(*price) > i128::from(claimed.unit) * i128::from(piece.request.weight)
-        });
+        .any(|(item, price)| *price > i128::from(claimed.unit) * i128::from(facts.weight(*item)));
     let whole = fits(&claimed.unit) && claimed.prices.iter().all(|(_, price)| fits(price));
     if !whole || dear || ids.len() != pieces.len() {
         refusals.push(Refusal::BadPrices);
@@ -483,7 +646,12 @@ fn apart(
         .filter(|at| two.binary_search(at).is_ok())
         .find(|at| {
             let resource = &all[**at];
-            !Facts::occupied(first, resource).overlaps(Facts::occupied(second, resource))
+            let clear = |piece: &Piece| {
+                let span = Facts::occupied(piece, resource);
+                let mut others = facts.of_item(facts.item(second));
+                others.all(|other| !Facts::occupied(other, resource).overlaps(span))
+            };
+            facts.of_item(facts.item(first)).all(clear)
         });
     if let Some(at) = both {
         refusals.push(Refusal::CanShare {
@@ -509,13 +677,17 @@ fn running(
 
 fn violations(facts: &Facts<'_>, claimed: &[HallViolation], refusals: &mut Vec<Refusal>) -> u64 {
     let resources = facts.timetable.resources();
-    let mut seen: FastSet<&Arc<str>> = FastSet::default();
+    let mut seen: FastSet<usize> = FastSet::default();
     let mut least = 0;
     for violation in claimed {
         let stated: FastSet<&str> = violation.resources.iter().map(|id| &**id).collect();
         let mut weights = Vec::new();
         for piece in named(facts, &violation.pieces, refusals) {
-            weights.push(u64::from(piece.request.weight));
+            let item = facts.item(piece);
+            if !seen.insert(item) {
+                twice(piece, refusals);
+            }
+            weights.push(facts.weight(item));
             for at in running(facts, piece, violation.at, refusals) {
                 if !stated.contains(&*resources.all[at].id) {
                     refusals.push(Refusal::LeftOut {
@@ -523,11 +695,6 @@ fn violations(facts: &Facts<'_>, claimed: &[HallViolation], refusals: &mut Vec<R
                         resource: Arc::clone(&resources.all[at].id),
                     });
                 }
-            }
-        }
-        for id in &violation.pieces {
-            if !seen.insert(id) {
-                refusals.push(Refusal::BoundTwice(Arc::clone(id)));
             }
         }
         if weights.len() <= stated.len() {

@@ -5,6 +5,7 @@
 pub struct Receipt {
     pub(super) in_use: usize,
     pub(super) floor: usize,
+    pub(super) clique: usize,
     pub(super) unplaced: usize,
     pub(super) unplaced_weight: u64,
     pub(super) unplaced_floor: u64,
@@ -54,6 +55,11 @@ impl Receipt {
     /// Proved lower bound on the resources needed to place everything.
     pub fn floor(&self) -> usize {
         self.floor
+    }
+
+    /// The size of the clique that shares no moment, 0 when none was claimed.
+    pub fn clique(&self) -> usize {
+        self.clique
     }
 
     /// Pieces without a place.

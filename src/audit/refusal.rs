@@ -49,6 +49,22 @@ pub enum Refusal {
         /// The other.
         second: Arc<str>,
     },
+    /// What must stay together does not.
+    #[error("{first} and {second} must stay together")]
+    Apart {
+        /// One date of a request.
+        first: Arc<str>,
+        /// Another.
+        second: Arc<str>,
+    },
+    /// Members of a clique that do not overlap anywhere.
+    #[error("the clique counts {first} and {second}, which never overlap")]
+    NeverMeet {
+        /// One piece.
+        first: Arc<str>,
+        /// The other.
+        second: Arc<str>,
+    },
     /// A bound speaks of a piece that does not count.
     #[error("the bound counts {0}, which is unknown or withdrawn")]
     BoundCounts(Arc<str>),

@@ -58,11 +58,12 @@ pub struct Plan {
 /// Why no plan that places everything can do with fewer resources.
 #[derive(Clone, Debug, PartialEq, Eq)]
 pub enum FloorProof {
-    /// These pieces pairwise overlap: all of them run at that moment (with their least
-    /// buffers), so each needs a resource of its own.
+    /// These pieces pairwise overlap, with their least buffers, so each needs a resource of
+    /// its own: all of them run at one moment, or, where pieces stay together with others,
+    /// any two of them meet somewhere.
     Clique {
-        /// The moment.
-        at: Instant,
+        /// The moment, if it is one.
+        at: Option<Instant>,
         /// The pieces.
         pieces: Vec<Arc<str>>,
     },
@@ -227,6 +228,9 @@ pub struct Answer {
     pub plan: Plan,
     /// Why not fewer.
     pub floor: FloorProof,
+    /// Pieces that pairwise overlap, if more of them were found than run at any moment:
+    /// there are such where pieces stay together.
+    pub clique: Vec<Arc<str>>,
     /// Why not everything; no two of them share a piece.
     pub violations: Vec<HallViolation>,
     /// Why not everything, by prices: where they prove more.

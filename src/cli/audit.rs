@@ -123,6 +123,7 @@ fn judge(
         &Answer {
             plan,
             floor,
+            clique: Vec::new(),
             violations,
             out,
             seconds: 0.0,

@@ -135,7 +135,7 @@ fn report(settled: &Settled) -> Report<'_> {
         state: words::state_name(receipt.knowledge()),
         in_use: receipt.in_use(),
         floor: receipt.floor(),
-        clique: survey.load.most,
+        clique: settled.clique(),
         floor_by: answer.floor.name(),
         days: days(settled),
         peaks: peaks.collect(),
@@ -207,11 +207,7 @@ fn text(settled: &Settled, report: &Report<'_>) -> String {
     let mut out = format!("{}\n", clean(report.title));
     let state = words::state(settled.receipt(), resources, noun, Progress::AtRest);
     let _ = writeln!(out, "{state}");
-    let _ = writeln!(
-        out,
-        "{}",
-        words::peaks(report.clique, &survey.load.peaks(), zone)
-    );
+    let _ = writeln!(out, "{}", words::peaks(report.clique, &survey.load, zone));
     if let Some(peak) = report.peaks.first() {
         let _ = writeln!(
             out,

@@ -302,10 +302,7 @@ impl Desk {
             return Err(Refused::Itself(Arc::clone(first)));
         }
         let place = |piece: &Arc<str>| {
-            let pinned = self
-                .timetable
-                .request(piece)
-                .and_then(|request| request.pin.clone());
+            let pinned = self.timetable.piece(piece).and_then(|piece| piece.pin);
             let planned = || {
                 let plan = self.reference.as_ref()?;
                 let placement = plan

@@ -102,6 +102,12 @@ impl Settled {
         self.counted.contains(piece)
     }
 
+    /// The size of the largest clique that was found: the largest load, or more where pieces
+    /// stay together and meet one another at different moments.
+    pub fn clique(&self) -> usize {
+        self.survey.load.most.max(self.receipt.clique())
+    }
+
     /// What holds whatever the plan.
     pub fn survey(&self) -> &Survey {
         &self.survey

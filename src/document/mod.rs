@@ -8,6 +8,7 @@ mod mistake;
 mod patch;
 mod plan;
 mod read;
+mod repeats;
 mod table;
 
 pub use mistake::{Mistake, Mistakes};
@@ -31,6 +32,9 @@ pub struct Document {
     requests: Vec<Range<usize>>,
     named: Vec<Range<usize>>,
     kinds: Vec<Range<usize>>,
+    occurrences: Vec<Range<usize>>,
+    /// The one table of what is said once, as a list like the others.
+    head: Vec<Range<usize>>,
 }
 
 impl Document {
@@ -56,6 +60,8 @@ impl Document {
             Touched::Request(at) | Touched::RequestGone(at) => (&self.requests, *at),
             Touched::Named(at) | Touched::NamedGone(at) => (&self.named, *at),
             Touched::Kind(at) => (&self.kinds, *at),
+            Touched::Occurrence(at) | Touched::OccurrenceGone(at) => (&self.occurrences, *at),
+            Touched::Settings => (&self.head, 0),
         };
         let start = places.get(at)?.start;
         Some(self.text[..start].matches('\n').count() + 1)
@@ -66,6 +72,8 @@ impl Document {
             Touched::Request(at) | Touched::RequestGone(at) => (&mut self.requests, *at),
             Touched::Named(at) | Touched::NamedGone(at) => (&mut self.named, *at),
             Touched::Kind(at) => (&mut self.kinds, *at),
+            Touched::Occurrence(at) | Touched::OccurrenceGone(at) => (&mut self.occurrences, *at),
+            Touched::Settings => (&mut self.head, 0),
         }
     }
 }

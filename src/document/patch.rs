@@ -2,9 +2,13 @@
 //! comments, order and layout stay as they are and undo brings the bytes back.
 
 use super::Document;
+use super::repeats::date_value;
 use crate::clock::{Instant, Resolved, Zone, print_length};
 use crate::edit::Touched;
-use crate::timetable::{Closure, Count, Kind, Named, Request, TimeStated, Timetable};
+use crate::timetable::{
+    Closure, Count, Differing, Except, Kind, Named, Repeats, Request, Settings, TimeStated,
+    Timetable,
+};
 use std::ops::Range;
 use std::sync::Arc;
 use toml_edit::{DocumentMut, InlineTable, Item, TableLike, Value};
@@ -55,6 +59,33 @@ impl Document {
             match table {
                 Touched::RequestGone(at) => patches.extend(self.take_out(&Touched::Request(*at))),
                 Touched::NamedGone(at) => patches.extend(self.take_out(&Touched::Named(*at))),
+                Touched::OccurrenceGone(at) => {
+                    patches.extend(self.take_out(&Touched::Occurrence(*at)));
+                }
+                Touched::Occurrence(at) => {
+                    let Some((request, now)) = after.differing(*at) else {
+                        continue;
+                    };
+                    let Some((_, then)) = before.differing(*at) else {
+                        let mut keys = vec![
+                            ("of", Value::from(request.id.as_ref())),
+                            ("date", date_value(&now.date)),
+                        ];
+                        let nothing = Differing::nothing(&now.date, *at);
+                        let differs = differing_changes(&nothing, now, zone).into_iter();
+                        keys.extend(differs.filter_map(|(key, value)| Some((key, value?))));
+                        patches.push(self.add(table, "occurrence", &keys));
+                        continue;
+                    };
+                    for (key, value) in differing_changes(then, now, zone) {
+                        patches.extend(self.set(table, "occurrence", key, value.map(Set::Whole)));
+                    }
+                }
+                Touched::Settings => {
+                    for (key, value) in settings_changes(&before.settings, &after.settings) {
+                        patches.extend(self.set(table, "timetable", key, value.map(Set::Whole)));
+                    }
+                }
                 Touched::Request(at) if before.requests.len() < after.requests.len() => {
                     let keys = new_request_keys(&after.requests[*at], zone);
                     patches.push(self.add(table, "request", &keys));
@@ -122,6 +153,8 @@ impl Document {
             (Touched::Request(usize::MAX), &mut self.requests),
             (Touched::Named(usize::MAX), &mut self.named),
             (Touched::Kind(usize::MAX), &mut self.kinds),
+            (Touched::Occurrence(usize::MAX), &mut self.occurrences),
+            (Touched::Settings, &mut self.head),
         ] {
             let same = std::mem::discriminant(&table) == std::mem::discriminant(&changed);
             for (at, place) in places.iter_mut().enumerate() {
@@ -352,7 +385,11 @@ fn change_in(
     let table: &dyn TableLike = if braces {
         parsed.get("x")?.as_inline_table()?
     } else {
-        parsed.get(name)?.as_array_of_tables()?.get(0)?
+        let item = parsed.get(name)?;
+        match item.as_array_of_tables() {
+            Some(tables) => tables.get(0)?,
+            None => item.as_table_like()?,
+        }
     };
     let here = |span: Range<usize>| span.start - lead.len()..span.end - lead.len();
     match (table.get(key), value) {
@@ -445,7 +482,7 @@ fn rewritten(fragment: &str, name: &str, key: &str, set: Set) -> Option<String> 
 }
 
 /// A moment as it is written in the file: local time, with an offset where that is doubtful.
-fn moment_value(at: Instant, zone: Zone) -> Value {
+pub(super) fn moment_value(at: Instant, zone: Zone) -> Value {
     let text = match zone.resolve(zone.civil(at)) {
         Resolved::Twice { .. } => zone.rfc3339(at),
         _ => zone.civil(at).format("%Y-%m-%dT%H:%M:%S").to_string(),
@@ -528,13 +565,82 @@ fn request_changes(
         before.turnaround != after.turnaround,
         length(after.turnaround),
     );
+    let (was, is) = (before.repeats.as_deref(), after.repeats.as_deref());
+    let rule = |repeats: Option<&Repeats>| repeats.and_then(|repeats| repeats.rule.clone());
+    note(
+        "repeat",
+        rule(was) != rule(is),
+        rule(is).map(|rule| Value::from(rule.as_ref())),
+    );
+    let also = |repeats: Option<&Repeats>| repeats.map_or(Vec::new(), |r| r.also.clone());
+    let except = |repeats: Option<&Repeats>| repeats.map_or(Vec::new(), |r| r.except.clone());
+    let list = |values: Vec<Value>| {
+        (!values.is_empty()).then(|| Value::Array(values.into_iter().collect()))
+    };
+    let starts = also(is).into_iter().map(|at| moment_value(at, zone));
+    note("also", also(was) != also(is), list(starts.collect()));
+    let dates = except(is).into_iter().map(|except| match except {
+        Except::Date(date) => date_value(&date.to_string()),
+        Except::Moment(at) => moment_value(at, zone),
+    });
+    note("except", except(was) != except(is), list(dates.collect()));
     for (key, was, is) in [
         ("fastened", before.fastened, after.fastened),
         ("withdrawn", before.withdrawn, after.withdrawn),
+        ("together", before.together, after.together),
     ] {
         if was != is {
             changes.push((key, is.then(|| Value::from(true))));
         }
+    }
+    changes
+}
+
+/// The keys that differ of what is said once for the whole timetable, with their new values.
+fn settings_changes(before: &Settings, after: &Settings) -> Vec<(&'static str, Option<Value>)> {
+    let mut changes = Vec::new();
+    if before.settled_until != after.settled_until {
+        let until = after.settled_until.map(|at| moment_value(at, after.zone));
+        changes.push(("settled_until", until));
+    }
+    if before.prefer != after.prefer {
+        changes.push(("prefer", Some(after.prefer.name().into())));
+    }
+    changes
+}
+
+/// The keys that differ of what differs on a date, with their new values.
+fn differing_changes(
+    before: &Differing,
+    after: &Differing,
+    zone: Zone,
+) -> Vec<(&'static str, Option<Value>)> {
+    let mut changes = Vec::new();
+    let mut note = |key, differs: bool, value: Option<Value>| {
+        if differs {
+            changes.push((key, value));
+        }
+    };
+    note(
+        "start",
+        before.start != after.start,
+        after.start.map(|at| moment_value(at, zone)),
+    );
+    note(
+        "length",
+        before.length != after.length,
+        after.length.map(|length| print_length(length).into()),
+    );
+    note(
+        "pin",
+        before.pin != after.pin,
+        after.pin.as_ref().map(|pin| Value::from(pin.as_ref())),
+    );
+    for (key, was, is) in [
+        ("fastened", before.fastened, after.fastened),
+        ("withdrawn", before.withdrawn, after.withdrawn),
+    ] {
+        note(key, was != is, is.then(|| Value::from(true)));
     }
     changes
 }

@@ -161,7 +161,7 @@ impl PlanFile {
             floor: floor.value(),
             by: floor.name().into(),
             at: match floor {
-                FloorProof::Clique { at, .. } => Some(time(*at)),
+                FloorProof::Clique { at, .. } => at.map(&time),
                 _ => None,
             },
             unit: match floor {
@@ -293,8 +293,8 @@ impl PlanFile {
             let pieces = shared(proof.pieces);
             let parts = (proof.at, proof.unit, &*proof.prices, &*proof.cases);
             let proved = match (&*proof.by, parts) {
-                ("clique", (Some(at), None, [], [])) => FloorProof::Clique {
-                    at: time(&at)?,
+                ("clique", (at, None, [], [])) => FloorProof::Clique {
+                    at: at.map(|at| time(&at)).transpose()?,
                     pieces,
                 },
                 ("incompatible", (None, None, [], [])) => FloorProof::Incompatible { pieces },

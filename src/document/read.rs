@@ -1,11 +1,11 @@
 //! From the text of a timetable file to the timetable: all mistakes at once.
 
 use super::table::{Notes, Table};
-use super::{Document, MOST_BYTES, Mistake, Mistakes};
+use super::{Document, MOST_BYTES, Mistake, Mistakes, repeats};
 use crate::clock::{Instant, Span, Zone};
 use crate::text::{clean, nearest};
 use crate::timetable::{
-    Closure, Common, Count, Days, Kind, Listed, Named, Noun, Opening, Request, Settings,
+    Closure, Common, Count, Days, Kind, Listed, Named, Noun, Opening, Prefer, Request, Settings,
     TimeStated, Timetable,
 };
 use std::collections::HashMap;
@@ -79,6 +79,8 @@ pub fn read(file: &str, bytes: &[u8]) -> Result<Read, Box<Mistakes>> {
             requests: Vec::new(),
             named: Vec::new(),
             kinds: Vec::new(),
+            occurrences: Vec::new(),
+            head: Vec::new(),
         },
     };
     let root = Table::new(parsed.as_table(), 0..text.len().min(1));
@@ -122,8 +124,8 @@ impl Reader<'_> {
     fn root(&mut self, root: &Table<'_>) -> Option<Timetable> {
         root.only(
             "timetable file",
-            &["timetable", "kind", "resource", "request"],
-            &["part", "occurrence"],
+            &["timetable", "kind", "resource", "request", "occurrence"],
+            &["part"],
             &mut self.notes,
         );
         let settings = self.settings(root);
@@ -156,15 +158,39 @@ impl Reader<'_> {
         }
         let mut requests = Vec::new();
         let mut mentions = Vec::new();
+        let mut repeating: HashMap<Arc<str>, repeats::Stated> = HashMap::new();
         for table in root.tables("request", &mut self.notes) {
             let place = self.place(&table);
             if let Some(request) =
                 self.request(&table, settings.as_ref(), &mut names, &mut mentions)
             {
+                let stated = repeats::stated(&table, self.zone, requests.len(), &mut self.notes);
+                repeating.extend(stated.map(|stated| (Arc::clone(&request.id), stated)));
                 self.document.requests.push(place);
                 requests.push(request);
             }
         }
+        for (at, table) in root
+            .tables("occurrence", &mut self.notes)
+            .iter()
+            .enumerate()
+        {
+            self.document.occurrences.push(self.place(table));
+            let pin = repeats::differing(
+                table,
+                at,
+                self.zone,
+                &mut repeating,
+                &names.known,
+                &mut self.notes,
+            );
+            mentions.extend(pin.map(|(name, at)| Mention {
+                name,
+                at,
+                kinds_too: false,
+            }));
+        }
+        repeats::work_out(&mut requests, repeating, self.zone, &mut self.notes);
         self.check_mentions(&mentions, &names, &requests);
         let listed = listed.into_iter().map(|(_, listed)| listed).collect();
         settings.map(|settings| Timetable::new(settings, kinds, named, listed, requests))
@@ -189,6 +215,8 @@ impl Reader<'_> {
             return None;
         };
         let table = Table::new(table, at);
+        let place = self.place(&table);
+        self.document.head.push(place);
         let notes = &mut self.notes;
         table.only(
             "timetable",
@@ -259,10 +287,7 @@ impl Reader<'_> {
         if let Some((prefer, at)) = table.string("prefer", notes) {
             match &*prefer {
                 "count" => {}
-                "changes" => notes.mistake(
-                    at,
-                    "prefer = \"changes\" is not yet possible in this version; use \"count\"",
-                ),
+                "changes" => settings.prefer = Prefer::Changes,
                 _ => notes.mistake(at, "\"prefer\" is either \"count\" or \"changes\""),
             }
         }
@@ -457,7 +482,7 @@ impl Reader<'_> {
         names: &mut Names,
         mentions: &mut Vec<Mention>,
     ) -> Option<Request> {
-        const KNOWN: [&str; 18] = [
+        const KNOWN: [&str; 22] = [
             "id",
             "title",
             "start",
@@ -476,13 +501,12 @@ impl Reader<'_> {
             "withdrawn",
             "setup",
             "turnaround",
+            "repeat",
+            "also",
+            "except",
+            "together",
         ];
-        table.only(
-            "request",
-            &KNOWN,
-            &["repeat", "also", "except", "together"],
-            &mut self.notes,
-        );
+        table.only("request", &KNOWN, &[], &mut self.notes);
         let id = table.id("request", &mut self.notes);
         if let Some((id, at)) = &id {
             names.add(id, "a request", at.clone(), &mut self.notes);
@@ -547,6 +571,8 @@ impl Reader<'_> {
             withdrawn: table.bool("withdrawn", notes),
             setup: table.length("setup", notes),
             turnaround: table.length("turnaround", notes),
+            repeats: None,
+            together: table.bool("together", notes),
         };
         if request.split == Some(0)
             && let Some((_, at)) = table.get("split")

@@ -272,7 +272,7 @@ impl<'a> Table<'a> {
             );
             return None;
         };
-        match moment(written, zone) {
+        match self::moment(written, zone) {
             Ok((instant, doubled)) => {
                 if let Some(warning) = doubled {
                     notes.warnings.push(Mistake {
@@ -291,7 +291,10 @@ impl<'a> Table<'a> {
 }
 
 /// The moment a TOML date-time means in a zone, with a warning when it occurs twice.
-fn moment(written: &toml_edit::Datetime, zone: Zone) -> Result<(Instant, Option<String>), String> {
+pub(super) fn moment(
+    written: &toml_edit::Datetime,
+    zone: Zone,
+) -> Result<(Instant, Option<String>), String> {
     let (Some(date), Some(time)) = (written.date, written.time) else {
         return Err("both a date and a time are needed, such as 2027-01-11T09:00:00".into());
     };

@@ -2,8 +2,12 @@
 
 use super::field::Field;
 use super::{Change, Edit};
-use crate::clock::{Instant, YEARS};
-use crate::timetable::{Closure, Common, Count, Kind, Listed, Named, Request, Timetable, subtract};
+use crate::clock::{Instant, RepeatError, YEARS, Zone};
+use crate::text::clean;
+use crate::timetable::{
+    Closure, Common, Count, Differing, Except, Kind, Listed, Named, Piece, Repeats, RepeatsError,
+    Request, Timetable, subtract,
+};
 use chrono::Datelike;
 use std::sync::Arc;
 use thiserror::Error;
@@ -88,6 +92,18 @@ pub enum Refused {
     /// Another desk writes.
     #[error("read only: {0} has it open")]
     ReadOnly(String),
+    /// It is so for all dates of the request.
+    #[error("all dates of {0} are {1}; first: {2} {0}")]
+    Whole(Arc<str>, &'static str, &'static str),
+    /// The dates of a request cannot be worked out any more.
+    #[error("{0} {1}")]
+    Repeats(Arc<str>, String),
+    /// Dates with something of their own would get other names.
+    #[error("some dates of {0} differ from the rest; move its dates one by one")]
+    DatesDiffer(Arc<str>),
+    /// A single date cannot be taken out of the file.
+    #[error("{0} is one date of a request; withdraw it, or leave the date out with \"except\"")]
+    OneDate(Arc<str>),
     /// Undo without history, and the like.
     #[error("there is nothing to {0}")]
     Nothing(&'static str),
@@ -106,6 +122,12 @@ pub enum Touched {
     RequestGone(usize),
     /// The named resource that was at that place is gone.
     NamedGone(usize),
+    /// The table of what differs on a date, at that place among them; it may be new.
+    Occurrence(usize),
+    /// The table of what differs on a date that was at that place is gone.
+    OccurrenceGone(usize),
+    /// What is said once for the whole timetable.
+    Settings,
 }
 
 /// Applies a change to the timetable and says what it touched. `Swap`, `Undo` and `Redo`
@@ -125,27 +147,85 @@ pub fn apply(timetable: &mut Timetable, edit: &Edit) -> Result<Vec<Touched>, Ref
                     Refused::UnknownResource(Arc::clone(on))
                 });
             }
+            if let Some(date) = timetable.occurrence(piece) {
+                return differ(timetable, date, |differs, whole| {
+                    let pin = Some(Arc::clone(on));
+                    if differs.pin.as_ref().or(whole.pin.as_ref()) == pin.as_ref() {
+                        return Err(already(piece, "pinned there"));
+                    }
+                    differs.pin = pin;
+                    Ok(())
+                });
+            }
             change(timetable, piece, |request| {
                 if request.pin.as_ref() == Some(on) {
-                    return Err(already(request, "pinned there"));
+                    return Err(already(&request.id, "pinned there"));
                 }
                 request.pin = Some(Arc::clone(on));
                 Ok(())
             })
         }
+        Change::Unpin(piece)
+        | Change::Fasten(piece)
+        | Change::Loosen(piece)
+        | Change::Withdraw(piece)
+        | Change::Restore(piece)
+            if timetable.occurrence(piece).is_some() =>
+        {
+            let Some(date) = timetable.occurrence(piece) else {
+                return Err(Refused::UnknownPiece(Arc::clone(piece)));
+            };
+            if matches!(edit.what, Change::Withdraw(_)) {
+                unbegun_date(timetable, piece)?;
+            }
+            differ(timetable, date, |differs, whole| match &edit.what {
+                Change::Unpin(_) => match differs.pin.take() {
+                    Some(_) => Ok(()),
+                    None if whole.pin.is_some() => {
+                        Err(Refused::Whole(Arc::clone(&whole.id), "pinned", "unpin"))
+                    }
+                    None => Err(not_so(piece, "pinned")),
+                },
+                Change::Fasten(_) if differs.fastened || whole.fastened => {
+                    Err(already(piece, "fastened"))
+                }
+                Change::Fasten(_) => {
+                    differs.fastened = true;
+                    Ok(())
+                }
+                Change::Loosen(_) if differs.fastened => {
+                    differs.fastened = false;
+                    Ok(())
+                }
+                Change::Loosen(_) if whole.fastened => {
+                    Err(Refused::Whole(Arc::clone(&whole.id), "fastened", "loosen"))
+                }
+                Change::Loosen(_) => Err(not_so(piece, "fastened")),
+                Change::Withdraw(_) if differs.withdrawn => Err(already(piece, "withdrawn")),
+                Change::Withdraw(_) => {
+                    differs.withdrawn = true;
+                    Ok(())
+                }
+                _ if differs.withdrawn => {
+                    differs.withdrawn = false;
+                    Ok(())
+                }
+                _ => Err(not_so(piece, "withdrawn")),
+            })
+        }
         Change::Unpin(piece) => change(timetable, piece, |request| match request.pin.take() {
             Some(_) => Ok(()),
-            None => Err(not_so(request, "pinned")),
+            None => Err(not_so(&request.id, "pinned")),
         }),
         Change::Fasten(piece) => change(timetable, piece, |request| {
             if std::mem::replace(&mut request.fastened, true) {
-                return Err(already(request, "fastened"));
+                return Err(already(&request.id, "fastened"));
             }
             Ok(())
         }),
         Change::Loosen(piece) => change(timetable, piece, |request| {
             if !std::mem::replace(&mut request.fastened, false) {
-                return Err(not_so(request, "fastened"));
+                return Err(not_so(&request.id, "fastened"));
             }
             Ok(())
         }),
@@ -154,7 +234,7 @@ pub fn apply(timetable: &mut Timetable, edit: &Edit) -> Result<Vec<Touched>, Ref
             unbegun(timetable, at)?;
             let mut request = Request::clone(&timetable.requests[at]);
             if std::mem::replace(&mut request.withdrawn, true) {
-                return Err(already(&request, "withdrawn"));
+                return Err(already(&request.id, "withdrawn"));
             }
             timetable.replace(at, request);
             Ok(vec![Touched::Request(at)])
@@ -163,7 +243,7 @@ pub fn apply(timetable: &mut Timetable, edit: &Edit) -> Result<Vec<Touched>, Ref
             let at = position(timetable, piece)?;
             let mut request = Request::clone(&timetable.requests[at]);
             if !std::mem::replace(&mut request.withdrawn, false) {
-                return Err(not_so(&request, "withdrawn"));
+                return Err(not_so(&request.id, "withdrawn"));
             }
             timetable.replace(at, request);
             Ok(vec![Touched::Request(at)])
@@ -220,6 +300,43 @@ pub fn apply(timetable: &mut Timetable, edit: &Edit) -> Result<Vec<Touched>, Ref
             touched.push(Touched::Named(at));
             Ok(touched)
         }
+        Change::Settle(until) => {
+            within_years(timetable, *until)?;
+            if timetable.settings.settled_until == Some(*until) {
+                return Err(Refused::Nothing("settle: it is settled until then already"));
+            }
+            Arc::make_mut(&mut timetable.settings).settled_until = Some(*until);
+            Ok(vec![Touched::Settings])
+        }
+        Change::Prefer(prefer) => {
+            if timetable.settings.prefer == *prefer {
+                return Err(Refused::Nothing("do: that is preferred already"));
+            }
+            Arc::make_mut(&mut timetable.settings).prefer = *prefer;
+            Ok(vec![Touched::Settings])
+        }
+        Change::Set { id, field } if timetable.occurrence(id).is_some() => {
+            let Field::Length(length) = field else {
+                return Err(Refused::NoSuchField {
+                    what: "date of a request",
+                    key: field.key(),
+                });
+            };
+            unbegun_date(timetable, id)?;
+            let Some(date) = timetable.occurrence(id) else {
+                return Err(Refused::UnknownPiece(Arc::clone(id)));
+            };
+            differ(timetable, date, |differs, whole| {
+                if differs.fastened || whole.fastened {
+                    return Err(Refused::Fastened(Arc::clone(id)));
+                }
+                if differs.length.unwrap_or(whole.length) == *length {
+                    return Err(already(id, "so"));
+                }
+                differs.length = Some(*length);
+                Ok(())
+            })
+        }
         Change::Set { id, field } => match timetable.position(id) {
             Some(at) => {
                 unbegun(timetable, at)?;
@@ -227,7 +344,7 @@ pub fn apply(timetable: &mut Timetable, edit: &Edit) -> Result<Vec<Touched>, Ref
                 set_request(timetable, &mut request, field)?;
                 within_years(timetable, request.span().end)?;
                 if request == *timetable.requests[at] {
-                    return Err(already(&request, "so"));
+                    return Err(already(&request.id, "so"));
                 }
                 timetable.replace(at, request);
                 if matches!(field, Field::Only(_) | Field::Never(_)) {
@@ -259,16 +376,16 @@ pub fn apply(timetable: &mut Timetable, edit: &Edit) -> Result<Vec<Touched>, Ref
     }
 }
 
-fn already(request: &Request, state: &'static str) -> Refused {
+fn already(piece: &Arc<str>, state: &'static str) -> Refused {
     Refused::Already {
-        piece: Arc::clone(&request.id),
+        piece: Arc::clone(piece),
         state,
     }
 }
 
-fn not_so(request: &Request, state: &'static str) -> Refused {
+fn not_so(piece: &Arc<str>, state: &'static str) -> Refused {
     Refused::NotSo {
-        piece: Arc::clone(&request.id),
+        piece: Arc::clone(piece),
         state,
     }
 }
@@ -300,6 +417,14 @@ fn unbegun(timetable: &Timetable, at: usize) -> Result<(), Refused> {
     }
 }
 
+/// The same for one date of a request.
+fn unbegun_date(timetable: &Timetable, piece: &Arc<str>) -> Result<(), Refused> {
+    match timetable.piece(piece) {
+        Some(date) if date.begun(&timetable.settings) => Err(Refused::Begun(Arc::clone(piece))),
+        _ => Ok(()),
+    }
+}
+
 fn within_years(timetable: &Timetable, at: Instant) -> Result<(), Refused> {
     let fits = YEARS.contains(&timetable.settings.zone.date(at).year());
     if fits { Ok(()) } else { Err(Refused::Year) }
@@ -326,20 +451,117 @@ fn moved(
     piece: &Arc<str>,
     to: Instant,
 ) -> Result<Vec<Touched>, Refused> {
+    within_years(timetable, to)?;
+    if let Some(date) = timetable.occurrence(piece) {
+        unbegun_date(timetable, piece)?;
+        return differ(timetable, date, |differs, whole| {
+            let by_rule = whole.repeats.as_ref().map(|r| r.dates()[date.1].start);
+            if differs.fastened || whole.fastened {
+                return Err(Refused::Fastened(Arc::clone(piece)));
+            }
+            if differs.start.or(by_rule) == Some(to) {
+                return Err(already(piece, "at that time"));
+            }
+            differs.start = Some(to);
+            Ok(())
+        });
+    }
     let at = position(timetable, piece)?;
     unbegun(timetable, at)?;
-    within_years(timetable, to)?;
     within_years(timetable, to + timetable.requests[at].length)?;
+    let zone = timetable.settings.zone;
     change(timetable, piece, |request| {
         if request.fastened {
             return Err(Refused::Fastened(Arc::clone(&request.id)));
         }
         if request.start == to {
-            return Err(already(request, "at that time"));
+            return Err(already(&request.id, "at that time"));
         }
-        request.start = to;
-        Ok(())
+        let before = std::mem::replace(&mut request.start, to);
+        let Some(repeats) = request.repeats.clone() else {
+            return Ok(());
+        };
+        // All its dates move as far on the clock as the first.
+        let shift = zone.civil(to) - zone.civil(before);
+        let moved = |at: Instant| zone.lenient(zone.civil(at) + shift);
+        let days = zone.date(to) - zone.date(before);
+        let names_stay = days.is_zero() && repeats.differing.iter().all(|d| !d.date.contains('T'));
+        if !repeats.differing.is_empty() && !names_stay {
+            return Err(Refused::DatesDiffer(Arc::clone(&request.id)));
+        }
+        let except = repeats.except.iter().map(|except| match except {
+            Except::Date(date) => Except::Date(*date + days),
+            Except::Moment(at) => Except::Moment(moved(*at)),
+        });
+        let also = repeats.also.iter().map(|at| moved(*at)).collect();
+        repeat(request, zone, repeats.rule.clone(), also, except.collect())
     })
+}
+
+/// Works the dates of a request out again; what differs on some of them stays.
+fn repeat(
+    request: &mut Request,
+    zone: Zone,
+    rule: Option<Arc<str>>,
+    also: Vec<Instant>,
+    except: Vec<Except>,
+) -> Result<(), Refused> {
+    let differing = request.repeats.as_ref();
+    let differing = differing.map_or_else(Vec::new, |repeats| repeats.differing.clone());
+    if rule.is_none() && also.is_empty() {
+        if !differing.is_empty() {
+            return Err(Refused::DatesDiffer(Arc::clone(&request.id)));
+        }
+        request.repeats = None;
+        return Ok(());
+    }
+    let refused = |why: String| Refused::Repeats(Arc::clone(&request.id), why);
+    let repeats = Repeats::new(
+        (&request.id, request.start),
+        zone,
+        rule,
+        also,
+        except,
+        differing,
+    );
+    request.repeats = Some(Arc::new(repeats.map_err(|error| match error {
+        RepeatsError::Rule(error) => {
+            let error = match error {
+                RepeatError::NoRule(why) => RepeatError::NoRule(clean(&why).into_owned()),
+                error => error,
+            };
+            refused(format!("cannot repeat like that: the rule {error}"))
+        }
+        RepeatsError::Nothing => refused("would have no date left".into()),
+        RepeatsError::NoDate(_) | RepeatsError::Twice(_) => {
+            Refused::DatesDiffer(Arc::clone(&request.id))
+        }
+    })?));
+    Ok(())
+}
+
+/// Changes what differs on one date of a request that is not withdrawn.
+fn differ(
+    timetable: &mut Timetable,
+    (at, date): (usize, usize),
+    how: impl FnOnce(&mut Differing, &Request) -> Result<(), Refused>,
+) -> Result<Vec<Touched>, Refused> {
+    let tables = timetable.differing_tables();
+    let mut request = Request::clone(&timetable.requests[at]);
+    let Some(mut repeats) = request.repeats.as_deref().cloned() else {
+        return Err(Refused::UnknownPiece(Arc::clone(&request.id)));
+    };
+    if request.withdrawn {
+        return Err(Refused::Withdrawn(Arc::clone(&request.id)));
+    }
+    let table = repeats.differ(date, tables, |differing| how(differing, &request))?;
+    let end = Piece::of_date(&timetable.requests[at], &repeats, date)
+        .span
+        .end;
+    within_years(timetable, end)?;
+    request.repeats = Some(Arc::new(repeats));
+    timetable.replace(at, request);
+    Ok(vec![Touched::Occurrence(table)])
 }
 
 /// Changes the closures of a resource.
@@ -458,6 +680,13 @@ fn set_request(timetable: &Timetable, request: &mut Request, field: &Field) -> R
         Field::Length(length) => request.length = *length,
         Field::Setup(setup) => request.setup = *setup,
         Field::Turnaround(turnaround) => request.turnaround = *turnaround,
+        Field::Together(together) => request.together = *together,
+        Field::Repeat(rule) => {
+            let repeats = request.repeats.clone();
+            let also = repeats.as_ref().map_or_else(Vec::new, |r| r.also.clone());
+            let except = repeats.map_or_else(Vec::new, |r| r.except.clone());
+            repeat(request, timetable.settings.zone, rule.clone(), also, except)?;
+        }
         Field::Seats(_) | Field::Offers(_) => {
             return Err(Refused::NoSuchField {
                 what: "request",
@@ -488,10 +717,21 @@ fn set_common(common: &mut Common, field: &Field) -> Result<(), Refused> {
 }
 
 fn drop_it(timetable: &mut Timetable, id: &Arc<str>) -> Result<Vec<Touched>, Refused> {
+    if timetable.occurrence(id).is_some() {
+        return Err(Refused::OneDate(Arc::clone(id)));
+    }
     if let Some(at) = timetable.position(id) {
         unbegun(timetable, at)?;
+        let differing = timetable.requests[at].repeats.iter();
+        let mut tables: Vec<usize> = differing
+            .flat_map(|repeats| repeats.differing.iter().map(|differing| differing.table))
+            .collect();
+        tables.sort_unstable_by_key(|table| std::cmp::Reverse(*table));
         timetable.remove(at);
-        return Ok(vec![Touched::RequestGone(at)]);
+        timetable.without_tables(&tables);
+        let mut touched: Vec<Touched> = tables.into_iter().map(Touched::OccurrenceGone).collect();
+        touched.push(Touched::RequestGone(at));
+        return Ok(touched);
     }
     let Some(at) = timetable.named.iter().position(|named| named.id == *id) else {
         return Err(if timetable.resources().get(id).is_some() {
@@ -501,12 +741,14 @@ fn drop_it(timetable: &mut Timetable, id: &Arc<str>) -> Result<Vec<Touched>, Ref
         });
     };
     let names = |request: &&Arc<Request>| {
-        request
-            .pin
+        let differing = request
+            .repeats
             .iter()
-            .chain(&request.only)
-            .chain(&request.never)
-            .any(|name| name == id)
+            .flat_map(|repeats| &repeats.differing);
+        let pins = differing.filter_map(|differing| differing.pin.as_ref());
+        let lists = request.only.iter().chain(&request.never);
+        let mut names = lists.chain(&request.pin).chain(pins);
+        names.any(|name| name == id)
     };
     if let Some(by) = timetable.requests.iter().find(names) {
         return Err(Refused::SpokenOf {

@@ -30,10 +30,14 @@ pub enum Field {
     Seats(Option<u64>),
     /// What a resource offers.
     Offers(Vec<Arc<str>>),
+    /// The rule by which a request repeats (RFC 5545).
+    Repeat(Option<Arc<str>>),
+    /// Whether all its dates stay on one resource.
+    Together(bool),
 }
 
 /// The keys, as written.
-pub(super) const KEYS: [&str; 12] = [
+pub(super) const KEYS: [&str; 14] = [
     "title",
     "size",
     "needs",
@@ -46,6 +50,8 @@ pub(super) const KEYS: [&str; 12] = [
     "turnaround",
     "seats",
     "offers",
+    "repeat",
+    "together",
 ];
 
 impl Field {
@@ -64,6 +70,8 @@ impl Field {
             Field::Turnaround(_) => "turnaround",
             Field::Seats(_) => "seats",
             Field::Offers(_) => "offers",
+            Field::Repeat(_) => "repeat",
+            Field::Together(_) => "together",
         }
     }
 
@@ -107,6 +115,17 @@ impl Field {
                     .filter(|s| *s > 0)
                     .ok_or("a length such as 1h30m")?,
             ),
+            "repeat" if value == "none" => Field::Repeat(None),
+            "repeat" => Field::Repeat(Some(
+                unquote(value)
+                    .ok_or("a rule in quotes such as \"FREQ=WEEKLY;COUNT=10\", or none")?
+                    .into(),
+            )),
+            "together" => Field::Together(match value {
+                "yes" => true,
+                "no" => false,
+                _ => return Err("yes or no"),
+            }),
             "setup" => Field::Setup(length()?),
             _ => Field::Turnaround(length()?),
         })
@@ -120,6 +139,8 @@ impl Field {
             Field::Title(text) => quote(text),
             Field::Size(value) | Field::Seats(value) => number(value),
             Field::Setup(value) | Field::Turnaround(value) => length(value),
+            Field::Repeat(rule) => rule.as_deref().map_or_else(|| "none".into(), quote),
+            Field::Together(together) => if *together { "yes" } else { "no" }.into(),
             Field::Weight(weight) => weight.to_string(),
             Field::Length(seconds) => print_length(*seconds),
             Field::Needs(list)

@@ -14,6 +14,7 @@ pub use parse::{Context, Misread, parse};
 pub use print::print;
 
 use crate::clock::{Instant, Span};
+use crate::timetable::Prefer;
 use std::sync::Arc;
 
 /// One change, absolute: nothing in it depends on when or where it is read again.
@@ -95,6 +96,10 @@ pub enum Change {
     },
     /// Take a request or a resource out of the file.
     Drop(Arc<str>),
+    /// What began before that moment stays where and when it is.
+    Settle(Instant),
+    /// What comes first where fewest resources and fewest changes pull apart.
+    Prefer(Prefer),
     /// Take the last step back.
     Undo,
     /// Do again what was taken back.
@@ -119,6 +124,8 @@ impl Change {
             Change::Close { .. }
             | Change::Reopen { .. }
             | Change::AddResource { .. }
+            | Change::Settle(_)
+            | Change::Prefer(_)
             | Change::Undo
             | Change::Redo => None,
         }

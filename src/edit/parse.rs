@@ -4,7 +4,7 @@ use super::field::{Field, KEYS, unquote};
 use super::{Change, Edit};
 use crate::clock::{DAY, Instant, Resolved, Span, Zone, parse_civil, parse_date, parse_length};
 use crate::text::{clean, is_id, nearest};
-use crate::timetable::Timetable;
+use crate::timetable::{Prefer, Timetable};
 use chrono::NaiveDate;
 use std::sync::Arc;
 use thiserror::Error;
@@ -28,13 +28,13 @@ pub struct Misread {
     pub message: String,
 }
 
-const VERBS: [&str; 15] = [
+const VERBS: [&str; 17] = [
     "add", "set", "drop", "move", "pin", "unpin", "fasten", "loosen", "swap", "withdraw",
-    "restore", "close", "reopen", "undo", "redo",
+    "restore", "close", "reopen", "settle", "prefer", "undo", "redo",
 ];
 
 /// Words of the language that this program does not act on yet.
-const LATER: [&str; 3] = ["split", "join", "settle"];
+const LATER: [&str; 2] = ["split", "join"];
 
 /// Reads one line. Relative times (`by +30m`, `now`, a time without a date) are resolved
 /// against the context.
@@ -104,6 +104,15 @@ pub fn parse(line: &str, context: Context<'_>) -> Result<Edit, Misread> {
             Change::Set { id, field }
         }
         "drop" => Change::Drop(words.known(context)?),
+        "settle" => {
+            words.keyword("until")?;
+            let zone = context.timetable.settings.zone;
+            Change::Settle(words.moment(context, Some(zone.date(context.now)))?)
+        }
+        "prefer" => Change::Prefer(match words.either("count", "changes")? {
+            "count" => Prefer::Count,
+            _ => Prefer::Changes,
+        }),
         "undo" => Change::Undo,
         "redo" => Change::Redo,
         later if LATER.contains(&later) => {
@@ -280,14 +289,32 @@ impl<'a> Words<'a> {
     /// An id that the timetable knows, and its present start.
     fn piece(&mut self, context: Context<'_>) -> Result<(Arc<str>, Instant), Misread> {
         let word = self.next("the id of a request")?;
-        match context.timetable.request(word.text) {
-            Some(request) => Ok((Arc::clone(&request.id), request.start)),
+        let request = context.timetable.request(word.text);
+        let request = request.map(|request| (Arc::clone(&request.id), request.start));
+        let dated = || {
+            let piece = context.timetable.piece(word.text)?;
+            Some((piece.id, piece.span.start))
+        };
+        match request.or_else(dated) {
+            Some(found) => Ok(found),
             None => {
                 let ids = context
                     .timetable
                     .requests
                     .iter()
                     .map(|request| request.id.as_ref());
+                let (of, date) = word.text.split_once('@').unwrap_or((word.text, ""));
+                if let Some(request) = context.timetable.request(of) {
+                    let dates = request.repeats.iter().flat_map(|r| r.dates());
+                    let dates = dates.map(|dated| &*dated.id);
+                    let hint = nearest(word.text, dates).map_or_else(
+                        || "names of dates are like x@2027-01-11".to_string(),
+                        |near| format!("did you mean \"{near}\"?"),
+                    );
+                    return Err(
+                        word.misread(format!("{of} has no date \"{}\"; {hint}", clean(date)))
+                    );
+                }
                 let hint = nearest(word.text, ids).map_or_else(
                     || "the file lists them".to_string(),
                     |near| format!("did you mean \"{near}\"?"),
@@ -313,29 +340,34 @@ impl<'a> Words<'a> {
         let request = timetable
             .request(word.text)
             .map(|request| Arc::clone(&request.id));
+        let dated = || timetable.piece(word.text).map(|piece| piece.id);
         let open = || timetable.open_kind_of(word.text).map(|_| word.text.into());
-        request.or_else(resource).or_else(open).ok_or_else(|| {
-            let requests = timetable.requests.iter().map(|request| request.id.as_ref());
-            let resources = timetable
-                .resources()
-                .all
-                .iter()
-                .map(|resource| resource.id.as_ref());
-            if timetable.kinds.iter().any(|kind| &*kind.id == word.text) {
-                return word.misread(format!(
-                    "{} is a kind; its table is changed in the file",
-                    word.text
-                ));
-            }
-            let hint = nearest(word.text, requests.chain(resources)).map_or_else(
-                || "the file lists them".to_string(),
-                |near| format!("did you mean \"{near}\"?"),
-            );
-            word.misread(format!(
-                "nothing is called \"{}\"; {hint}",
-                clean(word.text)
-            ))
-        })
+        request
+            .or_else(dated)
+            .or_else(resource)
+            .or_else(open)
+            .ok_or_else(|| {
+                let requests = timetable.requests.iter().map(|request| request.id.as_ref());
+                let resources = timetable
+                    .resources()
+                    .all
+                    .iter()
+                    .map(|resource| resource.id.as_ref());
+                if timetable.kinds.iter().any(|kind| &*kind.id == word.text) {
+                    return word.misread(format!(
+                        "{} is a kind; its table is changed in the file",
+                        word.text
+                    ));
+                }
+                let hint = nearest(word.text, requests.chain(resources)).map_or_else(
+                    || "the file lists them".to_string(),
+                    |near| format!("did you mean \"{near}\"?"),
+                );
+                word.misread(format!(
+                    "nothing is called \"{}\"; {hint}",
+                    clean(word.text)
+                ))
+            })
     }
 
     /// A key and its value.

@@ -45,6 +45,8 @@ pub fn print(edit: &Edit, zone: Zone) -> String {
             format!("set {id}{}", fields_text(std::slice::from_ref(field)))
         }
         Change::Drop(id) => format!("drop {id}"),
+        Change::Settle(until) => format!("settle until {}", zone.print(*until)),
+        Change::Prefer(prefer) => format!("prefer {}", prefer.name()),
         Change::Undo => "undo".into(),
         Change::Redo => "redo".into(),
     };

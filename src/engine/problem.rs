@@ -1,10 +1,14 @@
-//! The timetable as the engine sees it: items, classes of alike resources, who may use
+//! The timetable as the engine sees it: items and their times, classes of alike resources, who may use
 //! which class.
 
 use crate::clock::{Instant, Span};
 use crate::lookup::{FastMap, FastSet};
-use crate::timetable::{Hours, Piece, Resource, Timetable, Wishes, may_use, suits, suits_if_named};
+use crate::timetable::{
+    Hours, Piece, Resource, Timetable, Wishes, items, itself, may_use, occupied, suits,
+    suits_if_named,
+};
 use std::collections::HashMap;
+use std::ops::Range;
 use std::sync::Arc;
 
 /// Resources that no item can tell apart. A member that somebody is pinned on has a class
@@ -19,27 +23,50 @@ pub struct Class {
     pub turnaround: i64,
 }
 
-/// A piece to place.
+/// What goes on one resource as a whole: a piece, or pieces that stay together.
 #[derive(Clone, Debug)]
 pub struct Item {
-    /// Its own time, without buffers.
-    pub span: Span,
-    /// Its time with its least buffers over the classes it may use.
+    /// The time of its first unit with its least buffers over the classes it may use.
     pub core: Span,
-    /// How much it hurts to leave it out.
-    pub weight: u32,
+    /// How much it hurts to leave it out: its pieces together.
+    pub weight: u64,
+    /// Its places in [`Problem::units`].
+    units: (u32, u32),
+    /// Its places in [`Problem::ids`].
+    pieces: (u32, u32),
+    /// Least seconds kept free before and after.
+    least: (i64, i64),
     setup: Option<i64>,
     turnaround: Option<i64>,
     choices: (u32, u32),
 }
 
+/// A stretch of time of an item. Of items with several pieces only those units are kept
+/// that can make a difference: where the same meets again in the same way (equal weeks), one
+/// meeting stands for all.
+#[derive(Clone, Copy, Debug)]
+pub struct Unit {
+    /// Whose.
+    pub item: u32,
+    /// The piece's place in [`Problem::ids`].
+    pub piece: u32,
+    /// Its own time, without buffers.
+    pub span: Span,
+    /// Its time with its item's least buffers.
+    pub core: Span,
+}
+
 /// Everything the engine needs, in plain arrays.
 #[derive(Clone, Debug)]
 pub struct Problem {
-    /// The pieces that are not withdrawn, in file order.
+    /// What is placed as a whole, in file order.
     pub items: Vec<Item>,
-    /// Their ids.
+    /// Their stretches of time: an item's one after the other, by start.
+    pub units: Vec<Unit>,
+    /// The pieces that are not withdrawn, in file order: an item's one after the other.
     pub ids: Vec<Arc<str>>,
+    /// Their times.
+    pub spans: Vec<Span>,
     /// The classes.
     pub classes: Vec<Class>,
     /// The class of each resource.
@@ -68,11 +95,14 @@ impl Problem {
                 piece.pin.as_ref().or(stays)
             })
             .collect();
+        let items = items(&pieces);
         let spoken = Spoken::by(&pieces);
         let (classes, class_of) = classify(resources, &spoken, &pins);
         let mut problem = Problem {
-            items: Vec::with_capacity(pieces.len()),
+            items: Vec::with_capacity(items.len()),
+            units: Vec::with_capacity(pieces.len()),
             ids: pieces.iter().map(|piece| Arc::clone(&piece.id)).collect(),
+            spans: pieces.iter().map(|piece| piece.span).collect(),
             classes,
             class_of,
             resources: resources
@@ -81,7 +111,10 @@ impl Problem {
                 .collect(),
             choices: Vec::new(),
         };
-        problem.fill(timetable, &pieces, &pins, &spoken);
+        problem.fill(timetable, &pieces, &items, &pins, &spoken);
+        if problem.items.len() < problem.ids.len() {
+            problem.without_what_repeats();
+        }
         problem
     }
 
@@ -89,6 +122,7 @@ impl Problem {
         &mut self,
         timetable: &Timetable,
         pieces: &[&Piece],
+        items: &[Range<usize>],
         pins: &[Option<&Arc<str>>],
         spoken: &Spoken<'_>,
     ) {
@@ -109,10 +143,7 @@ impl Problem {
             .collect();
         let open = |piece: &Piece, class: u32| {
             let resource = representatives[class as usize];
-            unlimited[class as usize]
-                || resource
-                    .hours
-                    .allow(crate::timetable::occupied(piece, resource))
+            unlimited[class as usize] || resource.hours.allow(occupied(piece, resource))
         };
         // Where the same time is kept free everywhere there is nothing to compare.
         let first = self
@@ -123,11 +154,27 @@ impl Problem {
             let mut classes = self.classes.iter();
             classes.all(|class| (class.setup, class.turnaround) == *first)
         });
-        for ((piece, pin), only) in pieces.iter().zip(pins).zip(&spoken.only) {
+        for range in items {
+            let (item, pins) = (&pieces[range.clone()], &pins[range.clone()]);
+            let (piece, only) = (item[0], &spoken.only[range.start]);
             let from = self.choices.len() as u32;
+            let pin = pins.iter().flatten().next();
+            // Pieces that stay together must be pinned alike, and fit one after the other.
+            let fits_all = |resource: &Resource| match item {
+                [_] => true,
+                _ => {
+                    let open = |piece: &&Piece| {
+                        let hours = &resource.hours;
+                        hours.unlimited() || hours.allow(occupied(piece, resource))
+                    };
+                    item.iter().all(open) && itself(item, resource).is_none()
+                }
+            };
             if let Some(pin) = pin {
-                let place = timetable.resources().position(pin);
-                let fits = place.filter(|at| may_use(piece, &all[*at]).is_ok());
+                let alike = pins.iter().flatten().all(|other| other == pin);
+                let place = timetable.resources().position(pin).filter(|_| alike);
+                let fits =
+                    place.filter(|at| may_use(piece, &all[*at]).is_ok() && fits_all(&all[*at]));
                 self.choices.extend(fits.map(|at| self.class_of[at]));
             } else if !only.is_empty() {
                 // Long lists of names are common where every resource is its own.
@@ -144,7 +191,9 @@ impl Problem {
                 let plain = plain && piece.size.is_none();
                 let suit = named.iter().copied().filter(|class| {
                     let resource = representatives[*class as usize];
-                    (plain || suits_if_named(piece, resource).is_ok()) && open(piece, *class)
+                    (plain || suits_if_named(piece, resource).is_ok())
+                        && open(piece, *class)
+                        && fits_all(resource)
                 });
                 self.choices.extend(suit);
             } else {
@@ -156,30 +205,45 @@ impl Problem {
                         .collect()
                 });
                 let suited = suited.iter().copied();
-                self.choices
-                    .extend(suited.filter(|class| open(piece, *class)));
+                self.choices.extend(suited.filter(|class| {
+                    open(piece, *class) && fits_all(representatives[*class as usize])
+                }));
             }
             let to = self.choices.len() as u32;
-            let mut item = Item {
-                span: piece.span,
+            let first_unit = self.units.len() as u32;
+            let mut new = Item {
                 core: piece.span,
-                weight: piece.request.weight,
+                weight: item
+                    .iter()
+                    .map(|piece| u64::from(piece.request.weight))
+                    .sum(),
+                units: (first_unit, first_unit + item.len() as u32),
+                pieces: (range.start as u32, range.end as u32),
+                least: (0, 0),
                 setup: piece.request.setup,
                 turnaround: piece.request.turnaround,
                 choices: (from, to),
             };
-            item.core = match uniform.filter(|_| from < to) {
-                Some((before, after)) => item.span.widened(
-                    item.setup.unwrap_or(before),
-                    item.turnaround.unwrap_or(after),
-                ),
-                None => self.least(timetable, &item),
+            new.least = match uniform.filter(|_| from < to) {
+                Some((before, after)) => {
+                    (new.setup.unwrap_or(before), new.turnaround.unwrap_or(after))
+                }
+                None => self.least(timetable, &new),
             };
-            self.items.push(item);
+            let unit = |(at, piece): (usize, &&Piece)| Unit {
+                item: self.items.len() as u32,
+                piece: (range.start + at) as u32,
+                span: piece.span,
+                core: piece.span.widened(new.least.0, new.least.1),
+            };
+            self.units.extend(item.iter().enumerate().map(unit));
+            self.units[first_unit as usize..].sort_by_key(|unit| unit.span);
+            new.core = self.units[first_unit as usize].core;
+            self.items.push(new);
         }
     }
 
-    fn least(&self, timetable: &Timetable, item: &Item) -> Span {
+    fn least(&self, timetable: &Timetable, item: &Item) -> (i64, i64) {
         let choices = &self.choices[item.choices.0 as usize..item.choices.1 as usize];
         let classes = || choices.iter().map(|class| &self.classes[*class as usize]);
         let settings = &timetable.settings;
@@ -191,9 +255,171 @@ impl Problem {
             .map(|class| class.turnaround)
             .min()
             .unwrap_or(settings.turnaround);
-        item.span.widened(
+        (
             item.setup.unwrap_or(before),
             item.turnaround.unwrap_or(after),
+        )
+    }
+
+    /// Drops units that can make no difference: stretches without a gap in which everything
+    /// meets as it does, at other times, in a stretch that is kept.
+    fn without_what_repeats(&mut self) {
+        // Nothing that two stretches keep free may touch, wherever it goes.
+        let widest = |item: &Item, own: Option<i64>, of: fn(&Class) -> i64| {
+            let classes = self.choices[item.choices.0 as usize..item.choices.1 as usize].iter();
+            let most = classes
+                .map(|class| of(&self.classes[*class as usize]))
+                .max();
+            own.unwrap_or(most.unwrap_or(0))
+        };
+        let wide: Vec<(i64, i64)> = self
+            .items
+            .iter()
+            .map(|item| {
+                (
+                    widest(item, item.setup, |class| class.setup),
+                    widest(item, item.turnaround, |class| class.turnaround),
+                )
+            })
+            .collect();
+        let mut order: Vec<u32> = (0..self.units.len() as u32).collect();
+        let whole = |unit: &Unit| {
+            let (before, after) = wide[unit.item as usize];
+            unit.span.widened(before, after)
+        };
+        order.sort_unstable_by_key(|unit| (whole(&self.units[*unit as usize]), *unit));
+        let mut stretches: Vec<Vec<u32>> = Vec::new();
+        let mut end = None;
+        for unit in order {
+            let span = whole(&self.units[unit as usize]);
+            if end.is_none_or(|end| end <= span.start) {
+                stretches.push(Vec::new());
+            }
+            end = end.max(Some(span.end));
+            if let Some(last) = stretches.last_mut() {
+                last.push(unit);
+            }
+        }
+        let mut larger_first: Vec<usize> = (0..stretches.len()).collect();
+        larger_first.sort_by_key(|at| std::cmp::Reverse(stretches[*at].len()));
+        // Where each item is in what is kept: the stretch, and when it starts there.
+        let mut known: Vec<Vec<(usize, i64)>> = vec![Vec::new(); self.items.len()];
+        let mut kept: Vec<FastSet<(u32, i64, i64)>> = Vec::new();
+        let mut keep = vec![false; self.units.len()];
+        for at in larger_first {
+            let entry = |unit: u32, shift: i64| {
+                let unit = &self.units[unit as usize];
+                (
+                    unit.item,
+                    unit.span.start.0 + shift,
+                    unit.span.end.0 + shift,
+                )
+            };
+            let stretch = &stretches[at];
+            let (item, start, _) = entry(stretch[0], 0);
+            let again = known[item as usize].iter().any(|(other, there)| {
+                let shift = there - start;
+                stretch
+                    .iter()
+                    .all(|unit| kept[*other].contains(&entry(*unit, shift)))
+            });
+            if again {
+                continue;
+            }
+            for unit in stretch {
+                keep[*unit as usize] = true;
+                let (item, start, _) = entry(*unit, 0);
+                known[item as usize].push((kept.len(), start));
+            }
+            kept.push(stretch.iter().map(|unit| entry(*unit, 0)).collect());
+        }
+        let mut units = Vec::new();
+        for item in &mut self.items {
+            let (from, to) = (item.units.0 as usize, item.units.1 as usize);
+            let first = units.len();
+            units.extend((from..to).filter(|at| keep[*at]).map(|at| self.units[at]));
+            item.units = (first as u32, units.len() as u32);
+            item.core = units[first].core;
+        }
+        self.units = units;
+    }
+
+    /// The units of an item, by start.
+    pub fn units(&self, item: usize) -> &[Unit] {
+        let (from, to) = self.items[item].units;
+        &self.units[from as usize..to as usize]
+    }
+
+    /// The places of an item's units in [`Problem::units`].
+    pub fn unit_places(&self, item: usize) -> Range<usize> {
+        let (from, to) = self.items[item].units;
+        from as usize..to as usize
+    }
+
+    /// The pieces of an item, as places in [`Problem::ids`].
+    pub fn pieces(&self, item: usize) -> Range<usize> {
+        let (from, to) = self.items[item].pieces;
+        from as usize..to as usize
+    }
+
+    /// The id of the piece that a unit is.
+    pub fn id_of(&self, unit: usize) -> &Arc<str> {
+        &self.ids[self.units[unit].piece as usize]
+    }
+
+    /// The id of the piece that stands for an item: that of its first unit.
+    pub fn name(&self, item: usize) -> &Arc<str> {
+        self.id_of(self.items[item].units.0 as usize)
+    }
+
+    /// Whether every item has one unit.
+    pub fn single(&self) -> bool {
+        self.units.len() == self.items.len()
+    }
+
+    /// Whether two items, both allowed there, are in each other's way on a resource of that
+    /// class.
+    pub fn conflict(&self, a: usize, b: usize, class: u32) -> bool {
+        let (mut one, mut two) = (self.spans_on(a, class), self.spans_on(b, class));
+        let (mut x, mut y) = (one.next(), two.next());
+        while let (Some(p), Some(q)) = (x, y) {
+            if p.overlaps(q) {
+                return true;
+            }
+            // Spans of one item do not overlap where it may go.
+            if p.start < q.start {
+                x = one.next();
+            } else {
+                y = two.next();
+            }
+        }
+        false
+    }
+
+    /// Whether two items overlap at all, each with its least buffers.
+    pub fn overlap(&self, a: usize, b: usize) -> bool {
+        let (one, two) = (self.units(a), self.units(b));
+        if let ([one], [two]) = (one, two) {
+            return one.core.overlaps(two.core);
+        }
+        one.iter()
+            .any(|unit| two.iter().any(|other| unit.core.overlaps(other.core)))
+    }
+
+    /// The stretches in which the item keeps a resource of that class occupied, by start.
+    pub fn spans_on(&self, item: usize, class: u32) -> impl Iterator<Item = Span> + '_ {
+        let (before, after) = self.buffers(item, class);
+        let units = self.units(item).iter();
+        units.map(move |unit| unit.span.widened(before, after))
+    }
+
+    /// Seconds that the item keeps free before and after on a resource of that class.
+    fn buffers(&self, item: usize, class: u32) -> (i64, i64) {
+        let item = &self.items[item];
+        let class = &self.classes[class as usize];
+        (
+            item.setup.unwrap_or(class.setup),
+            item.turnaround.unwrap_or(class.turnaround),
         )
     }
 
@@ -210,24 +436,27 @@ impl Problem {
             .is_ok()
     }
 
-    /// The span during which the item keeps a resource of that class occupied.
-    pub fn occupied(&self, item: usize, class: u32) -> Span {
-        let item = &self.items[item];
-        let class = &self.classes[class as usize];
-        item.span.widened(
-            item.setup.unwrap_or(class.setup),
-            item.turnaround.unwrap_or(class.turnaround),
-        )
+    /// The span during which a unit keeps a resource of that class occupied.
+    pub fn occupied(&self, unit: usize, class: u32) -> Span {
+        let unit = &self.units[unit];
+        let (before, after) = self.buffers(unit.item as usize, class);
+        unit.span.widened(before, after)
     }
 
-    /// Each item's time with its least buffers.
+    /// Each piece's time with its item's least buffers.
     pub fn cores(&self) -> Vec<Span> {
-        self.items.iter().map(|item| item.core).collect()
+        let mut cores = Vec::with_capacity(self.ids.len());
+        for item in &self.items {
+            let pieces = item.pieces.0 as usize..item.pieces.1 as usize;
+            let spans = self.spans[pieces].iter();
+            cores.extend(spans.map(|span| span.widened(item.least.0, item.least.1)));
+        }
+        cores
     }
 
-    /// Items that run at a moment with their least buffers.
+    /// Units that run at a moment with their least buffers.
     pub fn running(&self, at: Instant) -> impl Iterator<Item = usize> + '_ {
-        (0..self.items.len()).filter(move |item| self.items[*item].core.contains(at))
+        (0..self.units.len()).filter(move |unit| self.units[*unit].core.contains(at))
     }
 }
 

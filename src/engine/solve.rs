@@ -33,7 +33,9 @@ impl Reference {
         let resources = timetable.resources();
         // Placements are listed in the order of the items, as a rule; the map is for the rest.
         let mut before: FastMap<&str, &Placement> = FastMap::default();
-        let in_order = plan.placements.len() == problem.ids.len()
+        let single = problem.items.len() == problem.ids.len();
+        let in_order = single
+            && plan.placements.len() == problem.ids.len()
             && problem
                 .ids
                 .iter()
@@ -42,23 +44,21 @@ impl Reference {
         if !in_order {
             before.extend(plan.placements.iter().map(|p| (&*p.piece, p)));
         }
-        let kept = problem
-            .ids
-            .iter()
-            .zip(&problem.items)
-            .enumerate()
-            .map(|(at, (id, item))| {
-                let placement = if in_order {
-                    plan.placements.get(at)
-                } else {
-                    before.get(&**id).copied()
-                };
-                let place = placement.and_then(|p| resources.position(&p.resource));
-                Kept {
-                    resource: place.map_or(NONE, |place| place as u32),
-                    changed: placement.is_none_or(|p| p.span != item.span),
-                }
-            });
+        let kept = (0..problem.items.len()).map(|item| {
+            let mut pieces = problem.pieces(item);
+            let placement = |piece: usize| match in_order {
+                true => plan.placements.get(piece),
+                false => before.get(&*problem.ids[piece]).copied(),
+            };
+            // Where the first of it was, for one that was apart before.
+            let first = pieces.clone().find_map(placement);
+            let place = first.and_then(|p| resources.position(&p.resource));
+            Kept {
+                resource: place.map_or(NONE, |place| place as u32),
+                changed: pieces
+                    .any(|piece| placement(piece).is_none_or(|p| p.span != problem.spans[piece])),
+            }
+        });
         Reference(kept.collect())
     }
 }
@@ -98,11 +98,13 @@ pub fn solve(
         reference,
         began: Instant::now(),
         floor: clique::largest(problem),
+        clique: Vec::new(),
         violations: Vec::new(),
         out: None,
         best: vec![NONE; problem.items.len()],
         found,
     };
+    solving.pairwise_clique();
     solving.first_plan();
     // After an edit the count should come with its reason; who opens a file wants a plan.
     if reference.is_some() {
@@ -128,6 +130,8 @@ struct Solving<'a, 'f> {
     reference: Option<&'a Reference>,
     began: Instant,
     floor: FloorProof,
+    /// A clique that shares no moment, when that is a larger one.
+    clique: Vec<Arc<str>>,
     violations: Vec<HallViolation>,
     out: Option<OutPrices>,
     best: Assignment,
@@ -138,6 +142,21 @@ impl Solving<'_, '_> {
     /// Less weight left out first, then fewer resources.
     fn value(&self, on: &[u32]) -> (u64, usize) {
         rows::value(self.problem, on)
+    }
+
+    /// Where items have several units, a clique need not share a moment.
+    fn pairwise_clique(&mut self) {
+        let clique = clique::pairwise(self.problem, self.floor.value());
+        if clique.len() > self.floor.value() {
+            let pieces = clique
+                .iter()
+                .map(|item| Arc::clone(self.problem.name(*item)));
+            self.clique = pieces.collect();
+            self.floor = FloorProof::Clique {
+                at: None,
+                pieces: self.clique.clone(),
+            };
+        }
     }
 
     /// A plan at once: what was there before, as far as it still fits; where everything is
@@ -199,7 +218,7 @@ impl Solving<'_, '_> {
         if higher {
             let pieces = clique
                 .iter()
-                .map(|item| Arc::clone(&self.problem.ids[*item]))
+                .map(|item| Arc::clone(self.problem.name(*item)))
                 .collect();
             self.floor = FloorProof::Incompatible { pieces };
         }
@@ -208,9 +227,17 @@ impl Solving<'_, '_> {
 
     /// The weight that provably stays out.
     fn out_floor(&self) -> u64 {
+        let items = (0..self.problem.items.len()).flat_map(|item| {
+            let pieces = self.problem.pieces(item);
+            pieces.map(move |piece| (&*self.problem.ids[piece], item))
+        });
+        let items: FastMap<&str, usize> = match self.violations.is_empty() {
+            true => FastMap::default(),
+            false => items.collect(),
+        };
         let weight = |id: &Arc<str>| {
-            let at = self.problem.ids.iter().position(|other| other == id);
-            at.map_or(0, |at| u64::from(self.problem.items[at].weight))
+            let item = items.get(&**id);
+            item.map_or(0, |item| self.problem.items[*item].weight)
         };
         let least = |violation: &HallViolation| {
             let mut weights: Vec<u64> = violation.pieces.iter().map(weight).collect();
@@ -229,23 +256,25 @@ impl Solving<'_, '_> {
     fn answer(&self) -> Answer {
         let mut plan = Plan::default();
         for (item, resource) in self.best.iter().enumerate() {
-            let piece = Arc::clone(&self.problem.ids[item]);
+            let pieces = self.problem.pieces(item);
             if *resource == NONE {
-                plan.unplaced.push(Unplaced {
-                    piece,
-                    because: self.reason(item),
-                });
+                let because = self.reason(item);
+                plan.unplaced.extend(pieces.map(|piece| Unplaced {
+                    piece: Arc::clone(&self.problem.ids[piece]),
+                    because: because.clone(),
+                }));
             } else {
-                plan.placements.push(Placement {
-                    piece,
+                plan.placements.extend(pieces.map(|piece| Placement {
+                    piece: Arc::clone(&self.problem.ids[piece]),
                     resource: Arc::clone(&self.problem.resources[*resource as usize]),
-                    span: self.problem.items[item].span,
-                });
+                    span: self.problem.spans[piece],
+                }));
             }
         }
         Answer {
             plan,
             floor: self.floor.clone(),
+            clique: self.clique.clone(),
             violations: self.violations.clone(),
             out: self.out.clone(),
             seconds: self.began.elapsed().as_secs_f64(),
@@ -265,13 +294,12 @@ impl Solving<'_, '_> {
         let Some(resource) = only else {
             return Reason::AllTaken;
         };
-        let span = self.problem.occupied(item, choices[0]);
         let by = self.best.iter().enumerate().find(|(other, on)| {
-            **on == resource && self.problem.occupied(*other, choices[0]).overlaps(span)
+            **on == resource && self.problem.conflict(*other, item, choices[0])
         });
         by.map_or(Reason::AllTaken, |(other, _)| Reason::PinTaken {
             pin: Arc::clone(&self.problem.resources[resource as usize]),
-            by: Arc::clone(&self.problem.ids[other]),
+            by: Arc::clone(self.problem.name(other)),
         })
     }
 
@@ -282,7 +310,13 @@ impl Solving<'_, '_> {
 
     fn improve(&mut self, budget: Budget, stop: &(dyn Stopper + Sync)) {
         let start: Vec<usize> = match &self.floor {
-            FloorProof::Clique { at, .. } => self.problem.running(*at).collect(),
+            FloorProof::Clique { at: Some(at), .. } => {
+                let running = self.problem.running(*at);
+                let items = running.map(|unit| self.problem.units[unit].item as usize);
+                let mut items: Vec<usize> = items.collect();
+                items.dedup();
+                items
+            }
             _ => incompatible::by_groups(self.problem),
         };
         let start: Vec<usize> = start

@@ -1,7 +1,7 @@
 //! Findings: what is wrong with a timetable that can be opened all the same. The pieces
 //! concerned stay unplaced with their reason.
 
-use super::{Piece, Timetable, Unfit, may_use, occupied};
+use super::{Piece, Timetable, Unfit, all_may_use, items, may_use, occupied};
 use std::collections::HashMap;
 use std::sync::Arc;
 
@@ -33,6 +33,13 @@ pub enum FindingKind {
     },
     /// No resource may take it.
     NoResource,
+    /// It must stay with another date of its request that is pinned elsewhere.
+    PinsApart {
+        /// The resource it is pinned on.
+        pin: Arc<str>,
+        /// The other date.
+        other: Arc<str>,
+    },
 }
 
 /// All findings, in file order. Withdrawn pieces have none.
@@ -43,49 +50,79 @@ pub fn findings(timetable: &Timetable) -> Vec<Finding> {
     let mut pinned: HashMap<usize, Vec<(crate::clock::Span, &Piece)>> = HashMap::new();
     // Requests that say the same of themselves share the search for a possible resource.
     let mut possible_before: HashMap<Wishes<'_>, Vec<usize>> = HashMap::new();
-    for piece in pieces.iter().filter(|piece| !piece.withdrawn) {
-        let mut add = |kind| {
+    let present: Vec<&Piece> = pieces.iter().filter(|piece| !piece.withdrawn).collect();
+    for item in items(&present) {
+        let item = &present[item];
+        let piece = item[0];
+        let mut add = |piece: &Piece, kind| {
             found.push(Finding {
                 piece: Arc::clone(&piece.id),
                 kind,
             })
         };
-        match piece
-            .pin
-            .as_ref()
-            .and_then(|pin| resources.position(pin).map(|at| (pin, at)))
-        {
-            Some((pin, at)) => {
-                if let Err(because) = may_use(piece, &resources.all[at]) {
-                    add(FindingKind::PinCannotServe {
-                        pin: Arc::clone(pin),
-                        because,
+        let pin = item.iter().find_map(|piece| piece.pin.as_ref());
+        let pin = pin.and_then(|pin| resources.position(pin).map(|at| (pin, at)));
+        let Some((pin, at)) = pin else {
+            let possible = match item {
+                [piece] => {
+                    let suited = possible_before.entry(Wishes::of(piece)).or_insert_with(|| {
+                        (0..resources.all.len())
+                            .filter(|at| super::suits(piece, &resources.all[*at]).is_ok())
+                            .collect()
                     });
+                    suited
+                        .iter()
+                        .any(|at| may_use(piece, &resources.all[*at]).is_ok())
                 }
-                let occupied = occupied(piece, &resources.all[at]);
-                let others = pinned.entry(at).or_default();
-                if let Some((_, other)) = others.iter().find(|(span, _)| span.overlaps(occupied)) {
-                    add(FindingKind::PinsOverlap {
+                _ => resources
+                    .all
+                    .iter()
+                    .any(|resource| all_may_use(item, resource).is_ok()),
+            };
+            if !possible {
+                add(piece, FindingKind::NoResource);
+            }
+            continue;
+        };
+        let apart = item
+            .iter()
+            .find(|piece| piece.pin.as_ref().is_some_and(|own| own != pin));
+        if let Some(apart) = apart {
+            add(
+                apart,
+                FindingKind::PinsApart {
+                    pin: apart.pin.clone().unwrap_or_else(|| Arc::clone(pin)),
+                    other: Arc::clone(&piece.id),
+                },
+            );
+            continue;
+        }
+        if let Err(because) = all_may_use(item, &resources.all[at]) {
+            add(
+                piece,
+                FindingKind::PinCannotServe {
+                    pin: Arc::clone(pin),
+                    because,
+                },
+            );
+        }
+        let others = pinned.entry(at).or_default();
+        for piece in item {
+            let occupied = occupied(piece, &resources.all[at]);
+            if let Some((_, other)) = others.iter().find(|(span, _)| span.overlaps(occupied)) {
+                add(
+                    piece,
+                    FindingKind::PinsOverlap {
                         pin: Arc::clone(pin),
                         other: Arc::clone(&other.id),
-                    });
-                }
-                others.push((occupied, piece));
-            }
-            None => {
-                let suited = possible_before.entry(Wishes::of(piece)).or_insert_with(|| {
-                    (0..resources.all.len())
-                        .filter(|at| super::suits(piece, &resources.all[*at]).is_ok())
-                        .collect()
-                });
-                if !suited
-                    .iter()
-                    .any(|at| may_use(piece, &resources.all[*at]).is_ok())
-                {
-                    add(FindingKind::NoResource);
-                }
+                    },
+                );
             }
         }
+        others.extend(
+            item.iter()
+                .map(|piece| (occupied(piece, &resources.all[at]), *piece)),
+        );
     }
     found
 }

@@ -9,16 +9,21 @@
 mod finding;
 mod hours;
 mod piece;
+mod repeats;
 mod resources;
 mod stated;
 
 pub(crate) use finding::Wishes;
 pub use finding::{Finding, FindingKind, findings};
 pub use hours::{Closure, Days, Hours, Opening, subtract};
-pub use piece::{Piece, Unfit, least_buffers, may_use, occupied, suits, suits_if_named};
+pub use piece::{
+    Piece, Unfit, all_may_use, items, itself, least_buffers, may_use, occupied, suits,
+    suits_if_named,
+};
+pub use repeats::{Dated, Differing, Except, Repeats, RepeatsError};
 pub(crate) use resources::member_number;
 pub use resources::{Resource, Resources};
-pub use stated::{Common, Count, Kind, Listed, Named, Noun, Request, Settings, TimeStated};
+pub use stated::{Common, Count, Kind, Listed, Named, Noun, Prefer, Request, Settings, TimeStated};
 
 use crate::lookup::FastMap;
 use std::sync::Arc;
@@ -110,7 +115,8 @@ impl Timetable {
         let same = before.span() == now.span()
             && (before.setup, before.turnaround) == (now.setup, now.turnaround)
             && before.withdrawn == now.withdrawn
-            && (&before.pin, &before.only, &before.never) == (&now.pin, &now.only, &now.never);
+            && (&before.pin, &before.only, &before.never) == (&now.pin, &now.only, &now.never)
+            && (&before.repeats, before.together) == (&now.repeats, now.together);
         if self.resources.open_ended && !same {
             self.refresh();
         }
@@ -137,9 +143,71 @@ impl Timetable {
         self.refresh();
     }
 
-    /// Every piece there is to place or has been withdrawn, in file order.
+    /// Every piece there is to place or has been withdrawn, in file order; the dates of a
+    /// request one after the other.
     pub fn pieces(&self) -> Vec<Piece> {
-        self.requests.iter().map(Piece::of_request).collect()
+        let mut pieces = Vec::with_capacity(self.requests.len());
+        for request in &self.requests {
+            match &request.repeats {
+                None => pieces.push(Piece::of_request(request)),
+                Some(repeats) => {
+                    let dates = 0..repeats.dates().len();
+                    pieces.extend(dates.map(|date| Piece::of_date(request, repeats, date)));
+                }
+            }
+        }
+        pieces
+    }
+
+    /// The request of which an id names a date, and that date's place.
+    pub fn occurrence(&self, id: &str) -> Option<(usize, usize)> {
+        let (request, date) = id.split_once('@')?;
+        let at = self.position(request)?;
+        let repeats = self.requests[at].repeats.as_ref()?;
+        Some((at, repeats.date(date)?))
+    }
+
+    /// The piece of that id.
+    pub fn piece(&self, id: &str) -> Option<Piece> {
+        if let Some((at, date)) = self.occurrence(id) {
+            let request = &self.requests[at];
+            let repeats = request.repeats.as_ref()?;
+            return Some(Piece::of_date(request, repeats, date));
+        }
+        let request = self.request(id).filter(|request| request.repeats.is_none());
+        request.map(Piece::of_request)
+    }
+
+    /// How many tables of what differs on a date there are.
+    pub fn differing_tables(&self) -> usize {
+        let repeating = self.requests.iter().filter_map(|r| r.repeats.as_ref());
+        repeating.map(|repeats| repeats.differing.len()).sum()
+    }
+
+    /// Numbers the tables of what differs on a date anew after those at `gone` went.
+    pub(crate) fn without_tables(&mut self, gone: &[usize]) {
+        if gone.is_empty() {
+            return;
+        }
+        for request in &mut self.requests {
+            let Some(repeats) = request.repeats.as_ref().filter(|r| !r.differing.is_empty()) else {
+                continue;
+            };
+            let mut repeats = Repeats::clone(repeats);
+            for differing in &mut repeats.differing {
+                differing.table -= gone.iter().filter(|at| **at < differing.table).count();
+            }
+            Arc::make_mut(request).repeats = Some(Arc::new(repeats));
+        }
+    }
+
+    /// The table of what differs on a date at that place of the file, and its request.
+    pub fn differing(&self, table: usize) -> Option<(&Arc<Request>, &Differing)> {
+        self.requests.iter().find_map(|request| {
+            let differing = request.repeats.as_ref()?.differing.iter();
+            let mut differing = differing.filter(|differing| differing.table == table);
+            Some((request, differing.next()?))
+        })
     }
 
     /// The kind that grows as needed of which an id names a member, used or not.

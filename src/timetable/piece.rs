@@ -1,14 +1,13 @@
 //! Pieces, and which resource may take which.
 
-use super::{Request, Resource, Settings, Timetable};
-use crate::clock::Span;
+use super::{Repeats, Request, Resource, Settings, Timetable};
+use crate::clock::{Instant, Span};
 use std::sync::Arc;
 
-/// What is placed. At present every request is one piece; occurrences and parts will be
-/// pieces with an id, time, pin and size of their own.
+/// What is placed: a request, or one of its dates.
 #[derive(Clone, Debug)]
 pub struct Piece {
-    /// Its id: the request's.
+    /// Its id: the request's, or with the date (`chem-101@2027-01-11`).
     pub id: Arc<str>,
     /// The request it comes from.
     pub request: Arc<Request>,
@@ -22,6 +21,8 @@ pub struct Piece {
     pub withdrawn: bool,
     /// Seats it takes.
     pub size: Option<u64>,
+    /// Its start by the rule, when it is one of several dates.
+    pub dated: Option<Instant>,
 }
 
 impl Piece {
@@ -35,7 +36,40 @@ impl Piece {
             fastened: request.fastened,
             withdrawn: request.withdrawn,
             size: request.size,
+            dated: None,
         }
+    }
+
+    /// One date of a request that repeats.
+    pub fn of_date(request: &Arc<Request>, repeats: &Repeats, date: usize) -> Piece {
+        let dated = &repeats.dates()[date];
+        let mut piece = Piece {
+            id: Arc::clone(&dated.id),
+            span: Span::lasting(dated.start, request.length),
+            dated: Some(dated.start),
+            ..Piece::of_request(request)
+        };
+        if let Some(differs) = repeats.differs(date) {
+            let start = differs.start.unwrap_or(dated.start);
+            piece.span = Span::lasting(start, differs.length.unwrap_or(request.length));
+            if differs.pin.is_some() {
+                piece.pin.clone_from(&differs.pin);
+            }
+            piece.fastened |= differs.fastened;
+            piece.withdrawn |= differs.withdrawn;
+        }
+        piece
+    }
+
+    /// Whether it stays with the other dates of its request.
+    pub fn together(&self) -> bool {
+        self.request.together && self.dated.is_some()
+    }
+
+    /// Whether it may start at that moment.
+    pub fn start_allowed(&self, at: Instant, settings: &Settings) -> bool {
+        self.request
+            .start_allowed(at, self.span.start, self.dated, settings)
     }
 
     /// Whether it began before the moment up to which everything is settled.
@@ -68,6 +102,48 @@ pub enum Unfit {
     Closed(Option<Arc<str>>),
     /// Not open throughout.
     NotOpen,
+    /// Its dates must stay together, and these two overlap on it.
+    Itself(Arc<str>, Arc<str>),
+    /// It stays with its other dates, and for this one something is in the way.
+    Other(Arc<str>, Box<Unfit>),
+}
+
+/// The items that pieces form, as ranges of `pieces` (withdrawn ones left out by the
+/// caller): dates that stay together are one, everything else is one of its own.
+pub fn items<P: std::borrow::Borrow<Piece>>(pieces: &[P]) -> Vec<std::ops::Range<usize>> {
+    let mut items: Vec<std::ops::Range<usize>> = Vec::with_capacity(pieces.len());
+    for (at, piece) in pieces.iter().enumerate() {
+        let piece: &Piece = piece.borrow();
+        let with = items.last_mut().filter(|last| {
+            let before: &Piece = pieces[last.start].borrow();
+            piece.together() && Arc::ptr_eq(&before.request, &piece.request)
+        });
+        match with {
+            Some(last) => last.end = at + 1,
+            None => items.push(at..at + 1),
+        }
+    }
+    items
+}
+
+/// Two dates of one item that overlap on a resource, buffers included.
+pub fn itself<'p, P: std::borrow::Borrow<Piece>>(
+    item: &'p [P],
+    resource: &Resource,
+) -> Option<(&'p Piece, &'p Piece)> {
+    if item.len() < 2 {
+        return None;
+    }
+    let mut by_start: Vec<(Span, &Piece)> = item
+        .iter()
+        .map(|piece| (occupied(piece.borrow(), resource), piece.borrow()))
+        .collect();
+    by_start.sort_unstable_by_key(|(span, _)| *span);
+    // By start, the first two that overlap are neighbours.
+    by_start
+        .windows(2)
+        .find(|pair| pair[0].0.overlaps(pair[1].0))
+        .map(|pair| (pair[0].1, pair[1].1))
 }
 
 /// The time the piece would keep the resource occupied, buffers included; the request's
@@ -139,6 +215,27 @@ pub fn may_use(piece: &Piece, resource: &Resource) -> Result<Span, Unfit> {
         return Err(Unfit::NotOpen);
     }
     Ok(span)
+}
+
+/// Whether pieces that stay together may all use the resource at their times.
+///
+/// # Errors
+/// The first reason against it.
+pub fn all_may_use<P: std::borrow::Borrow<Piece>>(
+    item: &[P],
+    resource: &Resource,
+) -> Result<(), Unfit> {
+    for (at, piece) in item.iter().enumerate() {
+        let piece: &Piece = piece.borrow();
+        may_use(piece, resource).map_err(|because| match at {
+            0 => because,
+            _ => Unfit::Other(Arc::clone(&piece.id), Box::new(because)),
+        })?;
+    }
+    match itself(item, resource) {
+        Some((one, other)) => Err(Unfit::Itself(Arc::clone(&one.id), Arc::clone(&other.id))),
+        None => Ok(()),
+    }
 }
 
 /// The piece's span with its least buffers over the resources it may use: what load,

@@ -1,6 +1,6 @@
 //! The resources there are: named ones, members of kinds, and those made as needed.
 
-use super::{Closure, Common, Count, Hours, Kind, Listed, Named, Opening, Timetable};
+use super::{Closure, Common, Count, Hours, Kind, Listed, Named, Opening, Piece, Timetable};
 use crate::clock::{DAY, Instant, Span};
 use crate::lookup::FastMap;
 use std::collections::{HashMap, HashSet};
@@ -111,11 +111,17 @@ struct Making<'a> {
 
 impl<'a> Making<'a> {
     fn new(timetable: &'a Timetable) -> Making<'a> {
-        let starts = timetable.requests.iter().map(|request| request.span());
         let (mut first, mut last) = (Instant(i64::MAX), Instant(i64::MIN));
-        for span in starts {
+        let mut seen = |span: Span| {
             first = first.min(span.start);
             last = last.max(span.end);
+        };
+        for request in &timetable.requests {
+            match &request.repeats {
+                None => seen(request.span()),
+                Some(repeats) => (0..repeats.dates().len())
+                    .for_each(|date| seen(Piece::of_date(request, repeats, date).span)),
+            }
         }
         if first > last {
             (first, last) = (Instant(0), Instant(0));
@@ -183,49 +189,35 @@ impl<'a> Making<'a> {
     fn needed(&self, kind: &Kind) -> Vec<u32> {
         let number = |id: &str| member_number(&kind.id, id);
         let mut stated: HashSet<u32> = HashSet::new();
-        let mut ends: Vec<(Instant, i32)> = Vec::new();
         let settings = &self.timetable.settings;
-        for request in self
-            .timetable
-            .requests
-            .iter()
-            .filter(|request| !request.withdrawn)
-        {
-            let names = request
-                .only
-                .iter()
-                .chain(&request.never)
-                .chain(&request.pin);
-            stated.extend(names.filter_map(|name| number(name)));
-            let setup = request
-                .setup
-                .or(kind.common.setup)
-                .unwrap_or(settings.setup);
-            let turnaround = request
+        let occupied = |piece: &Piece| {
+            let own = &piece.request;
+            let setup = own.setup.or(kind.common.setup).unwrap_or(settings.setup);
+            let turnaround = own
                 .turnaround
                 .or(kind.common.turnaround)
                 .unwrap_or(settings.turnaround);
-            let span = request.span().widened(setup, turnaround);
-            ends.push((span.start, 1));
-            ends.push((span.end, -1));
+            piece.span.widened(setup, turnaround)
+        };
+        let mut pieces = self.timetable.pieces();
+        pieces.retain(|piece| !piece.withdrawn);
+        for piece in &pieces {
+            let request = &piece.request;
+            let names = request.only.iter().chain(&request.never).chain(&piece.pin);
+            stated.extend(names.filter_map(|name| number(name)));
         }
+        let spans: Vec<Span> = pieces.iter().map(occupied).collect();
+        let most = match pieces.iter().any(Piece::together) {
+            false => most_at_once(&spans),
+            true => first_fit(&super::items(&pieces), &spans),
+        };
         stated.extend(
             self.timetable
                 .named
                 .iter()
                 .filter_map(|named| number(&named.id)),
         );
-        // Ends sort before starts at the same moment: back to back is no overlap.
-        ends.sort_unstable();
-        let (mut load, mut most) = (0, 0);
-        for (_, step) in ends {
-            load += step;
-            most = most.max(load);
-        }
-        let mut numbers: Vec<u32> = (1..)
-            .filter(|n| !stated.contains(n))
-            .take(most as usize)
-            .collect();
+        let mut numbers: Vec<u32> = (1..).filter(|n| !stated.contains(n)).take(most).collect();
         numbers.extend(stated);
         numbers.sort_unstable();
         numbers
@@ -281,4 +273,46 @@ fn inherit(own: &Common, kind: &Common) -> Common {
         open: own.open.clone().or_else(|| kind.open.clone()),
         closed: own.closed.clone().or_else(|| kind.closed.clone()),
     }
+}
+
+/// The largest number of spans at one moment.
+fn most_at_once(spans: &[Span]) -> usize {
+    let mut ends: Vec<(Instant, i32)> = Vec::with_capacity(2 * spans.len());
+    for span in spans {
+        ends.push((span.start, 1));
+        ends.push((span.end, -1));
+    }
+    // Ends sort before starts at the same moment: back to back is no overlap.
+    ends.sort_unstable();
+    let (mut load, mut most) = (0, 0);
+    for (_, step) in ends {
+        load += step;
+        most = most.max(load);
+    }
+    most as usize
+}
+
+/// How many resources the items take when each goes on the first that is free for all of
+/// its spans: as many as any plan could need, where items of several spans may need more
+/// than ever run at once.
+fn first_fit(items: &[std::ops::Range<usize>], spans: &[Span]) -> usize {
+    let mut rows: Vec<std::collections::BTreeMap<Instant, Instant>> = Vec::new();
+    for item in items {
+        let free = |row: &std::collections::BTreeMap<Instant, Instant>| {
+            spans[item.clone()].iter().all(|span| {
+                let before = row.range(..span.end).next_back();
+                before.is_none_or(|(_, end)| *end <= span.start)
+            })
+        };
+        let at = rows.iter().position(free).unwrap_or_else(|| {
+            rows.push(std::collections::BTreeMap::new());
+            rows.len() - 1
+        });
+        rows[at].extend(
+            spans[item.clone()]
+                .iter()
+                .map(|span| (span.start, span.end)),
+        );
+    }
+    rows.len()
 }

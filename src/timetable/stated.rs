@@ -1,6 +1,6 @@
 //! The statements themselves, as in the file.
 
-use super::{Closure, Opening};
+use super::{Closure, Opening, Repeats};
 use crate::clock::{Instant, Span, Zone};
 use std::sync::Arc;
 
@@ -34,6 +34,28 @@ pub struct Settings {
     pub move_fee: u32,
     /// Pieces that began before it neither move nor relocate.
     pub settled_until: Option<Instant>,
+    /// What comes first where fewest resources and fewest changes pull apart.
+    pub prefer: Prefer,
+}
+
+/// Which of two aims comes first once as much as possible has its place.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
+pub enum Prefer {
+    /// Fewest resources, then fewest changes.
+    #[default]
+    Count,
+    /// Fewest changes, then fewest resources.
+    Changes,
+}
+
+impl Prefer {
+    /// Its name in the file.
+    pub fn name(self) -> &'static str {
+        match self {
+            Prefer::Count => "count",
+            Prefer::Changes => "changes",
+        }
+    }
 }
 
 impl Settings {
@@ -52,6 +74,7 @@ impl Settings {
             leeway: 0,
             move_fee: 30,
             settled_until: None,
+            prefer: Prefer::Count,
         }
     }
 }
@@ -164,6 +187,10 @@ pub struct Request {
     pub setup: Option<i64>,
     /// Seconds kept free after.
     pub turnaround: Option<i64>,
+    /// How it repeats, if it does.
+    pub repeats: Option<Arc<Repeats>>,
+    /// All its occurrences on one resource.
+    pub together: bool,
 }
 
 impl Request {
@@ -188,25 +215,38 @@ impl Request {
             withdrawn: false,
             setup: None,
             turnaround: None,
+            repeats: None,
+            together: false,
         }
     }
 
-    /// Its own time, without buffers.
+    /// Its own time, without buffers; of one that repeats, the first as the rule gives it.
     pub fn span(&self) -> Span {
         Span::lasting(self.start, self.length)
     }
 
-    /// Whether the request may start at that moment by its windows, or by the leeway when
-    /// it has none; its present start is always allowed.
-    pub fn start_allowed(&self, at: Instant, settings: &Settings) -> bool {
-        if at == self.start {
+    /// Whether a piece of the request that now starts at `present` may start at that moment
+    /// by its windows, or by the leeway when it has none; its present start is always
+    /// allowed. Windows are meant for the first start; those of a date (`dated` is its start
+    /// by the rule) lie as far from it on the clock.
+    pub fn start_allowed(
+        &self,
+        at: Instant,
+        present: Instant,
+        dated: Option<Instant>,
+        settings: &Settings,
+    ) -> bool {
+        if at == present {
             return true;
         }
         if self.may_start.is_empty() {
-            return (at - self.start).abs() <= settings.leeway;
+            return (at - present).abs() <= settings.leeway;
         }
-        self.may_start
-            .iter()
-            .any(|window| window.start <= at && at <= window.end)
+        let zone = settings.zone;
+        let shift = dated.map(|dated| zone.civil(dated) - zone.civil(self.start));
+        self.may_start.iter().any(|window| {
+            let here = |at: Instant| shift.map_or(at, |shift| zone.lenient(zone.civil(at) + shift));
+            here(window.start) <= at && at <= here(window.end)
+        })
     }
 }

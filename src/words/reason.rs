@@ -3,8 +3,9 @@
 use super::{count_of, list};
 use crate::claim::{Reason, Unplaced};
 use crate::text::clean;
-use crate::timetable::{Finding, FindingKind, Piece, Timetable, Unfit, may_use};
+use crate::timetable::{Finding, FindingKind, Piece, Timetable, Unfit, all_may_use};
 use std::collections::BTreeMap;
+use std::sync::Arc;
 
 /// Why one resource cannot take a piece.
 pub fn unfit(unfit: &Unfit) -> String {
@@ -17,6 +18,10 @@ pub fn unfit(unfit: &Unfit) -> String {
         Unfit::Closed(Some(because)) => format!("it is closed then ({})", clean(because)),
         Unfit::Closed(None) => "it is closed then".into(),
         Unfit::NotOpen => "it is not open then".into(),
+        Unfit::Itself(one, other) => {
+            format!("{one} and {other} must stay together and overlap on it")
+        }
+        Unfit::Other(piece, because) => format!("for {piece} {}", self::unfit(because)),
     }
 }
 
@@ -29,23 +34,38 @@ pub fn unplaced(timetable: &Timetable, unplaced: &Unplaced) -> String {
         Reason::PinTaken { pin, by } => format!("only {pin} may take it, and {by} has it then"),
         Reason::AllTaken => format!("every {} that may take it is taken then", clean(&noun.one)),
         Reason::NoResource => {
-            let piece = timetable.request(&unplaced.piece).map(Piece::of_request);
-            piece.map_or_else(
-                || "it is unknown".into(),
-                |piece| no_resource(timetable, &piece),
-            )
+            let item = item_of(timetable, &unplaced.piece);
+            match item.is_empty() {
+                true => "it is unknown".into(),
+                false => no_resource(timetable, &item),
+            }
         }
     }
 }
 
-/// Why no resource at all may take a piece: the reasons, counted.
-fn no_resource(timetable: &Timetable, piece: &Piece) -> String {
+/// The piece of that id, with the dates that it stays together with after it.
+fn item_of(timetable: &Timetable, id: &str) -> Vec<Piece> {
+    let Some(piece) = timetable.piece(id) else {
+        return Vec::new();
+    };
+    let mut item = vec![piece];
+    let request = Arc::clone(&item[0].request);
+    if let Some(repeats) = request.repeats.as_ref().filter(|_| request.together) {
+        let dates = (0..repeats.dates().len()).map(|at| Piece::of_date(&request, repeats, at));
+        item.extend(dates.filter(|date| !date.withdrawn && *date.id != *id));
+    }
+    item
+}
+
+/// Why no resource at all may take a piece (or pieces that stay together): the reasons,
+/// counted.
+fn no_resource(timetable: &Timetable, item: &[Piece]) -> String {
     let noun = &timetable.settings.noun;
     let resources = timetable.resources();
-    if let Some(pin) = &piece.pin {
+    if let Some(pin) = item.iter().find_map(|piece| piece.pin.as_ref()) {
         let because = resources
             .get(pin)
-            .and_then(|resource| may_use(piece, resource).err());
+            .and_then(|resource| all_may_use(item, resource).err());
         return match because {
             Some(because) => format!("it is pinned on {pin}, but {}", unfit(&because)),
             None => format!("it must stay on {pin}"),
@@ -53,13 +73,29 @@ fn no_resource(timetable: &Timetable, piece: &Piece) -> String {
     }
     let mut reasons: BTreeMap<String, Vec<&str>> = BTreeMap::new();
     for resource in &resources.all {
-        if let Err(because) = may_use(piece, resource) {
+        if let Err(because) = all_may_use(item, resource) {
+            // Of pieces that stay together one is enough to rule it out.
+            let (because, when) = match because {
+                Unfit::Other(piece, because) => {
+                    let date = piece
+                        .split_once('@')
+                        .map_or("", |(_, date)| date)
+                        .to_string();
+                    (*because, format!(" on {date}"))
+                }
+                because if item.len() > 1 => {
+                    let date = item[0].id.split_once('@').map_or("", |(_, date)| date);
+                    (because, format!(" on {date}"))
+                }
+                because => (because, " then".into()),
+            };
             let short = match because {
                 Unfit::TooSmall { size, .. } => format!("with fewer than {size} seats"),
                 Unfit::Lacks(need) => format!("without {}", clean(&need)),
-                Unfit::Closed(_) => "closed then".into(),
-                Unfit::NotOpen => "not open then".into(),
-                Unfit::NotInOnly | Unfit::InNever | Unfit::Pinned(_) => {
+                Unfit::Closed(_) => format!("closed{when}"),
+                Unfit::NotOpen => format!("not open{when}"),
+                Unfit::Itself(..) => "would have to take two of its dates at once".into(),
+                Unfit::Other(..) | Unfit::NotInOnly | Unfit::InNever | Unfit::Pinned(_) => {
                     "ruled out by the request".into()
                 }
             };
@@ -97,11 +133,11 @@ pub fn finding(timetable: &Timetable, finding: &Finding) -> String {
         FindingKind::PinsOverlap { pin, other } => {
             format!("{piece} and {other} are both pinned on {pin} and overlap")
         }
+        FindingKind::PinsApart { pin, other } => format!(
+            "{piece} is pinned on {pin}, but must stay together with {other}, which is pinned elsewhere"
+        ),
         FindingKind::NoResource => {
-            let known = timetable.request(piece).map(Piece::of_request);
-            let because = known
-                .map(|piece| no_resource(timetable, &piece))
-                .unwrap_or_default();
+            let because = no_resource(timetable, &item_of(timetable, piece));
             format!(
                 "{piece} has no possible {}: {because}",
                 clean(&timetable.settings.noun.one)

@@ -2,7 +2,7 @@
 
 use crate::audit::{Knowledge, Receipt};
 use crate::clock::{Instant, Resolved, Span, Zone};
-use crate::overlap::Peak;
+use crate::overlap::Load;
 use crate::text::clean;
 use crate::timetable::Noun;
 
@@ -71,10 +71,16 @@ pub fn state_name(knowledge: Knowledge) -> &'static str {
     }
 }
 
-/// The largest clique and when it is reached.
-pub fn peaks(clique: usize, peaks: &[Peak], zone: Zone) -> String {
+/// The largest clique and when it is reached; one that is larger than any load has no
+/// moment of its own.
+pub fn peaks(clique: usize, load: &Load, zone: Zone) -> String {
+    let peaks = load.peaks();
     let Some(first) = peaks.first() else {
         return "nothing overlaps".into();
+    };
+    let clique = match clique > load.most {
+        true => format!("{clique} over different times, {} at once", load.most),
+        false => clique.to_string(),
     };
     let more = match peaks.len() {
         1 => String::new(),

@@ -39,8 +39,10 @@ pub(crate) fn disjoint(problem: &Problem) -> Vec<HallViolation> {
             .flat_map(|(_, items)| items.iter().copied())
             .filter(|item| !taken[*item]);
         let mut inside: Vec<usize> = inside.collect();
-        inside.sort_unstable_by_key(|item| problem.items[*item].core);
-        sweep(problem, &inside, room, set, &mut taken, &mut found);
+        let units = inside.drain(..).flat_map(|item| problem.unit_places(item));
+        let mut units: Vec<usize> = units.collect();
+        units.sort_unstable_by_key(|unit| problem.units[*unit].core);
+        sweep(problem, &units, room, set, &mut taken, &mut found);
     }
     found
 }
@@ -57,55 +59,55 @@ fn subset(small: &[u32], large: &[u32]) -> bool {
     small.len() <= large.len() && small.iter().all(|class| large.binary_search(class).is_ok())
 }
 
-/// Goes through `items` by start and takes out a violation whenever too many run at once,
+/// Goes through `units` by start and takes out a violation whenever too many run at once,
 /// at the moment when most of them do: just before one of them ends.
 fn sweep(
     problem: &Problem,
-    items: &[usize],
+    units: &[usize],
     room: usize,
     set: &[u32],
     taken: &mut [bool],
     found: &mut Vec<HallViolation>,
 ) {
     let mut running: Vec<usize> = Vec::new();
-    let mut take = |running: &mut Vec<usize>| {
+    let core = |unit: usize| problem.units[unit].core;
+    let item = |unit: usize| problem.units[unit].item as usize;
+    let mut take = |running: &mut Vec<usize>, taken: &mut [bool]| {
         // All of them run when the last of them has started.
-        if let Some(at) = running
-            .iter()
-            .map(|item| problem.items[*item].core.start)
-            .max()
-        {
+        if let Some(at) = running.iter().map(|unit| core(*unit).start).max() {
             found.push(violation(problem, running, set, at));
         }
-        for item in running.drain(..) {
-            taken[item] = true;
+        for unit in running.drain(..) {
+            taken[item(unit)] = true;
         }
     };
-    for item in items {
-        let at = problem.items[*item].core.start;
-        let ends = running
-            .iter()
-            .any(|other| problem.items[*other].core.end <= at);
+    for unit in units {
+        let at = core(*unit).start;
+        let ends = running.iter().any(|other| core(*other).end <= at);
         if ends && running.len() > room {
-            take(&mut running);
+            take(&mut running, taken);
         }
-        running.retain(|other| problem.items[*other].core.end > at);
-        running.push(*item);
+        running.retain(|other| core(*other).end > at);
+        // What goes on one resource as a whole counts once.
+        let counted = running.iter().any(|other| item(*other) == item(*unit));
+        if !taken[item(*unit)] && !counted {
+            running.push(*unit);
+        }
     }
     if running.len() > room {
-        take(&mut running);
+        take(&mut running, taken);
     }
 }
 
-fn violation(problem: &Problem, items: &[usize], set: &[u32], at: Instant) -> HallViolation {
+fn violation(problem: &Problem, units: &[usize], set: &[u32], at: Instant) -> HallViolation {
     let members = set
         .iter()
         .flat_map(|class| &problem.classes[*class as usize].members);
     HallViolation {
         at,
-        pieces: items
+        pieces: units
             .iter()
-            .map(|item| Arc::clone(&problem.ids[*item]))
+            .map(|unit| Arc::clone(problem.id_of(*unit)))
             .collect(),
         resources: members
             .map(|r| Arc::clone(&problem.resources[*r as usize]))

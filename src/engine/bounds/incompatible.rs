@@ -22,7 +22,7 @@ pub(crate) fn incompatible(problem: &Problem, a: usize, b: usize) -> bool {
             std::cmp::Ordering::Less => _ = one.next(),
             std::cmp::Ordering::Greater => _ = two.next(),
             std::cmp::Ordering::Equal => {
-                if !problem.occupied(a, **x).overlaps(problem.occupied(b, **x)) {
+                if !problem.conflict(a, b, **x) {
                     return false;
                 }
                 one.next();
@@ -71,14 +71,12 @@ pub(crate) fn by_groups(problem: &Problem) -> Vec<usize> {
     }
     let mut clique = Vec::new();
     for group in groups {
-        let spans: Vec<_> = group.iter().map(|item| problem.items[*item].core).collect();
+        let units = group.iter().flat_map(|item| problem.units(*item));
+        let spans: Vec<_> = units.map(|unit| unit.core).collect();
         if let Some(peak) = load(&spans).peaks().first() {
             let at = peak.span.start;
-            clique.extend(
-                group
-                    .into_iter()
-                    .filter(|item| problem.items[*item].core.contains(at)),
-            );
+            let runs = |item: &usize| problem.units(*item).iter().any(|u| u.core.contains(at));
+            clique.extend(group.into_iter().filter(runs));
         }
     }
     clique

@@ -4,6 +4,7 @@
 use super::incompatible;
 use super::prices::Prices;
 use crate::claim::{Case, FloorProof, OutPrices};
+use crate::clock::Span;
 use crate::engine::exact::cases::{self, Outcome};
 use crate::engine::plans::Assignment;
 use crate::engine::{Problem, Stopper};
@@ -240,18 +241,30 @@ impl<'a> Ladder<'a> {
         let mut parts = Vec::new();
         if let Some((prices, _)) = self.prices.as_ref().and_then(Prices::best) {
             let mut dear = all.clone();
-            dear.sort_by(|a, b| prices[*b].total_cmp(&prices[*a]));
+            let price =
+                |item: &usize| -> f64 { prices[self.problem.unit_places(*item)].iter().sum() };
+            dear.sort_by(|a, b| price(b).total_cmp(&price(a)));
             dear.truncate(PART);
-            dear.retain(|item| prices[*item] > 0.01);
+            dear.retain(|item| price(item) > 0.01);
             dear.sort_unstable();
             parts.push(dear);
         }
         let mut by_start = all;
-        by_start.sort_by_key(|item| self.problem.items[*item].core);
+        // From the first unit to the last.
+        let hull = |item: usize| {
+            let units = self.problem.units(item);
+            let end = units.iter().map(|unit| unit.core.end).max();
+            let core = self.problem.items[item].core;
+            Span {
+                start: core.start,
+                end: end.unwrap_or(core.end),
+            }
+        };
+        by_start.sort_by_key(|item| hull(*item));
         let mut together: Vec<Vec<usize>> = Vec::new();
         let mut end = None;
         for item in by_start {
-            let core = self.problem.items[item].core;
+            let core = hull(item);
             if end.is_none_or(|end| end <= core.start) {
                 together.push(Vec::new());
             }
@@ -262,8 +275,8 @@ impl<'a> Ladder<'a> {
         }
         together.retain(|part| part.len() <= PART);
         let load = |part: &Vec<usize>| {
-            let spans = part.iter().map(|item| self.problem.items[*item].core);
-            crate::overlap::largest_load(&spans.collect::<Vec<_>>())
+            let units = part.iter().flat_map(|item| self.problem.units(*item));
+            crate::overlap::largest_load(&units.map(|unit| unit.core).collect::<Vec<_>>())
         };
         together.sort_by_cached_key(|part| std::cmp::Reverse(load(part)));
         together.truncate(MOST_PARTS);
@@ -286,7 +299,7 @@ impl<'a> Ladder<'a> {
                 let pieces = search.best.iter();
                 return Some(FloorProof::Incompatible {
                     pieces: pieces
-                        .map(|item| Arc::clone(&self.problem.ids[*item]))
+                        .map(|item| Arc::clone(self.problem.name(*item)))
                         .collect(),
                 });
             }

@@ -9,6 +9,7 @@
 //! scheduling; Kleinberg, Tardos 2006, 6.1).
 
 use crate::engine::Problem;
+use crate::engine::problem::Unit;
 use std::sync::Arc;
 
 /// The takers of a class by the end of what they occupy.
@@ -65,10 +66,10 @@ fn chain(members: u32, forced: bool, takers: &[(i64, i64, u32)]) -> Chain {
 impl Chains {
     pub(super) fn of(problem: &Problem) -> Chains {
         let mut takers: Vec<Vec<(i64, i64, u32)>> = vec![Vec::new(); problem.classes.len()];
-        for item in 0..problem.items.len() {
-            for class in problem.choices(item) {
-                let span = problem.occupied(item, *class);
-                takers[*class as usize].push((span.end.0, span.start.0, item as u32));
+        for (at, unit) in problem.units.iter().enumerate() {
+            for class in problem.choices(unit.item as usize) {
+                let span = problem.occupied(at, *class);
+                takers[*class as usize].push((span.end.0, span.start.0, at as u32));
             }
         }
         let list = takers.into_iter().zip(&problem.classes);
@@ -81,8 +82,10 @@ impl Chains {
             .collect();
         Chains {
             entries: list.iter().map(|chain| chain.items.len()).sum(),
-            usable: (0..problem.items.len())
-                .map(|item| !problem.choices(item).is_empty())
+            usable: problem
+                .units
+                .iter()
+                .map(|unit| !problem.choices(unit.item as usize).is_empty())
                 .collect(),
             list,
             costs: true,
@@ -189,6 +192,8 @@ pub(crate) struct Prices {
     ceiling: f64,
     /// No price may be above this.
     caps: Option<Vec<f64>>,
+    /// Whole prices are rounded down: up, an item could cost more than its weight.
+    down: bool,
 }
 
 /// One run of the volume algorithm.
@@ -206,27 +211,30 @@ struct Ascent {
 }
 
 impl Prices {
-    /// `clique` is the best clique known: one of the starts leans on it.
+    /// A price for every unit of the problem; `clique` is the best clique known (items): one
+    /// of the starts leans on it.
     pub(crate) fn new(problem: &Problem, clique: &[usize]) -> Prices {
         let chains = Chains::of(problem);
-        let count = problem.items.len();
+        let count = problem.units.len();
         let mut mixed = vec![0.0; count];
         // Long pieces fill a resource: a day's worth of them is worth about one.
         let lengths: Vec<f64> = problem
-            .items
+            .units
             .iter()
-            .map(|item| (item.core.end - item.core.start) as f64)
+            .map(|unit| (unit.core.end - unit.core.start) as f64)
             .collect();
         let longest_chain = longest(&chains, &lengths).max(1.0);
         for (price, length) in mixed.iter_mut().zip(&lengths) {
             *price = 0.6 * length / longest_chain;
         }
-        for item in clique {
-            mixed[*item] += 0.4;
-        }
         let mut leaning = vec![0.02; count];
         for item in clique {
-            leaning[*item] = 0.9;
+            let units = problem.unit_places(*item);
+            let share = 1.0 / units.len() as f64;
+            for unit in units {
+                mixed[unit] += 0.4 * share;
+                leaning[unit] = 0.9 * share;
+            }
         }
         let starts = vec![leaning, mixed, vec![0.0; count]];
         Prices::from(chains, starts)
@@ -249,6 +257,7 @@ impl Prices {
             whole: Vec::new(),
             ceiling: f64::INFINITY,
             caps: None,
+            down: false,
         }
     }
 
@@ -258,16 +267,18 @@ impl Prices {
         let mut chains = Chains::of(problem);
         chains.costs = false;
         // What has no choice at all stays out for its whole weight.
-        chains.usable = vec![true; problem.items.len()];
-        let weights: Vec<f64> = problem
-            .items
-            .iter()
-            .map(|item| f64::from(item.weight))
-            .collect();
+        chains.usable = vec![true; problem.units.len()];
+        // The weight of an item is shared out over its units.
+        let share = |unit: &Unit| {
+            let item = unit.item as usize;
+            problem.items[item].weight as f64 / problem.units(item).len() as f64
+        };
+        let weights: Vec<f64> = problem.units.iter().map(share).collect();
         let half = weights.iter().map(|weight| weight / 2.0).collect();
         let starts = vec![vec![0.0; weights.len()], half, weights.clone()];
         Prices {
             caps: Some(weights),
+            down: !problem.single(),
             ..Prices::from(chains, starts)
         }
     }
@@ -415,7 +426,8 @@ impl Prices {
         }
         for unit in UNITS {
             self.whole.clear();
-            let scaled = prices.iter().map(|price| (price * unit as f64).round());
+            let round = if self.down { f64::floor } else { f64::round };
+            let scaled = prices.iter().map(|price| round(price * unit as f64));
             self.whole.extend(scaled.map(|price| price as i64));
             let value = self.chains.count(&self.whole, unit, &mut best);
             if value >= wanted {
@@ -448,7 +460,8 @@ pub(crate) struct Whole {
 impl Whole {
     /// The same with the names of the pieces.
     pub(crate) fn named(&self, problem: &Problem) -> Vec<(Arc<str>, i64)> {
-        let named = |(item, price): &(u32, i64)| (Arc::clone(&problem.ids[*item as usize]), *price);
+        let named =
+            |(unit, price): &(u32, i64)| (Arc::clone(problem.id_of(*unit as usize)), *price);
         self.prices.iter().map(named).collect()
     }
 }

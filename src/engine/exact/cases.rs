@@ -48,17 +48,16 @@ pub(crate) fn refute(
         return Outcome::Open;
     };
     let degree = |item: &u32| {
-        let core = problem.items[*item as usize].core;
         let others = left.items.iter();
         others
-            .filter(|other| problem.items[**other as usize].core.overlaps(core))
+            .filter(|other| problem.overlap(*item as usize, **other as usize))
             .count() as u32
     };
-    let mut moments: Vec<i64> = left
+    let units = left
         .items
         .iter()
-        .map(|item| problem.items[*item as usize].core.start.0)
-        .collect();
+        .flat_map(|item| problem.units(*item as usize));
+    let mut moments: Vec<i64> = units.map(|unit| unit.core.start.0).collect();
     moments.sort_unstable();
     moments.dedup();
     let mut search = Search {
@@ -67,9 +66,8 @@ pub(crate) fn refute(
             .iter()
             .map(|at| {
                 let runs = |item: &usize| {
-                    problem.items[left.items[*item] as usize]
-                        .core
-                        .contains(Instant(*at))
+                    let units = problem.units(left.items[*item] as usize).iter();
+                    units.clone().any(|unit| unit.core.contains(Instant(*at)))
                 };
                 (*at, (0..left.items.len()).filter(runs).collect())
             })
@@ -81,7 +79,7 @@ pub(crate) fn refute(
         stop,
         plan: None,
     };
-    let start = vec![0.0; search.left.items.len()];
+    let start = vec![0.0; search.left.units.len()];
     let pairs: usize = search.left.usable.iter().map(Vec::len).sum();
     search.per_case = (4 * pairs + search.running.len() * search.left.resources.len()) as u64;
     let found = search.refute(0, &start, None);
@@ -107,7 +105,15 @@ struct Search<'a> {
 
 impl Search<'_> {
     fn name(&self, item: usize) -> Arc<str> {
-        Arc::clone(&self.left.problem.ids[self.left.items[item] as usize])
+        Arc::clone(self.left.problem.name(self.left.items[item] as usize))
+    }
+
+    /// The piece of an item that runs at a moment.
+    fn name_at(&self, item: usize, at: Instant) -> Arc<str> {
+        let problem = self.left.problem;
+        let mut units = problem.unit_places(self.left.items[item] as usize);
+        let unit = units.find(|unit| problem.units[*unit].core.contains(at));
+        unit.map_or_else(|| self.name(item), |unit| Arc::clone(problem.id_of(unit)))
     }
 
     /// A refutation of the case at hand; `None` when there is none to be had: then a plan
@@ -182,8 +188,10 @@ impl Search<'_> {
         let width = self.left.resources.len();
         let fresh = self.left.wanted.saturating_sub(1 + self.left.in_use);
         let core = |item: usize| self.left.problem.items[self.left.items[item] as usize].core;
-        // Once no more resources may begin, every moment is as tight.
-        let near = last.filter(|_| fresh > 0).map(core);
+        // Once no more resources may begin, every moment is as tight; what has several units
+        // changes moments far apart.
+        let single = self.left.problem.single();
+        let near = last.filter(|_| fresh > 0 && single).map(core);
         for (at, running) in &self.running {
             if near.is_some_and(|near| {
                 Instant(*at) >= near.end || running.iter().all(|i| core(*i).end <= near.start)
@@ -225,7 +233,10 @@ impl Search<'_> {
     fn shortage(&self, at: i64, pieces: &[usize]) -> Case {
         Case::Short {
             at: Instant(at),
-            pieces: pieces.iter().map(|item| self.name(*item)).collect(),
+            pieces: pieces
+                .iter()
+                .map(|item| self.name_at(*item, Instant(at)))
+                .collect(),
         }
     }
 
@@ -251,7 +262,7 @@ impl Search<'_> {
         if pairs > MOST_PRICED {
             return Err(None);
         }
-        let chains = Chains::left(self.left.items.len(), chains);
+        let chains = Chains::left(self.left.units.len(), chains);
         let mut search = Prices::from(chains, vec![start.to_vec()]);
         for step in 0..PRICE_STEPS {
             self.work += 2 * pairs as u64;
@@ -262,7 +273,10 @@ impl Search<'_> {
                     return Ok(Case::Prices {
                         unit: whole.unit,
                         prices: prices
-                            .map(|(item, price)| (self.name(*item as usize), *price))
+                            .map(|(unit, price)| {
+                                let unit = self.left.units[*unit as usize];
+                                (Arc::clone(self.left.problem.id_of(unit)), *price)
+                            })
                             .collect(),
                     });
                 }

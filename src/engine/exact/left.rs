@@ -15,6 +15,8 @@ pub(super) struct Left<'a> {
     pub(super) problem: &'a Problem,
     /// Items of the part.
     pub(super) items: Vec<u32>,
+    /// Their units, as places in the problem: an item's one after the other.
+    pub(super) units: Vec<usize>,
     /// Resources that any of them may use.
     pub(super) resources: Vec<u32>,
     /// Per place in `items` and in `resources`: pieces put there that are in the way, and
@@ -22,8 +24,11 @@ pub(super) struct Left<'a> {
     blocked: Vec<u16>,
     /// Per place in `items`: places in `resources` it may use.
     pub(super) usable: Vec<Vec<u32>>,
-    /// Per place in `resources`: users with start and end of what they occupy, by start.
+    /// Per place in `resources`: users with start and end of what each of their units
+    /// occupies, by start; the unit's place in `units`.
     users: Vec<Vec<(i64, i64, u32)>>,
+    /// Per place in `units`: the place in `items`.
+    item_of: Vec<u32>,
     longest: Vec<i64>,
     /// Per place in `items`: the place in `resources`, or [`NOWHERE`].
     on: Vec<u32>,
@@ -65,17 +70,23 @@ impl<'a> Left<'a> {
         let mut blocked = vec![1u16; items.len() * width];
         let mut usable = Vec::with_capacity(items.len());
         let mut users: Vec<Vec<(i64, i64, u32)>> = vec![Vec::new(); width];
+        let (mut units, mut item_of) = (Vec::new(), Vec::new());
         for (at, item) in items.iter().enumerate() {
             let mut list: Vec<u32> = Vec::new();
+            let own = problem.unit_places(*item as usize);
             for class in problem.choices(*item as usize) {
-                let span = problem.occupied(*item as usize, *class);
                 for member in &problem.classes[*class as usize].members {
                     let r = place[*member as usize];
                     blocked[at * width + r as usize] = 0;
-                    users[r as usize].push((span.start.0, span.end.0, at as u32));
+                    for (unit, number) in own.clone().zip(units.len() as u32..) {
+                        let span = problem.occupied(unit, *class);
+                        users[r as usize].push((span.start.0, span.end.0, number));
+                    }
                     list.push(r);
                 }
             }
+            item_of.extend(own.clone().map(|_| at as u32));
+            units.extend(own);
             list.sort_unstable();
             usable.push(list);
         }
@@ -92,19 +103,14 @@ impl<'a> Left<'a> {
             holds: vec![0; width],
             in_use: 0,
             items,
+            units,
+            item_of,
             resources,
             blocked,
             usable,
             users,
             wanted,
         })
-    }
-
-    /// What an item occupies on a resource it may use (places).
-    pub(super) fn span(&self, item: usize, r: usize) -> (i64, i64) {
-        let class = self.problem.class_of[self.resources[r] as usize];
-        let span = self.problem.occupied(self.items[item] as usize, class);
-        (span.start.0, span.end.0)
     }
 
     pub(super) fn placed(&self, item: usize) -> Option<usize> {
@@ -161,17 +167,21 @@ impl<'a> Left<'a> {
     }
 
     fn shift(&mut self, item: usize, r: usize, step: u16) {
-        let (start, end) = self.span(item, r);
+        let class = self.problem.class_of[self.resources[r] as usize];
         let users = &self.users[r];
-        let from = users.partition_point(|user| user.0 <= start - self.longest[r]);
         let width = self.resources.len();
-        for (other_start, other_end, other) in &users[from..] {
-            if *other_start >= end {
-                break;
-            }
-            if *other_end > start && *other as usize != item {
-                let cell = &mut self.blocked[*other as usize * width + r];
-                *cell = cell.wrapping_add(step);
+        for span in self.problem.spans_on(self.items[item] as usize, class) {
+            let (start, end) = (span.start.0, span.end.0);
+            let from = users.partition_point(|user| user.0 <= start - self.longest[r]);
+            for (other_start, other_end, other) in &users[from..] {
+                if *other_start >= end {
+                    break;
+                }
+                let other = self.item_of[*other as usize] as usize;
+                if *other_end > start && other != item {
+                    let cell = &mut self.blocked[other * width + r];
+                    *cell = cell.wrapping_add(step);
+                }
             }
         }
     }
@@ -179,15 +189,15 @@ impl<'a> Left<'a> {
     /// Per resource what it holds and who it is left for, by end, for a bound from prices.
     pub(super) fn chains(&self) -> Vec<Held> {
         let chain = |r: usize| {
-            let left = self.users[r].iter().filter(|(_, _, item)| {
-                let item = *item as usize;
+            let left = self.users[r].iter().filter(|(_, _, unit)| {
+                let item = self.item_of[*unit as usize] as usize;
                 match self.placed(item) {
                     Some(on) => on == r,
                     None => self.open(item, r),
                 }
             });
             let mut takers: Vec<(i64, i64, u32)> = left
-                .map(|(start, end, item)| (*end, *start, *item))
+                .map(|(start, end, unit)| (*end, *start, *unit))
                 .collect();
             takers.sort_unstable();
             Held {

@@ -40,6 +40,10 @@ pub fn partition(spans: &[Span]) -> (Vec<u32>, usize) {
 /// no two groups have a class in common, each item occupies the same span wherever it may
 /// go, and the members are enough. The plan is then the best there is.
 pub(crate) fn by_groups(problem: &Problem) -> Option<Assignment> {
+    // What has several stretches makes other graphs than intervals do.
+    if !problem.single() {
+        return None;
+    }
     let mut groups: BTreeMap<&[u32], Vec<usize>> = BTreeMap::new();
     // Most problems are not like that, which shows at the first few items.
     let mut owner: Vec<&[u32]> = vec![&[]; problem.classes.len()];

@@ -85,6 +85,9 @@ struct Around {
     resources: Vec<usize>,
     /// Per resource the end of what stays before, and the start of what stays after.
     edges: Vec<(i64, i64)>,
+    /// Per resource what stays in between, by start: items of several units are left where
+    /// they are.
+    fixed: Vec<Vec<(i64, i64)>>,
 }
 
 /// What is used again from one call to the next.
@@ -243,9 +246,17 @@ impl Tabu<'_> {
             let next = next.filter(|r| !resources.contains(r));
             resources.extend(next.max_by_key(|r| self.exchanges(here, *r)));
         }
+        let several = |item: &u32| self.problem.units(*item as usize).len() > 1;
         let mut items = along;
-        for r in &resources {
-            items.extend(self.rows[*r].iter().map(|(_, _, item)| *item));
+        items.retain(|item| !several(item));
+        let mut fixed = vec![Vec::new(); resources.len()];
+        for (r, fixed) in resources.iter().zip(&mut fixed) {
+            for (start, end, item) in &self.rows[*r] {
+                match several(item) {
+                    true => fixed.push((*start, *end)),
+                    false => items.push(*item),
+                }
+            }
         }
         let key = |item: &u32| (self.problem.items[*item as usize].core, *item);
         items.sort_unstable_by_key(key);
@@ -263,7 +274,7 @@ impl Tabu<'_> {
             items = items[from..items.len().min(from + MOST_PIECES)].to_vec();
             let (first, last) = (key(&items[0]), key(&items[items.len() - 1]));
             for (r, (begin, finish)) in resources.iter().zip(&mut edges) {
-                for (start, end, item) in &self.rows[*r] {
+                for (start, end, item) in self.rows[*r].iter().filter(|(.., i)| !several(i)) {
                     if key(item) < first {
                         *begin = (*begin).max(*end);
                     } else if key(item) > last {
@@ -276,6 +287,7 @@ impl Tabu<'_> {
             items,
             resources,
             edges,
+            fixed,
         }
     }
 
@@ -380,9 +392,15 @@ impl Tabu<'_> {
             let span = |item: &u32| {
                 let choices = self.problem.choices(*item as usize);
                 choices.binary_search(&class).ok()?;
-                let span = self.problem.occupied(*item as usize, class);
+                // What is laid out anew has one unit.
+                let unit = self.problem.unit_places(*item as usize).start;
+                let span = self.problem.occupied(unit, class);
                 let (begin, finish) = around.edges[k];
-                (begin <= span.start.0 && span.end.0 <= finish)
+                let fixed = &around.fixed[k];
+                let next = fixed.partition_point(|(start, _)| *start < span.end.0);
+                let before = fixed[..next].last();
+                let clear = before.is_none_or(|(_, end)| *end <= span.start.0);
+                (clear && begin <= span.start.0 && span.end.0 <= finish)
                     .then_some((span.start.0, span.end.0))
             };
             scratch.spans.clear();
@@ -413,7 +431,8 @@ impl Tabu<'_> {
         scratch.layers.push(0);
         let count = around.resources.len();
         // Where something stays before or after, the resource cannot rest.
-        let stays = |k: &usize| around.edges[*k] != (i64::MIN, i64::MAX);
+        let stays =
+            |k: &usize| around.edges[*k] != (i64::MIN, i64::MAX) || !around.fixed[*k].is_empty();
         let working = (0..count).filter(stays).fold(0, |set, k| set | 1 << k);
         for set in 0u32..1 << count {
             let resting = set.count_ones() as usize;

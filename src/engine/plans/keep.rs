@@ -14,11 +14,8 @@ pub(crate) fn near(problem: &Problem, reference: &Reference) -> Assignment {
             if kept.resource == NONE || kept.changed != changed {
                 continue;
             }
-            let class = problem.class_of[kept.resource as usize];
             if problem.allows(item, kept.resource as usize)
-                && rows
-                    .free(kept.resource, problem.occupied(item, class))
-                    .is_some()
+                && rows.gap(item, kept.resource).is_some()
             {
                 rows.place(item, kept.resource);
             }
@@ -31,7 +28,7 @@ pub(crate) fn near(problem: &Problem, reference: &Reference) -> Assignment {
         return rows.on;
     }
     let takers = takers(problem);
-    rest.sort_by_key(|item| problem.items[*item].span.start);
+    rest.sort_by_key(|item| problem.items[*item].core.start);
     for item in rest {
         rows.place_tightest(item, &takers);
     }

@@ -45,12 +45,25 @@ impl<'a> Rows<'a> {
     /// Puts an item on a resource that is free for it.
     pub(crate) fn place(&mut self, item: usize, resource: u32) {
         let class = self.problem.class_of[resource as usize];
-        let span = self.problem.occupied(item, class);
         let row = &mut self.rows[resource as usize];
         self.used += usize::from(row.is_empty());
-        let at = row.partition_point(|(other, _)| other.start < span.start);
-        row.insert(at, (span, item as u32));
+        for span in self.problem.spans_on(item, class) {
+            let at = row.partition_point(|(other, _)| other.start < span.start);
+            row.insert(at, (span, item as u32));
+        }
         self.on[item] = resource;
+    }
+
+    /// When the resource is free for all of the item: the longest time it would have been
+    /// idle before any of it.
+    pub(crate) fn gap(&self, item: usize, resource: u32) -> Option<i64> {
+        let class = self.problem.class_of[resource as usize];
+        let mut longest = 0;
+        for span in self.problem.spans_on(item, class) {
+            let before = self.free(resource, span)?;
+            longest = longest.max(span.start.0.saturating_sub(before));
+        }
+        Some(longest)
     }
 
     /// Puts the item where it fits tightest: on a resource in use that day rather than one
@@ -59,7 +72,6 @@ impl<'a> Rows<'a> {
     pub(crate) fn place_tightest(&mut self, item: usize, takers: &[usize]) -> bool {
         let mut best: Option<((u8, usize, i64, u32), u32)> = None;
         for class in self.problem.choices(item) {
-            let span = self.problem.occupied(item, *class);
             let mut idle_seen = false;
             for resource in &self.problem.classes[*class as usize].members {
                 let used = self.is_used(*resource);
@@ -67,8 +79,7 @@ impl<'a> Rows<'a> {
                 if !used && std::mem::replace(&mut idle_seen, true) {
                     continue;
                 }
-                if let Some(before) = self.free(*resource, span) {
-                    let gap = span.start.0.saturating_sub(before);
+                if let Some(gap) = self.gap(item, *resource) {
                     let far = match (used, gap) {
                         (true, ..SAME_DAY) => 0,
                         (true, _) => 1,
@@ -117,7 +128,7 @@ fn left_out(problem: &Problem, on: &[u32]) -> u64 {
         .iter()
         .zip(&problem.items)
         .filter(|(resource, _)| **resource == NONE);
-    without.map(|(_, item)| u64::from(item.weight)).sum()
+    without.map(|(_, item)| item.weight).sum()
 }
 
 /// Less weight left out first, then fewer resources.

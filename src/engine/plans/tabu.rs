@@ -19,7 +19,8 @@ const LOOKED_AT: usize = 16;
 /// Weights are halved this often, so that old trouble is forgotten.
 const HALVE_EVERY: u64 = 100_000;
 
-/// A class as the search needs it: who may use it, by start.
+/// A class as the search needs it: who may use it, by start; an item has an entry for each
+/// of its units.
 struct Takers {
     items: Vec<u32>,
     spans: Vec<(i64, i64)>,
@@ -40,15 +41,21 @@ impl Takers {
 /// What a step may do.
 #[derive(Clone, Copy)]
 enum Step {
-    Put { item: u32, resource: u32, at: usize },
-    Rest { resource: u32 },
+    Put {
+        item: u32,
+        resource: u32,
+        choice: usize,
+    },
+    Rest {
+        resource: u32,
+    },
 }
 
 /// The search and its memory; it can be run on and on in slices.
 pub(crate) struct Tabu<'a> {
     pub(super) problem: &'a Problem,
     takers: Vec<Takers>,
-    /// Per item, in the order of its choices: its place in that class's takers.
+    /// Per item, in the order of its choices: the places of its units in that class's takers.
     places: Vec<Vec<u32>>,
     /// Per resource and place: the weight of what is in the way there.
     cost: Vec<Vec<u32>>,
@@ -81,8 +88,9 @@ impl<'a> Tabu<'a> {
         let mut takers: Vec<Vec<(i64, i64, u32)>> = vec![Vec::new(); problem.classes.len()];
         for item in 0..problem.items.len() {
             for class in problem.choices(item) {
-                let span = problem.occupied(item, *class);
-                takers[*class as usize].push((span.start.0, span.end.0, item as u32));
+                let spans = problem.spans_on(item, *class);
+                takers[*class as usize]
+                    .extend(spans.map(|span| (span.start.0, span.end.0, item as u32)));
             }
         }
         let members = problem.classes.iter().map(|class| class.members.len());
@@ -128,7 +136,7 @@ impl<'a> Tabu<'a> {
             weight: problem
                 .items
                 .iter()
-                .map(|item| item.weight.min(1 << 12))
+                .map(|item| item.weight.min(1 << 12) as u32)
                 .collect(),
             unplaced: Vec::new(),
             left_out: 0,
@@ -144,7 +152,7 @@ impl<'a> Tabu<'a> {
     /// Forgets how the weights have grown; to be followed by [`Tabu::aim`].
     pub(crate) fn forget(&mut self) {
         for (weight, item) in self.weight.iter_mut().zip(&self.problem.items) {
-            *weight = item.weight.min(1 << 12);
+            *weight = item.weight.min(1 << 12) as u32;
         }
         self.rest_weight = 1;
     }
@@ -171,7 +179,7 @@ impl<'a> Tabu<'a> {
                 continue;
             }
             self.unplaced.push(item as u32);
-            self.left_out += u64::from(self.problem.items[item].weight);
+            self.left_out += self.problem.items[item].weight;
             if *resource != NONE {
                 self.put(item as u32, *resource);
             }
@@ -301,8 +309,10 @@ impl<'a> Tabu<'a> {
             let item = self.unplaced[pick];
             let own = i64::from(self.weight[item as usize]);
             let choices = self.problem.choices(item as usize);
-            for (class, at) in choices.iter().zip(&self.places[item as usize]) {
-                let at = *at as usize;
+            let units = self.problem.units(item as usize).len();
+            let places = self.places[item as usize].chunks_exact(units);
+            for (choice, (class, places)) in choices.iter().zip(places).enumerate() {
+                let at = places[0] as usize;
                 for resource in &self.problem.classes[*class as usize].members {
                     let r = *resource as usize;
                     let rest = if self.resting[r] {
@@ -310,14 +320,23 @@ impl<'a> Tabu<'a> {
                     } else {
                         0
                     };
-                    let ejected = i64::from(self.cost[r][at]) + rest;
+                    // What is in the way of several units counts several times: dearer than
+                    // it is, and never free when it is not.
+                    let in_the_way: i64 = match places {
+                        [at] => i64::from(self.cost[r][*at as usize]),
+                        _ => places
+                            .iter()
+                            .map(|at| i64::from(self.cost[r][*at as usize]))
+                            .sum(),
+                    };
+                    let ejected = in_the_way + rest;
                     if ejected == 0 || self.until[r][at] <= self.step {
                         offer(
                             ejected - own,
                             Step::Put {
                                 item,
                                 resource: *resource,
-                                at,
+                                choice,
                             },
                             &mut random,
                         );
@@ -345,7 +364,11 @@ impl<'a> Tabu<'a> {
             tabu.step + 2 * waiting + 2 + tabu.random.below(10) as u64
         };
         match step {
-            Step::Put { item, resource, at } => {
+            Step::Put {
+                item,
+                resource,
+                choice,
+            } => {
                 let r = resource as usize;
                 if self.resting[r] {
                     self.resting[r] = false;
@@ -353,11 +376,15 @@ impl<'a> Tabu<'a> {
                     self.rest_until[r] = tenure(self);
                 }
                 let class = self.problem.class_of[r] as usize;
-                let (start, end) = self.takers[class].spans[at];
-                while let Some(other) = self.in_the_way(r, start, end) {
-                    self.eject(other, r);
-                    let place = self.place_of(other, class);
-                    self.until[r][place] = tenure(self);
+                let units = self.problem.units(item as usize).len();
+                for unit in choice * units..(choice + 1) * units {
+                    let place = self.places[item as usize][unit] as usize;
+                    let (start, end) = self.takers[class].spans[place];
+                    while let Some(other) = self.in_the_way(r, start, end) {
+                        self.eject(other, r);
+                        let place = self.places_of(other, class)[0] as usize;
+                        self.until[r][place] = tenure(self);
+                    }
                 }
                 self.put(item, resource);
             }
@@ -366,7 +393,7 @@ impl<'a> Tabu<'a> {
                 let class = self.problem.class_of[r] as usize;
                 while let Some((_, _, other)) = self.rows[r].last().copied() {
                     self.eject(other, r);
-                    let place = self.place_of(other, class);
+                    let place = self.places_of(other, class)[0] as usize;
                     self.until[r][place] = tenure(self);
                 }
                 self.resting[r] = true;
@@ -382,11 +409,12 @@ impl<'a> Tabu<'a> {
         (before.1 > start).then_some(before.2)
     }
 
-    /// The item's place among the takers of a class it may use.
-    fn place_of(&self, item: u32, class: usize) -> usize {
+    /// The places of the item's units among the takers of a class it may use.
+    fn places_of(&self, item: u32, class: usize) -> &[u32] {
         let choices = self.problem.choices(item as usize);
         let at = choices.partition_point(|choice| (*choice as usize) < class);
-        self.places[item as usize][at] as usize
+        let units = self.problem.units(item as usize).len();
+        &self.places[item as usize][at * units..(at + 1) * units]
     }
 
     /// Adds `step` to the cost of everything that overlaps the span on the resource.
@@ -403,29 +431,35 @@ impl<'a> Tabu<'a> {
     pub(super) fn put(&mut self, item: u32, resource: u32) {
         let r = resource as usize;
         let class = self.problem.class_of[r] as usize;
-        let (start, end) = self.takers[class].spans[self.place_of(item, class)];
-        let at = self.rows[r].partition_point(|other| other.0 < start);
-        self.rows[r].insert(at, (start, end, item));
         self.on[item as usize] = resource;
         let weight = self.weight[item as usize];
         self.row_weight[r] += u64::from(weight);
-        self.spread(r, (start, end), weight);
+        for unit in 0..self.problem.units(item as usize).len() {
+            let place = self.places_of(item, class)[unit] as usize;
+            let (start, end) = self.takers[class].spans[place];
+            let at = self.rows[r].partition_point(|other| other.0 < start);
+            self.rows[r].insert(at, (start, end, item));
+            self.spread(r, (start, end), weight);
+        }
         if let Some(at) = self.unplaced.iter().position(|other| *other == item) {
             self.unplaced.swap_remove(at);
-            self.left_out -= u64::from(self.problem.items[item as usize].weight);
+            self.left_out -= self.problem.items[item as usize].weight;
         }
     }
 
     pub(super) fn eject(&mut self, item: u32, r: usize) {
         let class = self.problem.class_of[r] as usize;
-        let span = self.takers[class].spans[self.place_of(item, class)];
         self.rows[r].retain(|(_, _, other)| *other != item);
         self.on[item as usize] = NONE;
         let weight = self.weight[item as usize];
         self.row_weight[r] -= u64::from(weight);
-        self.spread(r, span, weight.wrapping_neg());
+        for unit in 0..self.problem.units(item as usize).len() {
+            let place = self.places_of(item, class)[unit] as usize;
+            let span = self.takers[class].spans[place];
+            self.spread(r, span, weight.wrapping_neg());
+        }
         self.unplaced.push(item);
-        self.left_out += u64::from(self.problem.items[item as usize].weight);
+        self.left_out += self.problem.items[item as usize].weight;
     }
 
     fn halve(&mut self) {
@@ -438,10 +472,11 @@ impl<'a> Tabu<'a> {
         self.row_weight.fill(0);
         for r in 0..self.rows.len() {
             for (start, end, item) in self.rows[r].clone() {
-                let weight = self.weight[item as usize];
-                self.row_weight[r] += u64::from(weight);
-                self.spread(r, (start, end), weight);
+                self.spread(r, (start, end), self.weight[item as usize]);
             }
+        }
+        for (item, r) in self.on.iter().enumerate().filter(|(_, r)| **r != NONE) {
+            self.row_weight[*r as usize] += u64::from(self.weight[item]);
         }
     }
 }

@@ -182,13 +182,16 @@ impl<'a> Marks<'a> {
 
 /// The marks of a piece: `?` not yet safe on the disk, `!` pinned, `=` fastened, `*` moved since opened, `&` clash.
 fn marks(model: &Model, piece: &Piece, marks: &Marks<'_>) -> String {
-    let opened = model.desk.opened().request(&piece.request.id);
-    let moved = opened.is_some_and(|before| before.start != piece.span.start);
+    let opened = model.desk.opened().piece(&piece.id);
+    let moved = opened.is_some_and(|before| before.span.start != piece.span.start);
     [
         ("!", piece.pin.is_some()),
         ("=", piece.fastened),
         ("*", moved),
-        ("?", marks.unsafe_yet.contains(&*piece.request.id)),
+        (
+            "?",
+            marks.unsafe_yet.contains(&*piece.request.id) || marks.unsafe_yet.contains(&*piece.id),
+        ),
         ("&", marks.clashing(piece)),
     ]
     .into_iter()

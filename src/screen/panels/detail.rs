@@ -155,10 +155,10 @@ fn head(model: &Model, piece: &Piece) -> (String, Tone) {
     if piece.fastened {
         states.push("= fastened".into());
     }
-    if let Some(before) = model.desk.opened().request(&piece.request.id)
-        && before.start != piece.span.start
+    if let Some(before) = model.desk.opened().piece(&piece.id)
+        && before.span.start != piece.span.start
     {
-        states.push(format!("* moved from {}", zone.print(before.start)));
+        states.push(format!("* moved from {}", zone.print(before.span.start)));
     }
     if piece.withdrawn {
         states.push("withdrawn".into());
@@ -226,9 +226,9 @@ fn held(model: &Model, carry: &Carry, piece: &Piece) -> (String, Tone) {
 /// What speaks against dropping it here; it may be dropped all the same.
 fn cautions(model: &Model, carry: &Carry, piece: &Piece) -> Vec<(String, Tone)> {
     let mut lines = Vec::new();
-    let opened = model.desk.timetable().request(&piece.request.id);
-    if let Some(request) = opened
-        && !request.start_allowed(carry.start, &model.timetable().settings)
+    let present = model.desk.timetable().piece(&piece.id);
+    if let Some(present) = present
+        && !present.start_allowed(carry.start, &model.timetable().settings)
     {
         lines.push((
             "outside the times it may start; it can be dropped here all the same".to_string(),

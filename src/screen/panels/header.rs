@@ -60,8 +60,8 @@ pub(in crate::screen) fn draw(model: &Model, buffer: &mut Buffer, area: Rect) {
     let (saved, calm) = standing(model);
     if let Some(settled) = settled {
         let load = &settled.survey().load;
-        let mut peaks = words::peaks(load.most, &load.peaks(), settings.zone);
-        if settled.receipt().floor() > load.most {
+        let mut peaks = words::peaks(settled.clique(), load, settings.zone);
+        if settled.receipt().floor() > settled.clique() {
             // What the braces on the board are about.
             let floor = settled.receipt().floor();
             peaks = peaks.replacen(':', &format!(", {{ }} need {floor}:"), 1);
