@@ -300,3 +300,78 @@ fn print(rooms: &[Room], asked: &[Asked], after: i64) -> String {
     }
     text
 }
+
+/// A term of fifteen weeks: `n` weekly requests, each kept together, on `rooms` rooms.
+///
+/// Rooms: seats from the twelve sizes, each offer with chances 50, 35 and 20 %, open Monday
+/// to Friday 08:00 to 20:00, 10 minutes kept free after everything. A hidden plan puts a
+/// request on a random room and a free time there (from 08:00 in steps of 15 minutes; 45,
+/// 60, 90, 105 or 165 minutes): it is as large as half to all of the room, needs each offer
+/// of the room with a chance of 30 %, and one in twenty leaves out a date. So all of it can
+/// be placed; the fewest rooms are not known, only that they are at most `rooms`.
+pub(crate) fn term(n: usize, rooms: usize, seed: u64) -> Made {
+    const LENGTHS: [i64; 5] = [45, 60, 90, 105, 165];
+    let mut dice = Dice(seed);
+    let mut text = "[timetable]\ntitle = \"Term\"\nzone = \"Europe/Lisbon\"\nnoun = [\"room\", \"rooms\"]\nturnaround = \"10m\"\n".to_string();
+    let hall = |dice: &mut Dice| {
+        let offers: Vec<usize> = [50, 35, 20]
+            .into_iter()
+            .enumerate()
+            .filter(|(_, percent)| dice.chance(*percent))
+            .map(|(offer, _)| offer)
+            .collect();
+        (SEATS[dice.below(SEATS.len())], offers)
+    };
+    let halls: Vec<(u32, Vec<usize>)> = (0..rooms).map(|_| hall(&mut dice)).collect();
+    let quoted = |offers: &[usize]| {
+        let names: Vec<String> = offers
+            .iter()
+            .map(|o| format!("\"{}\"", OFFERS[*o]))
+            .collect();
+        names.join(", ")
+    };
+    for (at, (seats, offers)) in halls.iter().enumerate() {
+        let _ = writeln!(
+            text,
+            "\n[[resource]]\nid = \"room-{at}\"\nseats = {seats}\noffers = [{}]\nopen = [{{ days = \"mon-fri\", from = \"08:00\", to = \"20:00\" }}]",
+            quoted(offers)
+        );
+    }
+    let mut taken: Vec<Vec<(i64, i64)>> = vec![Vec::new(); rooms * 5];
+    let mut made = 0;
+    while made < n {
+        let (room, day) = (dice.below(rooms), dice.below(5));
+        let length = LENGTHS[dice.below(5)];
+        let start = 8 * 60 + 15 * dice.below(((12 * 60 - length - 10) / 15 + 1) as usize) as i64;
+        let (seats, offers) = &halls[room];
+        let slots = &mut taken[room * 5 + day];
+        if slots
+            .iter()
+            .any(|(from, to)| start < to + 10 && *from < start + length + 10)
+        {
+            continue;
+        }
+        slots.push((start, start + length));
+        let size = seats / 2 + dice.below((seats / 2) as usize + 1) as u32;
+        let needs: Vec<usize> = offers.iter().copied().filter(|_| dice.chance(30)).collect();
+        // 2027-02-01 is a Monday; no clock changes before the end of March.
+        let _ = write!(
+            text,
+            "\n[[request]]\nid = \"course-{made}\"\nstart = 2027-02-{:02}T{:02}:{:02}:00\nlength = \"{length}m\"\nsize = {size}\nneeds = [{}]\nrepeat = \"FREQ=WEEKLY;COUNT=15\"\ntogether = true\n",
+            1 + day,
+            start / 60,
+            start % 60,
+            quoted(&needs)
+        );
+        if dice.chance(5) {
+            let date = 1 + day + 7 * (1 + dice.below(3));
+            let _ = writeln!(text, "except = [2027-02-{date:02}]");
+        }
+        made += 1;
+    }
+    Made {
+        text,
+        answer: rooms,
+        kind: "term",
+    }
+}

@@ -455,3 +455,26 @@ fn graphs_with_a_known_answer() {
         }
     }
 }
+
+/// A term in which everything is kept together: the engine keeps one week of it, all of it
+/// can be placed, and the plan keeps every request on one room.
+#[test]
+fn equal_weeks_are_recognised() {
+    let read = timetable(&crate::family::term(60, 5, 3).text);
+    let pieces = read.pieces();
+    assert!(pieces.len() > 60 * 14);
+    let problem = Problem::new(&read, &pieces, &HashMap::new());
+    assert_eq!(problem.items.len(), 60);
+    assert!(problem.single(), "{} units", problem.units.len());
+    let settled = solve(&read, 200_000);
+    assert_eq!(settled.receipt().unplaced(), 0);
+    let mut rooms: HashMap<&str, BTreeSet<&str>> = HashMap::new();
+    for placement in &settled.answer().plan.placements {
+        let request = placement.piece.split('@').next().unwrap();
+        rooms
+            .entry(request)
+            .or_default()
+            .insert(&placement.resource);
+    }
+    assert!(rooms.values().all(|rooms| rooms.len() == 1));
+}

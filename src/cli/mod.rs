@@ -280,8 +280,9 @@ fn notes(desk: &crate::desk::Desk, path: &Path) -> String {
     }
     let timetable = desk.timetable();
     for finding in crate::timetable::findings(timetable) {
-        let line = timetable
-            .position(&finding.piece)
+        let request = timetable.occurrence(&finding.piece).map(|(at, _)| at);
+        let line = request
+            .or_else(|| timetable.position(&finding.piece))
             .and_then(|at| desk.document().line_of(&crate::edit::Touched::Request(at)));
         let said = crate::words::finding(timetable, &finding);
         let _ = writeln!(

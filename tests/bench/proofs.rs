@@ -8,6 +8,9 @@
 //!
 //! `cargo bench --bench proofs -- family-N SECONDS [PART-OF-NAME [SEED]]`: twenty timetables
 //! of N requests as `tests/family.rs` describes them, with answers known by construction.
+//!
+//! `cargo bench --bench proofs -- term SECONDS`: five terms of 15 weeks, 2,000 weekly requests
+//! kept together on 150 rooms; the answer is not known, the floor and the gap are of interest.
 #![allow(clippy::unwrap_used, reason = "a benchmark may panic")]
 #![allow(clippy::print_stdout, reason = "a benchmark prints what it measures")]
 
@@ -122,6 +125,21 @@ fn made(n: usize, part: &str) -> impl Iterator<Item = Instance> + '_ {
     .filter(move |instance| instance.name.contains(part))
 }
 
+fn terms() -> impl Iterator<Item = Instance> {
+    (1..6).map(|seed| {
+        let made = family::term(2_000, 150, seed);
+        let read = fewest::document::read("term.toml", made.text.as_bytes());
+        Instance {
+            name: format!("term-{seed}"),
+            timetable: read
+                .unwrap_or_else(|mistakes| panic!("{mistakes}"))
+                .timetable,
+            floor: 0,
+            best: made.answer,
+        }
+    })
+}
+
 /// The published instances, each read when its turn comes; `None` when they are not here.
 fn published(set: &str, part: &str) -> Option<impl Iterator<Item = Instance>> {
     let root = std::env::var_os("FEWEST_DATA")
@@ -159,6 +177,7 @@ fn main() {
     let seed: u64 = args.get(3).map_or(1, |text| text.parse().unwrap());
     let instances: Box<dyn Iterator<Item = Instance>> = match set.strip_prefix("family-") {
         Some(n) => Box::new(made(n.parse().unwrap(), part)),
+        None if set == "term" => Box::new(terms()),
         None => match published(set, part) {
             Some(instances) => Box::new(instances),
             None => return,

@@ -15,7 +15,8 @@ use std::sync::Arc;
 pub(in crate::screen) fn lines(model: &Model) -> Vec<(String, Option<Arc<str>>)> {
     let timetable = model.desk.timetable();
     let line_of = |id: &str| {
-        let at = timetable.position(id)?;
+        let request = timetable.occurrence(id).map(|(at, _)| at);
+        let at = request.or_else(|| timetable.position(id))?;
         model.desk.document().line_of(&Touched::Request(at))
     };
     let at = |id: &str| line_of(id).map_or_else(String::new, |line| format!("line {line}: "));
