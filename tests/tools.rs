@@ -65,6 +65,7 @@ pub(crate) fn job(timetable: &Timetable) -> Job {
         generation: 0,
         timetable: timetable.clone(),
         reference: None,
+        issued: None,
         begun: Arc::default(),
     }
 }

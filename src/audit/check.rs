@@ -1,7 +1,7 @@
 //! The checks themselves. Who may use what is worked out here once more, plainly, rather
 //! than taken from the code that the engine uses.
 
-use super::{Receipt, Refusal, cases};
+use super::{Receipt, Refusal, cases, changes};
 use crate::claim::{Answer, FloorProof, HallViolation, OutPrices, Plan};
 use crate::clock::{Instant, Span};
 use crate::lookup::{FastMap, FastSet};
@@ -44,12 +44,26 @@ pub fn check(timetable: &Timetable, answer: &Answer) -> Result<Receipt, Vec<Refu
         .unplaced
         .iter()
         .filter_map(|unplaced| facts.piece(&unplaced.piece));
+    let unplaced_weight = weights.map(|piece| u64::from(piece.request.weight)).sum();
+    let changes = answer.changes.as_ref().map(|claimed| {
+        changes::check(
+            &facts,
+            &answer.plan,
+            claimed,
+            (in_use, unplaced_weight),
+            &mut refusals,
+        )
+    });
+    if !refusals.is_empty() {
+        return Err(refusals);
+    }
     Ok(Receipt {
         in_use,
         floor,
         clique,
         unplaced: answer.plan.unplaced.len(),
-        unplaced_weight: weights.map(|piece| u64::from(piece.request.weight)).sum(),
+        unplaced_weight,
+        changes,
         unplaced_floor,
         available: timetable.resources().all.len(),
     })
@@ -178,7 +192,7 @@ impl<'a> Facts<'a> {
     }
 
     /// How much it hurts to leave an item out.
-    fn weight(&self, item: usize) -> u64 {
+    pub(super) fn weight(&self, item: usize) -> u64 {
         self.of_item(item)
             .map(|piece| u64::from(piece.request.weight))
             .sum()
@@ -268,7 +282,7 @@ impl<'a> Facts<'a> {
 
     /// The resources that everything the piece stays together with may use, at all of its
     /// times, by their places in the list.
-    fn usable(&self, piece: &Piece) -> Vec<usize> {
+    pub(super) fn usable(&self, piece: &Piece) -> Vec<usize> {
         let item = self.item(piece);
         if self.items.get(item).is_none_or(|pieces| pieces.len() < 2) {
             return self.usable_alone(piece);
@@ -442,7 +456,7 @@ fn together(facts: &Facts<'_>, plan: &Plan, refusals: &mut Vec<Refusal>) {
 }
 
 /// The pieces a bound names, once each, none unknown or withdrawn.
-fn named<'a>(
+pub(super) fn named<'a>(
     facts: &'a Facts<'_>,
     ids: &[Arc<str>],
     refusals: &mut Vec<Refusal>,

@@ -5,12 +5,13 @@
 //! `clock`, `timetable` and `claim`, and nothing above.
 
 mod cases;
+mod changes;
 mod check;
 mod receipt;
 mod refusal;
 
 pub use check::{check, check_floor, check_plan, check_violations};
-pub use receipt::{Knowledge, Proved, Receipt};
+pub use receipt::{Changed, Knowledge, Proved, Receipt};
 pub use refusal::Refusal;
 
 use check::{MOST_PRICE, dearest};

@@ -10,6 +10,32 @@ pub struct Receipt {
     pub(super) unplaced_weight: u64,
     pub(super) unplaced_floor: u64,
     pub(super) available: usize,
+    pub(super) changes: Option<Changed>,
+}
+
+/// What audit found of the changes against an earlier plan.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub struct Changed {
+    pub(super) relocated: usize,
+    pub(super) floor: usize,
+}
+
+impl Changed {
+    /// Pieces that are in both plans, on different resources.
+    pub fn relocated(self) -> usize {
+        self.relocated
+    }
+
+    /// Proved lower bound on that for plans that use no more resources and leave out no more
+    /// weight.
+    pub fn floor(self) -> usize {
+        self.floor
+    }
+
+    /// Whether no fewer will do.
+    pub fn fewest(self) -> bool {
+        self.relocated == self.floor
+    }
 }
 
 /// A proof that was checked: the fields cannot be set outside audit.
@@ -75,6 +101,11 @@ impl Receipt {
     /// Proved lower bound on that weight.
     pub fn unplaced_floor(&self) -> u64 {
         self.unplaced_floor
+    }
+
+    /// What changes against an earlier plan, where the answer names one.
+    pub fn changes(&self) -> Option<Changed> {
+        self.changes
     }
 
     /// The state of knowledge.

@@ -121,6 +121,22 @@ pub enum Refusal {
         /// As proved.
         proved: usize,
     },
+    /// Fewer relocations are proved to be needed than claimed.
+    #[error("it claims that at least {claimed} relocate, its prices give {proved}")]
+    OtherChanges {
+        /// As claimed.
+        claimed: usize,
+        /// As proved.
+        proved: usize,
+    },
+    /// The bound on changes is for fewer resources than the plan uses.
+    #[error("the bound on changes is for at most {limit} resources, the plan uses {in_use}")]
+    OtherLimit {
+        /// Resources in use.
+        in_use: usize,
+        /// Resources that the bound allows.
+        limit: usize,
+    },
     /// The plan file claims a state that does not follow.
     #[error("the plan file says \"{claimed}\", but what it shows is \"{shown}\"")]
     OtherState {

@@ -235,6 +235,38 @@ pub struct Answer {
     pub violations: Vec<HallViolation>,
     /// Why not everything, by prices: where they prove more.
     pub out: Option<OutPrices>,
+    /// What changes against an earlier plan, where there is one.
+    pub changes: Option<Changes>,
     /// Seconds of search so far.
     pub seconds: f64,
+}
+
+/// What changes against an earlier plan: a piece that is in both on different resources
+/// relocates.
+#[derive(Clone, Debug)]
+pub struct Changes {
+    /// The earlier plan: the one handed out, else the one that stood before.
+    pub since: Arc<Plan>,
+    /// Why no fewer relocations will do.
+    pub proof: Option<ChangesProof>,
+    /// A plan that was found for the other choice, where fewest resources and fewest changes
+    /// pull apart: resources in use, and relocations.
+    pub other: Option<(usize, usize)>,
+}
+
+/// Whole prices that prove how many pieces relocate in any plan that uses no more resources
+/// than `limit` and leaves out no more weight: a resource takes pieces at their prices, less
+/// `unit` for each that was elsewhere; what the pieces cost together beyond the dearest
+/// chains of so many resources, and beyond the dearest of what may be left out, is paid in
+/// relocations (Lagrangian relaxation; Geoffrion 1974).
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct ChangesProof {
+    /// What one relocation costs, at least 1.
+    pub unit: i64,
+    /// The pieces and their prices, all above 0.
+    pub prices: Vec<(Arc<str>, i64)>,
+    /// Resources that may be in use.
+    pub limit: usize,
+    /// Relocations that are claimed to be needed.
+    pub value: usize,
 }

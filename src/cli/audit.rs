@@ -126,6 +126,7 @@ fn judge(
             clique: Vec::new(),
             violations,
             out,
+            changes: None,
             seconds: 0.0,
         },
     ) {

@@ -82,6 +82,7 @@ pub struct Desk {
     /// Where pieces that have begun stay.
     begun: Arc<HashMap<Arc<str>, Arc<str>>>,
     issued: Option<PlanFile>,
+    issued_plan: Option<Arc<Plan>>,
     generation: u64,
     settled: Option<Arc<Settled>>,
     /// The generation whose plan file is still to be written.
@@ -144,6 +145,7 @@ impl Desk {
             history: history::History::default(),
             reference: known.map(Arc::new),
             begun: Arc::new(begun),
+            issued_plan: issued.as_ref().map(|file| Arc::new(file.plan.clone())),
             issued,
             generation: 0,
             settled: None,
@@ -225,6 +227,7 @@ impl Desk {
             generation,
             timetable,
             reference: self.reference.clone(),
+            issued: self.issued_plan.clone(),
             begun: Arc::clone(&self.begun),
         }
     }

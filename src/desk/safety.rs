@@ -554,6 +554,7 @@ impl Desk {
         self.on_disk = fresh.on_disk;
         self.begun = fresh.begun;
         self.issued = fresh.issued;
+        self.issued_plan = fresh.issued_plan;
         self.warnings = fresh.warnings;
         self.generation = generation;
         self.history = super::history::History::default();

@@ -24,6 +24,8 @@ pub struct Job {
     pub timetable: Timetable,
     /// The plan to stay near to.
     pub reference: Option<Arc<Plan>>,
+    /// The plan that was handed out: to stay near to it counts more.
+    pub issued: Option<Arc<Plan>>,
     /// Where pieces that have begun stay.
     pub begun: Arc<HashMap<Arc<str>, Arc<str>>>,
 }
@@ -56,7 +58,7 @@ impl Job {
         let reference = self
             .reference
             .as_ref()
-            .map(|plan| Reference::of(&problem, &self.timetable, plan));
+            .map(|plan| Reference::of(&problem, &self.timetable, plan, self.issued.as_ref()));
         let survey = Arc::new(Survey::of(self.timetable, pieces, &problem));
         let mut last: Result<Option<Arc<Settled>>, String> = Ok(None);
         let mut check = |answer: &Answer| {
@@ -192,6 +194,7 @@ mod tests {
                 vec![request],
             ),
             reference: None,
+            issued: None,
             begun: Arc::default(),
         }
     }

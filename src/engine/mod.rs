@@ -6,9 +6,11 @@
 //! `claim` and `overlap`.
 //!
 //! One method per file, each with its source: `bounds` are lower bounds, `plans` are ways
-//! to a plan, `exact` goes through cases, `solve` is the anytime loop over both.
+//! to a plan, `exact` goes through cases, `changes` stays near to an earlier plan, `solve` is
+//! the anytime loop over them.
 
 mod bounds;
+mod changes;
 mod exact;
 mod plans;
 mod problem;

@@ -3,14 +3,16 @@
 
 use super::bounds::ladder::{Found, Ladder};
 use super::bounds::{clique, hall, incompatible};
+use super::changes::{self, Changes, Wishes};
 use super::plans::slices::{Known, Plans, SLICE, SLICE_WORK, Slice};
 use super::plans::{Assignment, NONE, align, alike, greedy, keep, rows};
 use super::{Problem, Stopper};
 use crate::claim::{
-    Answer, FloorProof, HallViolation, OutPrices, Placement, Plan, Reason, Unplaced,
+    self, Answer, ChangesProof, FloorProof, HallViolation, OutPrices, Placement, Plan, Reason,
+    Unplaced,
 };
 use crate::lookup::FastMap;
-use crate::timetable::Timetable;
+use crate::timetable::{Prefer, Timetable};
 use std::sync::Arc;
 use std::sync::Mutex;
 use std::time::Instant;
@@ -23,13 +25,26 @@ pub(crate) struct Kept {
     pub(crate) changed: bool,
 }
 
-/// An earlier plan to stay near to.
+/// An earlier plan to stay near to, or two of them.
 #[derive(Clone, Debug)]
-pub struct Reference(pub(crate) Vec<Kept>);
+pub struct Reference {
+    pub(crate) kept: Vec<Kept>,
+    wishes: Wishes,
+    /// Whether there are two plans, of which the one handed out counts first.
+    two: bool,
+    since: Arc<Plan>,
+    prefer: Prefer,
+}
 
 impl Reference {
-    /// The reference that a plan gives for a problem of that timetable.
-    pub fn of(problem: &Problem, timetable: &Timetable, plan: &Plan) -> Reference {
+    /// The reference that the plan which stood before gives for a problem of that timetable,
+    /// and, counting first, the one handed out.
+    pub fn of(
+        problem: &Problem,
+        timetable: &Timetable,
+        plan: &Arc<Plan>,
+        issued: Option<&Arc<Plan>>,
+    ) -> Reference {
         let resources = timetable.resources();
         // Placements are listed in the order of the items, as a rule; the map is for the rest.
         let mut before: FastMap<&str, &Placement> = FastMap::default();
@@ -59,7 +74,13 @@ impl Reference {
                     .any(|piece| placement(piece).is_none_or(|p| p.span != problem.spans[piece])),
             }
         });
-        Reference(kept.collect())
+        Reference {
+            kept: kept.collect(),
+            wishes: Wishes::of(problem, timetable, issued.map(|issued| &**issued), plan),
+            two: issued.is_some(),
+            since: Arc::clone(issued.unwrap_or(plan)),
+            prefer: timetable.settings.prefer,
+        }
     }
 }
 
@@ -102,12 +123,16 @@ pub fn solve(
         violations: Vec::new(),
         out: None,
         best: vec![NONE; problem.items.len()],
+        near: None,
+        proof: None,
+        other: None,
         found,
     };
     solving.pairwise_clique();
     solving.first_plan();
     // After an edit the count should come with its reason; who opens a file wants a plan.
     if reference.is_some() {
+        solving.stay_near(QUICK);
         solving.first_floor();
         solving.report();
     } else {
@@ -122,8 +147,13 @@ pub fn solve(
             solving.improve(budget, stop);
         }
     }
+    solving.fewest_changes(stop);
     solving.answer()
 }
+
+/// Cases of the search for few changes before the first answer, and at the end.
+const QUICK: u64 = 400;
+const THOROUGH: u64 = 4_000;
 
 struct Solving<'a, 'f> {
     problem: &'a Problem,
@@ -134,7 +164,14 @@ struct Solving<'a, 'f> {
     clique: Vec<Arc<str>>,
     violations: Vec<HallViolation>,
     out: Option<OutPrices>,
+    /// The plan with the fewest resources.
     best: Assignment,
+    /// The plan with the fewest changes, where those come first.
+    near: Option<Assignment>,
+    /// Why no fewer changes, of plans like the one that is shown.
+    proof: Option<ChangesProof>,
+    /// What the other choice would come to.
+    other: Option<(usize, usize)>,
     found: &'f mut dyn FnMut(&Answer),
 }
 
@@ -199,6 +236,108 @@ impl Solving<'_, '_> {
             align::align(self.problem, &mut on, reference);
         }
         self.best = on;
+        self.proof = None;
+        if !matches!(
+            self.reference,
+            None | Some(Reference {
+                prefer: Prefer::Changes,
+                ..
+            })
+        ) {
+            self.stay_near(QUICK);
+        }
+    }
+
+    /// Fewer changes in a moment, with no more resources and nothing more left out.
+    fn stay_near(&mut self, nodes: u64) {
+        let Some(reference) = self.reference else {
+            return;
+        };
+        let first = reference.prefer == Prefer::Changes;
+        let limit = match first {
+            true => self.problem.resources.len(),
+            false => self.value(&self.best).1,
+        };
+        let (problem, wishes, two) = (self.problem, &reference.wishes, reference.two);
+        let mut changes = Changes::new(problem, wishes, two, &self.best, limit);
+        changes.quick(nodes, &super::Never);
+        match (first, changes.plan()) {
+            (_, None) => {}
+            (true, Some(plan)) => self.near = Some(plan.clone()),
+            (false, Some(plan)) => self.best.clone_from(plan),
+        }
+    }
+
+    /// The plan that is shown: the one with the fewest changes where those come first and it
+    /// leaves out no more.
+    fn shown(&self) -> &Assignment {
+        let left_out = self.value(&self.best).0;
+        let near = self.near.as_ref();
+        near.filter(|near| self.value(near).0 <= left_out)
+            .unwrap_or(&self.best)
+    }
+
+    /// Fewest changes and their proof, once resources are settled as far as they will be.
+    fn fewest_changes(&mut self, stop: &dyn Stopper) {
+        let Some(reference) = self.reference else {
+            return;
+        };
+        let first = reference.prefer == Prefer::Changes;
+        let (problem, wishes, two) = (self.problem, &reference.wishes, reference.two);
+        let all = problem.resources.len();
+        if first && self.value(self.shown()).0 > self.value(&self.best).0 {
+            self.near = None;
+        }
+        let start = self.shown().clone();
+        let limit = if first { all } else { self.value(&start).1 };
+        let mut changes = Changes::new(problem, wishes, two, &start, limit);
+        changes.quick(THOROUGH, stop);
+        let known = changes.prove(stop, &mut |known| {
+            self.keep(known, first);
+            self.report();
+        });
+        self.keep(&known, first);
+        if first && !stop.stop() {
+            // As few resources as the same changes allow.
+            let mut on = known.on.clone();
+            while let Some(limit) = self.value(&on).1.checked_sub(1) {
+                let mut fewer = Changes::new(problem, wishes, two, &on, limit);
+                fewer.quick(THOROUGH, stop);
+                match fewer
+                    .plan()
+                    .filter(|_| fewer.relocated() <= known.relocated)
+                {
+                    Some(plan) => on.clone_from(plan),
+                    None => break,
+                }
+            }
+            self.near = Some(on);
+        }
+        // What the other choice would come to.
+        let (from, limit) = match first {
+            true => (&self.best, self.value(&self.best).1),
+            false => (&start, all),
+        };
+        let mut other = Changes::new(problem, wishes, two, from, limit);
+        other.quick(THOROUGH, stop);
+        let shown = (self.value(self.shown()).1, known.relocated);
+        self.other = other.plan().and_then(|plan| {
+            let other = (self.value(plan).1, other.relocated());
+            let apart = match first {
+                true => other.0 < shown.0 && other.1 > shown.1,
+                false => other.1 < shown.1,
+            };
+            apart.then_some((other.0, other.1 as usize))
+        });
+        self.report();
+    }
+
+    fn keep(&mut self, known: &changes::Known, first: bool) {
+        match first {
+            true => self.near = Some(known.on.clone()),
+            false => self.best.clone_from(&known.on),
+        }
+        self.proof.clone_from(&known.proof);
     }
 
     /// What can be said at once of why not fewer, and of what is left out; whether anything.
@@ -255,7 +394,8 @@ impl Solving<'_, '_> {
 
     fn answer(&self) -> Answer {
         let mut plan = Plan::default();
-        for (item, resource) in self.best.iter().enumerate() {
+        let shown = self.shown();
+        for (item, resource) in shown.iter().enumerate() {
             let pieces = self.problem.pieces(item);
             if *resource == NONE {
                 let because = self.reason(item);
@@ -277,6 +417,11 @@ impl Solving<'_, '_> {
             clique: self.clique.clone(),
             violations: self.violations.clone(),
             out: self.out.clone(),
+            changes: self.reference.map(|reference| claim::Changes {
+                since: Arc::clone(&reference.since),
+                proof: self.proof.clone(),
+                other: self.other,
+            }),
             seconds: self.began.elapsed().as_secs_f64(),
         }
     }
@@ -294,7 +439,7 @@ impl Solving<'_, '_> {
         let Some(resource) = only else {
             return Reason::AllTaken;
         };
-        let by = self.best.iter().enumerate().find(|(other, on)| {
+        let by = self.shown().iter().enumerate().find(|(other, on)| {
             **on == resource && self.problem.conflict(*other, item, choices[0])
         });
         by.map_or(Reason::AllTaken, |(other, _)| Reason::PinTaken {

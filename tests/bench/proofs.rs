@@ -194,6 +194,7 @@ fn main() {
             generation: 0,
             timetable: instance.timetable,
             reference: None,
+            issued: None,
             begun: Arc::default(),
         };
         let watch = Watch::now();

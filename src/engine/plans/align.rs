@@ -8,7 +8,7 @@ use std::collections::HashMap;
 /// The same plan with members of each class exchanged, greedily by how many pieces agree.
 pub(crate) fn align(problem: &Problem, on: &mut Assignment, reference: &Reference) {
     let mut agree: HashMap<(u32, u32), u32> = HashMap::new();
-    for (now, before) in on.iter().zip(&reference.0) {
+    for (now, before) in on.iter().zip(&reference.kept) {
         if *now != NONE
             && before.resource != NONE
             && problem.class_of[*now as usize] == problem.class_of[before.resource as usize]

@@ -10,7 +10,7 @@ pub(crate) fn near(problem: &Problem, reference: &Reference) -> Assignment {
     let mut rows = Rows::empty(problem);
     // What did not change has the older right to its place.
     for changed in [false, true] {
-        for (item, kept) in reference.0.iter().enumerate() {
+        for (item, kept) in reference.kept.iter().enumerate() {
             if kept.resource == NONE || kept.changed != changed {
                 continue;
             }

@@ -15,6 +15,7 @@ fuzz_target!(|bytes: &[u8]| {
                     generation: 0,
                     timetable: read.timetable,
                     reference: None,
+                    issued: None,
                     begun: Default::default(),
                 };
                 let budget = fewest::engine::Budget { steps: Some(500), ..Default::default() };
