@@ -7,6 +7,7 @@
 )]
 
 mod captures;
+mod changes;
 mod commands;
 mod edits;
 mod family;

@@ -7,27 +7,33 @@ use fewest::claim::{Case, FloorProof};
 use fewest::clock::Instant;
 use proptest::prelude::*;
 use std::fmt::Write;
+use std::ops::Range;
 use std::sync::Arc;
 
 /// Start, length, size, needs the projector, pin, weight, never.
-type Wanted = (i64, i64, u32, bool, Option<usize>, u64, Option<usize>);
+pub(crate) type Wanted = (i64, i64, u32, bool, Option<usize>, u64, Option<usize>);
 
 /// A tiny timetable, as plain numbers: the oracle reads these, the program reads the text.
 #[derive(Clone, Debug)]
-struct Tiny {
+pub(crate) struct Tiny {
     /// Per room: seats, has a projector, minutes kept free after.
-    rooms: Vec<(u32, bool, i64)>,
-    requests: Vec<Wanted>,
+    pub(crate) rooms: Vec<(u32, bool, i64)>,
+    pub(crate) requests: Vec<Wanted>,
     /// Per request the minute of a second start, for one that stays together with the first.
-    again: Vec<Option<i64>>,
+    pub(crate) again: Vec<Option<i64>>,
     /// One room closed from..to.
-    closed: Option<(usize, i64, i64)>,
+    pub(crate) closed: Option<(usize, i64, i64)>,
+    /// Fewest changes before fewest rooms.
+    pub(crate) changes_first: bool,
 }
 
 impl Tiny {
-    fn text(&self) -> String {
+    pub(crate) fn text(&self) -> String {
         let at = |minute: i64| format!("2027-01-11T{:02}:{:02}:00", 8 + minute / 60, minute % 60);
         let mut text = "[timetable]\ntitle = \"tiny\"\nnoun = [\"room\", \"rooms\"]\n".to_string();
+        if self.changes_first {
+            text.push_str("prefer = \"changes\"\n");
+        }
         for (room, (seats, projector, after)) in self.rooms.iter().enumerate() {
             let offers = if *projector { "\"projector\"" } else { "" };
             let _ = writeln!(
@@ -72,16 +78,16 @@ impl Tiny {
     }
 
     /// The starts of a request.
-    fn starts(&self, request: usize) -> impl Iterator<Item = i64> + '_ {
+    pub(crate) fn starts(&self, request: usize) -> impl Iterator<Item = i64> + '_ {
         std::iter::once(self.requests[request].0).chain(self.again(request))
     }
 
     /// What it costs to leave a request out: its dates together.
-    fn weight(&self, request: usize) -> u64 {
+    pub(crate) fn weight(&self, request: usize) -> u64 {
         self.requests[request].5 * self.starts(request).count() as u64
     }
 
-    fn usable(&self, request: usize, room: usize) -> bool {
+    pub(crate) fn usable(&self, request: usize, room: usize) -> bool {
         let (_, length, size, needs, pin, _, never) = self.requests[request];
         let (seats, projector, after) = self.rooms[room];
         let closed = self.closed.is_some_and(|(closed, from, to)| {
@@ -100,7 +106,7 @@ impl Tiny {
             && !closed
     }
 
-    fn collide(&self, a: usize, b: usize, room: usize) -> bool {
+    pub(crate) fn collide(&self, a: usize, b: usize, room: usize) -> bool {
         let after = self.rooms[room].2;
         let (la, lb) = (self.requests[a].1, self.requests[b].1);
         self.starts(a).any(|a| {
@@ -110,7 +116,7 @@ impl Tiny {
     }
 
     /// The ids of the pieces.
-    fn pieces(&self) -> Vec<Arc<str>> {
+    pub(crate) fn pieces(&self) -> Vec<Arc<str>> {
         let name = |(request, start): (usize, i64)| {
             let (hour, minute) = (8 + start / 60, start % 60);
             match self.again(request) {
@@ -159,16 +165,25 @@ impl Tiny {
     }
 }
 
-fn tiny() -> impl Strategy<Value = Tiny> {
+pub(crate) fn tiny() -> impl Strategy<Value = Tiny> {
+    sized(1..4, 0..8)
+}
+
+/// Too many to try everything.
+pub(crate) fn small() -> impl Strategy<Value = Tiny> {
+    sized(3..6, 8..15)
+}
+
+fn sized(rooms: Range<usize>, requests: Range<usize>) -> impl Strategy<Value = Tiny> {
     let rooms = prop::collection::vec(
         (
             1u32..4,
             any::<bool>(),
             prop::sample::select(vec![0i64, 0, 10]),
         ),
-        1..4,
+        rooms,
     );
-    rooms.prop_flat_map(|rooms| {
+    rooms.prop_flat_map(move |rooms| {
         let count = rooms.len();
         let request = (
             (0i64..24).prop_map(|x| x * 10),
@@ -183,19 +198,19 @@ fn tiny() -> impl Strategy<Value = Tiny> {
             0.2,
             (0..count, 0i64..120).prop_map(|(room, from)| (room, from, from + 45)),
         );
-        (Just(rooms), prop::collection::vec(request, 0..8), closed).prop_map(
-            |(rooms, requests, closed)| Tiny {
-                rooms,
-                requests,
-                again: Vec::new(),
-                closed,
-            },
-        )
+        let requests = prop::collection::vec(request, requests.clone());
+        (Just(rooms), requests, closed).prop_map(|(rooms, requests, closed)| Tiny {
+            rooms,
+            requests,
+            again: Vec::new(),
+            closed,
+            changes_first: false,
+        })
     })
 }
 
 /// The same where some requests have two dates that stay together.
-fn tiny_together() -> impl Strategy<Value = Tiny> {
+pub(crate) fn tiny_together() -> impl Strategy<Value = Tiny> {
     let again = prop::option::weighted(0.6, (0i64..24).prop_map(|x| x * 10));
     (tiny(), prop::collection::vec(again, 8)).prop_map(|(mut tiny, mut again)| {
         for (request, again) in tiny.requests.iter().zip(&mut again) {
@@ -294,6 +309,7 @@ fn generated_with_a_known_answer() {
             requests: Vec::new(),
             again: Vec::new(),
             closed: None,
+            changes_first: false,
         };
         for room in 0..k {
             tiny.rooms.push((10 * (room as u32 + 1), true, 0));
