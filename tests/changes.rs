@@ -22,6 +22,7 @@ fn solve_from(
         timetable: timetable.clone(),
         reference: Some(Arc::clone(before)),
         issued: issued.cloned(),
+        floor: None,
         begun: Arc::default(),
     };
     let budget = Budget {
@@ -224,8 +225,8 @@ proptest! {
             for room in 0..rooms.len() {
                 let Some(take) = row[room] else { continue };
                 problem.add_constraint([(take, 1.0), (rooms[room], -1.0)], ComparisonOp::Le, 0.0);
-                for other in 0..r {
-                    if let Some(theirs) = takes[other][room].filter(|_| now.collide(other, r, room)) {
+                for (other, theirs) in takes[..r].iter().enumerate() {
+                    if let Some(theirs) = theirs[room].filter(|_| now.collide(other, r, room)) {
                         problem.add_constraint([(take, 1.0), (theirs, 1.0)], ComparisonOp::Le, 1.0);
                     }
                 }

@@ -66,6 +66,7 @@ pub(crate) fn job(timetable: &Timetable) -> Job {
         timetable: timetable.clone(),
         reference: None,
         issued: None,
+        floor: None,
         begun: Arc::default(),
     }
 }

@@ -15,7 +15,7 @@ pub use safety::{Access, Disk, Leftover, whoami};
 pub use settle::{Settled, Survey, settle};
 pub use solver::{Event, Job, Solver};
 
-use crate::claim::Plan;
+use crate::claim::{FloorProof, Plan};
 use crate::clock::{Instant, Zone};
 use crate::document::{self, Document, Mistake, Mistakes, PlanFile, State, issued_path, plan_path};
 use crate::edit::{self, Change, Edit, Refused};
@@ -83,6 +83,8 @@ pub struct Desk {
     begun: Arc<HashMap<Arc<str>, Arc<str>>>,
     issued: Option<PlanFile>,
     issued_plan: Option<Arc<Plan>>,
+    /// Why not fewer, as last settled, where it is more than a clique at a moment.
+    floor: Option<Arc<FloorProof>>,
     generation: u64,
     settled: Option<Arc<Settled>>,
     /// The generation whose plan file is still to be written.
@@ -147,6 +149,7 @@ impl Desk {
             begun: Arc::new(begun),
             issued_plan: issued.as_ref().map(|file| Arc::new(file.plan.clone())),
             issued,
+            floor: planned.and_then(|file| file.floor).map(Arc::new),
             generation: 0,
             settled: None,
             plan_due: None,
@@ -228,6 +231,7 @@ impl Desk {
             timetable,
             reference: self.reference.clone(),
             issued: self.issued_plan.clone(),
+            floor: self.floor.clone(),
             begun: Arc::clone(&self.begun),
         }
     }
@@ -239,6 +243,11 @@ impl Desk {
             return false;
         }
         self.reference = Some(Arc::new(settled.answer.plan.clone()));
+        let floor = &settled.answer.floor;
+        let more = floor.value() > settled.survey().load.most;
+        if self.floor.as_deref().filter(|_| more) != Some(floor) {
+            self.floor = more.then(|| Arc::new(floor.clone()));
+        }
         self.settled = Some(settled);
         true
     }

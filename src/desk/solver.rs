@@ -2,7 +2,8 @@
 //! never waits.
 
 use super::settle::{Settled, Survey, settle};
-use crate::claim::{Answer, Plan};
+use crate::audit;
+use crate::claim::{Answer, FloorProof, Plan};
 use crate::engine::{self, Budget, Flag, Problem, Reference, Stopper};
 use crate::timetable::Timetable;
 use std::collections::HashMap;
@@ -26,6 +27,8 @@ pub struct Job {
     pub reference: Option<Arc<Plan>>,
     /// The plan that was handed out: to stay near to it counts more.
     pub issued: Option<Arc<Plan>>,
+    /// Why not fewer, as it was before: most edits leave it true.
+    pub floor: Option<Arc<FloorProof>>,
     /// Where pieces that have begun stay.
     pub begun: Arc<HashMap<Arc<str>, Arc<str>>>,
 }
@@ -59,6 +62,12 @@ impl Job {
             .reference
             .as_ref()
             .map(|plan| Reference::of(&problem, &self.timetable, plan, self.issued.as_ref()));
+        // Cases are only replayed, so it takes audit to say whether they still hold.
+        let holds = |floor: &&Arc<FloorProof>| match &***floor {
+            FloorProof::Cases { .. } => audit::check_floor(&self.timetable, floor).is_ok(),
+            _ => true,
+        };
+        let floor = self.floor.as_ref().filter(holds);
         let survey = Arc::new(Survey::of(self.timetable, pieces, &problem));
         let mut last: Result<Option<Arc<Settled>>, String> = Ok(None);
         let mut check = |answer: &Answer| {
@@ -82,7 +91,11 @@ impl Job {
                 }
             }
         };
-        engine::solve(&problem, reference.as_ref(), budget, stop, &mut check);
+        let before = engine::Before {
+            reference: reference.as_ref(),
+            floor: floor.map(|floor| &**floor),
+        };
+        engine::solve(&problem, before, budget, stop, &mut check);
         last?.ok_or_else(|| "the search gave no answer".into())
     }
 }
@@ -195,6 +208,7 @@ mod tests {
             ),
             reference: None,
             issued: None,
+            floor: None,
             begun: Arc::default(),
         }
     }

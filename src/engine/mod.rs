@@ -20,5 +20,5 @@ mod stop;
 
 pub use plans::alike::{bound_and_count, partition};
 pub use problem::{Class, Item, Problem};
-pub use solve::{Budget, Reference, solve};
+pub use solve::{Before, Budget, Reference, solve};
 pub use stop::{Either, Flag, Never, Stopper, Until};

@@ -2,7 +2,7 @@
 //! or somebody says stop. Every improvement goes out through a callback.
 
 use super::bounds::ladder::{Found, Ladder};
-use super::bounds::{clique, hall, incompatible};
+use super::bounds::{clique, hall, incompatible, prices};
 use super::changes::{self, Changes, Wishes};
 use super::plans::slices::{Known, Plans, SLICE, SLICE_WORK, Slice};
 use super::plans::{Assignment, NONE, align, alike, greedy, keep, rows};
@@ -105,15 +105,26 @@ impl Default for Budget {
     }
 }
 
+/// What is known from before.
+#[derive(Clone, Copy, Debug, Default)]
+pub struct Before<'a> {
+    /// Earlier plans to stay near to.
+    pub reference: Option<&'a Reference>,
+    /// Why not fewer, of an earlier state; what no longer holds of it is dropped. Cases must
+    /// have been checked.
+    pub floor: Option<&'a FloorProof>,
+}
+
 /// Searches until proved, stopped or out of budget. `found` gets the first answer and then
 /// every better one; the last of them is also returned.
 pub fn solve(
     problem: &Problem,
-    reference: Option<&Reference>,
+    before: Before<'_>,
     budget: Budget,
     stop: &(dyn Stopper + Sync),
     found: &mut dyn FnMut(&Answer),
 ) -> Answer {
+    let reference = before.reference;
     let mut solving = Solving {
         problem,
         reference,
@@ -124,11 +135,15 @@ pub fn solve(
         out: None,
         best: vec![NONE; problem.items.len()],
         near: None,
+        due: reference.is_some(),
         proof: None,
         other: None,
         found,
     };
     solving.pairwise_clique();
+    if let Some(floor) = before.floor {
+        solving.still(floor);
+    }
     solving.first_plan();
     // After an edit the count should come with its reason; who opens a file wants a plan.
     if reference.is_some() {
@@ -147,9 +162,14 @@ pub fn solve(
             solving.improve(budget, stop);
         }
     }
-    solving.fewest_changes(stop);
+    if solving.due {
+        solving.fewest_changes(stop);
+    }
     solving.answer()
 }
+
+/// The dearest a whole price may be, as in audit.
+const MOST_PRICE: i64 = 1 << 40;
 
 /// Cases of the search for few changes before the first answer, and at the end.
 const QUICK: u64 = 400;
@@ -168,6 +188,8 @@ struct Solving<'a, 'f> {
     best: Assignment,
     /// The plan with the fewest changes, where those come first.
     near: Option<Assignment>,
+    /// Whether fewest changes are still to be looked for.
+    due: bool,
     /// Why no fewer changes, of plans like the one that is shown.
     proof: Option<ChangesProof>,
     /// What the other choice would come to.
@@ -193,6 +215,61 @@ impl Solving<'_, '_> {
                 at: None,
                 pieces: self.clique.clone(),
             };
+        }
+    }
+
+    /// Takes over what still holds of an earlier floor, when that is more than is known.
+    fn still(&mut self, floor: &FloorProof) {
+        let mut units: FastMap<&str, usize> = FastMap::default();
+        units.extend((0..self.problem.units.len()).map(|unit| (&**self.problem.id_of(unit), unit)));
+        match floor {
+            FloorProof::Clique { at: Some(_), .. } => {}
+            FloorProof::Clique { pieces, .. } | FloorProof::Incompatible { pieces } => {
+                let problem = self.problem;
+                let mut clique: Vec<usize> = Vec::new();
+                for unit in pieces.iter().filter_map(|piece| units.get(&**piece)) {
+                    let item = problem.units[*unit].item as usize;
+                    let apart = |other: &usize| incompatible::incompatible(problem, item, *other);
+                    if !problem.choices(item).is_empty() && clique.iter().all(apart) {
+                        clique.push(item);
+                    }
+                }
+                self.raise(&clique);
+            }
+            // It may come from a file: sums of larger prices could overflow.
+            FloorProof::Prices { unit, prices, .. }
+                if !(1..=MOST_PRICE).contains(unit)
+                    || prices
+                        .iter()
+                        .any(|(_, price)| !(1..=MOST_PRICE).contains(price)) => {}
+            FloorProof::Prices { unit, prices, .. } => {
+                let mut whole = vec![0; self.problem.units.len()];
+                for (piece, price) in prices {
+                    let place = units.get(&**piece);
+                    let usable = place.filter(|place| {
+                        let item = self.problem.units[**place].item as usize;
+                        !self.problem.choices(item).is_empty()
+                    });
+                    if let Some(place) = usable {
+                        whole[*place] = *price;
+                    }
+                }
+                let value = prices::Chains::of(self.problem).count(&whole, *unit, &mut Vec::new());
+                if value > self.floor.value() {
+                    let named = whole.iter().enumerate().filter(|(_, price)| **price > 0);
+                    let named =
+                        named.map(|(unit, price)| (Arc::clone(self.problem.id_of(unit)), *price));
+                    self.floor = FloorProof::Prices {
+                        unit: *unit,
+                        prices: named.collect(),
+                        value,
+                    };
+                }
+            }
+            FloorProof::Cases { value, .. } if *value > self.floor.value() => {
+                self.floor = floor.clone();
+            }
+            FloorProof::Cases { .. } => {}
         }
     }
 
@@ -237,6 +314,7 @@ impl Solving<'_, '_> {
         }
         self.best = on;
         self.proof = None;
+        self.due = self.reference.is_some();
         if !matches!(
             self.reference,
             None | Some(Reference {
@@ -282,6 +360,7 @@ impl Solving<'_, '_> {
         let Some(reference) = self.reference else {
             return;
         };
+        self.due = false;
         let first = reference.prefer == Prefer::Changes;
         let (problem, wishes, two) = (self.problem, &reference.wishes, reference.two);
         let all = problem.resources.len();
@@ -513,7 +592,13 @@ impl Solving<'_, '_> {
     ) {
         let mut steps_left = budget.steps.unwrap_or(u64::MAX);
         let mut plans = Plans::new(self.problem, budget.seed, true);
+        let mut calm = 0;
         while steps_left > 0 && !stop.stop() {
+            // What is shown should change little even while the count is still open.
+            calm = if self.due { calm + 1 } else { 0 };
+            if calm > CALM {
+                self.fewest_changes(stop);
+            }
             let slice = SLICE.min(steps_left);
             steps_left -= slice;
             let more = shared.plan(&mut plans, slice, true, stop);
@@ -541,12 +626,16 @@ impl Solving<'_, '_> {
         self.out.clone_from(&state.out);
         drop(state);
         self.floor = floor;
-        if best != self.best {
+        // One that is as good in this respect may have more changes.
+        if self.value(&best) < self.value(&self.best) {
             self.take(best);
         }
         self.report();
     }
 }
+
+/// Slices without a better plan after which changes are looked at.
+const CALM: u32 = 8;
 
 /// Slices after which the first thread takes plans from others.
 const ITS_SAY: u32 = 2;

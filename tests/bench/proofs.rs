@@ -9,16 +9,22 @@
 //! `cargo bench --bench proofs -- family-N SECONDS [PART-OF-NAME [SEED]]`: twenty timetables
 //! of N requests as `tests/family.rs` describes them, with answers known by construction.
 //!
+//! `cargo bench --bench proofs -- edits-N SECONDS [SEED]`: a hundred random edits on a
+//! timetable of the family with N requests, each from the same plan: time to the first
+//! repaired plan, and to a plan whose resources and changes are both proved to be the fewest.
+//!
 //! `cargo bench --bench proofs -- term SECONDS`: five terms of 15 weeks, 2,000 weekly requests
 //! kept together on 150 rooms; the answer is not known, the floor and the gap are of interest.
 #![allow(clippy::unwrap_used, reason = "a benchmark may panic")]
 #![allow(clippy::print_stdout, reason = "a benchmark prints what it measures")]
 
 use fewest::audit::Knowledge;
+use fewest::claim::{FloorProof, Plan};
 use fewest::clock::{Instant, Span};
-use fewest::desk::Job;
+use fewest::desk::{Job, Settled};
+use fewest::edit::{Change, Edit};
 use fewest::engine::{Budget, Until};
-use fewest::timetable::{Listed, Named, Request, Settings, Timetable};
+use fewest::timetable::{Listed, Named, Request, Settings, Timetable, may_use};
 use std::path::{Path, PathBuf};
 use std::sync::Arc;
 use std::time::{Duration, Instant as Watch};
@@ -125,6 +131,134 @@ fn made(n: usize, part: &str) -> impl Iterator<Item = Instance> + '_ {
     .filter(move |instance| instance.name.contains(part))
 }
 
+/// A random edit: of ten, four moves by up to two hours, two pins on a room that suits, two
+/// closures of a room in use for one to four hours, one withdrawal, one pin on any room.
+fn random_edit(timetable: &Timetable, plan: &Plan, dice: &mut family::Dice) -> Option<Edit> {
+    let pieces = timetable.pieces();
+    let piece = &pieces[dice.below(pieces.len())];
+    let id = Arc::clone(&piece.id);
+    let resources = &timetable.resources().all;
+    let on = &resources[dice.below(resources.len())];
+    let what = match dice.below(10) {
+        0..4 => Change::Move {
+            piece: id,
+            to: piece.span.start + 900 * (dice.below(17) as i64 - 8),
+        },
+        4..6 => {
+            let mut free = piece.clone();
+            free.pin = None;
+            may_use(&free, on).ok()?;
+            Change::Pin {
+                piece: id,
+                on: Arc::clone(&on.id),
+            }
+        }
+        6..8 => {
+            let used = &plan.placements[dice.below(plan.placements.len())];
+            let length = 3_600 * (1 + dice.below(4) as i64);
+            Change::Close {
+                resource: Arc::clone(&used.resource),
+                span: Span::lasting(used.span.start, length),
+            }
+        }
+        8 => Change::Withdraw(id),
+        _ => Change::Pin {
+            piece: id,
+            on: Arc::clone(&on.id),
+        },
+    };
+    Some(what.into())
+}
+
+fn edits(n: usize, seconds: f64, seed: u64) {
+    let made = family::make(n, seed);
+    let read = fewest::document::read("family.toml", made.text.as_bytes());
+    let timetable = read
+        .unwrap_or_else(|mistakes| panic!("{mistakes}"))
+        .timetable;
+    let job = |timetable: &Timetable, before: Option<(&Arc<Plan>, &Arc<FloorProof>)>| Job {
+        generation: 0,
+        timetable: timetable.clone(),
+        reference: before.map(|(plan, _)| Arc::clone(plan)),
+        issued: None,
+        floor: before.map(|(_, floor)| Arc::clone(floor)),
+        begun: Arc::default(),
+    };
+    let budget = Budget {
+        seed: 1,
+        steps: None,
+        threads: 2,
+    };
+    let until = || Until(Watch::now() + Duration::from_secs_f64(seconds));
+    let base = job(&timetable, None)
+        .run(budget, &until(), &mut |_| {})
+        .unwrap();
+    let plan = Arc::new(base.answer().plan.clone());
+    let floor = Arc::new(base.answer().floor.clone());
+    println!(
+        "{}-{n}-{seed}: {} rooms in use",
+        made.kind,
+        base.receipt().in_use()
+    );
+    let mut dice = family::Dice(seed);
+    let (mut firsts, mut dones, mut proved, mut all) = (Vec::new(), Vec::new(), 0, 0);
+    while all < 100 {
+        let Some(edit) = random_edit(&timetable, &plan, &mut dice) else {
+            continue;
+        };
+        let mut changed = timetable.clone();
+        if fewest::edit::apply(&mut changed, &edit).is_err() {
+            continue;
+        }
+        all += 1;
+        let line = fewest::edit::print(&edit, timetable.settings.zone);
+        let watch = Watch::now();
+        let (mut first, mut done) = (None, None);
+        let fewest = |settled: &Settled| {
+            let receipt = settled.receipt();
+            let count = match receipt.knowledge() {
+                Knowledge::Proved(_) => true,
+                Knowledge::Between { .. } => false,
+                Knowledge::Impossible { least, .. } => least,
+            };
+            count && receipt.changes().is_some_and(|changes| changes.fewest())
+        };
+        let settled = job(&changed, Some((&plan, &floor)))
+            .run(budget, &until(), &mut |settled| {
+                _ = first.get_or_insert(watch.elapsed());
+                if fewest(settled) {
+                    _ = done.get_or_insert(watch.elapsed());
+                }
+            })
+            .unwrap();
+        let ms = |time: Option<Duration>| time.map_or(f64::INFINITY, |t| t.as_secs_f64() * 1e3);
+        let receipt = settled.receipt();
+        let changes = receipt.changes().unwrap();
+        proved += usize::from(fewest(&settled));
+        firsts.push(ms(first));
+        dones.push(ms(done));
+        println!(
+            "{line:<60} {:>4} rooms {:>3} out {:>4} relocated, at least {:>4} {:>8.1} {:>9.1} ms",
+            receipt.in_use(),
+            receipt.unplaced(),
+            changes.relocated(),
+            changes.floor(),
+            ms(first),
+            ms(done)
+        );
+    }
+    firsts.sort_by(f64::total_cmp);
+    dones.sort_by(f64::total_cmp);
+    println!(
+        "first plan median {:.1} ms, p90 {:.1}; fewest proved for {proved} of {all}, median {:.1} ms, p90 {:.1}; {} MiB",
+        firsts[50],
+        firsts[90],
+        dones[50],
+        dones[90],
+        memory()
+    );
+}
+
 fn terms() -> impl Iterator<Item = Instance> {
     (1..6).map(|seed| {
         let made = family::term(2_000, 150, seed);
@@ -175,6 +309,9 @@ fn main() {
     let seconds: f64 = args.get(1).map_or(10.0, |text| text.parse().unwrap());
     let part = args.get(2).map_or("", String::as_str);
     let seed: u64 = args.get(3).map_or(1, |text| text.parse().unwrap());
+    if let Some(n) = set.strip_prefix("edits-") {
+        return edits(n.parse().unwrap(), seconds, part.parse().unwrap_or(2));
+    }
     let instances: Box<dyn Iterator<Item = Instance>> = match set.strip_prefix("family-") {
         Some(n) => Box::new(made(n.parse().unwrap(), part)),
         None if set == "term" => Box::new(terms()),
@@ -195,6 +332,7 @@ fn main() {
             timetable: instance.timetable,
             reference: None,
             issued: None,
+            floor: None,
             begun: Arc::default(),
         };
         let watch = Watch::now();

@@ -154,7 +154,7 @@ impl Chain {
 }
 
 impl Chains {
-    pub(super) fn of(problem: &Problem) -> Chains {
+    pub(crate) fn of(problem: &Problem) -> Chains {
         let mut takers: Vec<Vec<(i64, i64, u32)>> = vec![Vec::new(); problem.classes.len()];
         for (at, unit) in problem.units.iter().enumerate() {
             for class in problem.choices(unit.item as usize) {
@@ -323,7 +323,7 @@ impl Chains {
     }
 
     /// The bound that whole prices give when one resource (or a cost of 1) costs `unit`.
-    pub(super) fn count(&self, prices: &[i64], unit: i64, best: &mut Vec<i64>) -> usize {
+    pub(crate) fn count(&self, prices: &[i64], unit: i64, best: &mut Vec<i64>) -> usize {
         let mut value: i64 = prices.iter().sum();
         let mut worths = Vec::new();
         for chain in &self.list {
@@ -482,11 +482,13 @@ impl Prices {
         if self.ceiling <= least {
             return None;
         }
+        let mut fresh = false;
         let mut ascent = match self.ascent.take() {
             Some(ascent) => ascent,
             None => {
                 let start = self.starts.pop()?;
                 let taken = self.chains.take(&start, &mut self.scratch);
+                fresh = true;
                 Ascent {
                     best: start,
                     value: taken.value,
@@ -500,7 +502,8 @@ impl Prices {
                 }
             }
         };
-        let better = self.climb(&mut ascent, aim as f64);
+        // Where it starts from may be enough.
+        let better = fresh || self.climb(&mut ascent, aim as f64);
         if better
             && ascent.value > least + 1e-7
             && let Some(proof) = self.whole(&ascent.best, wanted)

@@ -13,6 +13,7 @@ mod wishes;
 pub(crate) use wishes::{FIRST, Wishes};
 
 use super::bounds::prices::{Chains, Prices};
+use super::plans::tabu::Tabu;
 use super::plans::{Assignment, NONE, rows};
 use super::{Problem, Stopper};
 use crate::claim::ChangesProof;
@@ -26,6 +27,14 @@ const MOST_LEVELS: u64 = 16;
 
 /// Cases of one improving chain.
 const CHAIN: u64 = 150;
+
+/// Attempts to lay a few resources out anew between looks at the plan, and how many of such
+/// rounds may be in vain.
+const ATTEMPTS: u32 = 200;
+const IN_VAIN: u32 = 5;
+
+/// Relocations above the least from which on that is worth it before prices are looked at.
+const MANY: u64 = 8;
 
 /// Steps of the ascent between looks at what it has come to.
 const STEPS: u32 = 20;
@@ -126,6 +135,27 @@ impl<'a> Changes<'a> {
         }
     }
 
+    /// Lays a few resources out anew at a time, again and again, as long as that brings
+    /// something: for plans in which much has changed.
+    pub(crate) fn rearrange(&mut self, seed: u64, stop: &dyn Stopper) {
+        let Some(mut tabu) = Tabu::new(self.problem, &self.skip, seed) else {
+            return;
+        };
+        if self.cost == u64::MAX || !tabu.aim(&self.best, self.limit, stop) {
+            return;
+        }
+        tabu.wish(self.wishes);
+        let (mut width, mut in_vain) = (4.0, 0);
+        while in_vain < IN_VAIN && self.cost > self.least && !stop.stop() {
+            tabu.rearrange(ATTEMPTS, &mut width, stop);
+            in_vain += 1;
+            if rows::value(self.problem, &tabu.on).1 <= self.limit && self.take(&tabu.on) {
+                in_vain = 0;
+            }
+        }
+        self.improve(stop);
+    }
+
     fn improve(&mut self, stop: &dyn Stopper) {
         let (problem, wishes) = (self.problem, self.wishes);
         let mut moves = Moves::from(problem, wishes, self.limit, &self.best, &self.skip);
@@ -194,6 +224,9 @@ impl<'a> Changes<'a> {
                 false => 0,
             }
         };
+        if self.relocated() > self.least / unit + MANY {
+            self.rearrange(1, stop);
+        }
         let chains = Chains::costing(problem, &cost, self.limit, out);
         // By itself everything costs its least: a start that proves as much.
         let start = (0..problem.units.len()).map(|place| {
@@ -243,6 +276,9 @@ impl<'a> Changes<'a> {
                 searched = Some(floor);
                 if let Some(losses) = Losses::of(problem, &prices, unit) {
                     self.deepen(floor as u64, 4_000, &losses, stop);
+                }
+                if self.relocated() > floor as u64 {
+                    self.rearrange(u64::from(steps), stop);
                 }
                 if self.relocated() < known.relocated {
                     (known.on, known.relocated) = (self.best.clone(), self.relocated());

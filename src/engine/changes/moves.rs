@@ -400,8 +400,8 @@ impl<'a> Moves<'a> {
     }
 
     fn back_to(&mut self, plan: &[u32]) {
-        for item in 0..plan.len() {
-            if self.on[item] != plan[item] && self.on[item] != NONE {
+        for (item, resource) in plan.iter().enumerate() {
+            if self.on[item] != *resource && self.on[item] != NONE {
                 self.lift(item as u32);
             }
         }

@@ -29,13 +29,15 @@ impl Wishes {
         second: &Plan,
     ) -> Wishes {
         let resources = timetable.resources();
-        let on = |plan: &Plan| -> FastMap<Box<str>, Option<usize>> {
+        /// Per piece the place of its resource, if there still is one.
+        type Places = FastMap<Box<str>, Option<usize>>;
+        let on = |plan: &Plan| -> Places {
             let placements = plan.placements.iter();
             placements
                 .map(|p| (Box::from(&*p.piece), resources.position(&p.resource)))
                 .collect()
         };
-        let plans: Vec<(u64, FastMap<Box<str>, Option<usize>>)> = match first {
+        let plans: Vec<(u64, Places)> = match first {
             Some(first) => vec![(FIRST, on(first)), (1, on(second))],
             None => vec![(1, on(second))],
         };

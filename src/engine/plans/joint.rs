@@ -181,7 +181,8 @@ impl Tabu<'_> {
     ) {
         let mut scratch = std::mem::replace(&mut self.scratch, Scratch::new());
         for attempt in 0..attempts {
-            if self.done() || (attempt % 8 == 7 && stop.stop()) {
+            let done = self.done() && self.wishes.is_none();
+            if done || (attempt % 8 == 7 && stop.stop()) {
                 break;
             }
             let around = self.neighbourhood(*width as usize);
@@ -206,6 +207,7 @@ impl Tabu<'_> {
         let mut along: Vec<u32> = Vec::new();
         let total = self.rows.len();
         match self.unplaced.len() {
+            _ if self.wishes.is_some() => resources.extend(self.away_from_home()),
             0 => resources.push(self.random.below(total)),
             count => {
                 for _ in 0..ALONG.min(count) {
@@ -291,6 +293,27 @@ impl Tabu<'_> {
         }
     }
 
+    /// Where something is that was elsewhere before, and where it was.
+    fn away_from_home(&mut self) -> Vec<usize> {
+        let Some(wishes) = self.wishes else {
+            return Vec::new();
+        };
+        let away = |item: &usize| {
+            let on = self.on[*item];
+            on != NONE && wishes.cost(*item, on) > wishes.least(*item)
+        };
+        let away: Vec<usize> = (0..self.on.len()).filter(away).collect();
+        if away.is_empty() {
+            return Vec::new();
+        }
+        let item = away[self.random.below(away.len())];
+        let home = wishes.home(item).map(|home| home as usize);
+        let mut places: Vec<usize> = home.into_iter().collect();
+        places.push(self.on[item] as usize);
+        places.dedup();
+        places
+    }
+
     /// How many pieces on either resource the other could take, clashes aside.
     fn exchanges(&self, a: usize, b: usize) -> usize {
         let (class_a, class_b) = (self.problem.class_of[a], self.problem.class_of[b]);
@@ -328,7 +351,24 @@ impl Tabu<'_> {
             .filter(|item| self.on[**item as usize] == NONE)
             .map(|item| u64::from(self.weight[*item as usize]))
             .sum();
-        let bound = dropped + (rests - resting) as u64 * u64::from(self.rest_weight);
+        let bound = match self.wishes {
+            None => dropped + (rests - resting) as u64 * u64::from(self.rest_weight),
+            Some(wishes) => {
+                let here = items.iter().map(|item| *item as usize);
+                here.map(|item| wishes.cost(item, self.on[item])).sum()
+            }
+        };
+        // The least that the pieces from each on will cost.
+        let mut coming = vec![0; items.len() + 1];
+        if let Some(wishes) = self.wishes {
+            for (at, item) in items.iter().enumerate().rev() {
+                let here = resources
+                    .iter()
+                    .filter(|r| self.problem.allows(*item as usize, **r));
+                let least = here.map(|r| wishes.cost(*item as usize, *r as u32)).min();
+                coming[at] = coming[at + 1] + least.unwrap_or(0);
+            }
+        }
         self.prepare(scratch, around);
         let mut random = self.random.clone();
         scratch.ways.clear();
@@ -345,7 +385,7 @@ impl Tabu<'_> {
             for place in first..last {
                 let way = scratch.ways[place];
                 let before = (place - first) as u16;
-                if way.cost + weight <= bound {
+                if self.wishes.is_none() && way.cost + weight <= bound {
                     let dropped = Way {
                         state: without(way.state, over),
                         cost: way.cost + weight,
@@ -360,9 +400,16 @@ impl Tabu<'_> {
                     let k = free.trailing_zeros() as usize / 8;
                     free &= free - 1;
                     let byte = 0xff << (8 * k);
+                    let mut cost = way.cost;
+                    if let Some(wishes) = self.wishes {
+                        cost += wishes.cost(*item as usize, resources[k] as u32);
+                        if cost + coming[at + 1] > bound {
+                            continue;
+                        }
+                    }
                     let put = Way {
                         state: without(way.state & !byte | here.rank & byte, over),
-                        cost: way.cost,
+                        cost,
                         before,
                         choice: k as u8,
                         lot: 0,
@@ -436,8 +483,10 @@ impl Tabu<'_> {
         let working = (0..count).filter(stays).fold(0, |set, k| set | 1 << k);
         for set in 0u32..1 << count {
             let resting = set.count_ones() as usize;
-            let cost = rests.saturating_sub(resting) as u64 * u64::from(self.rest_weight);
-            if resting > rests || cost > bound || set & working != 0 {
+            let fewer = rests.saturating_sub(resting) as u64;
+            let cost = fewer * u64::from(self.rest_weight);
+            let dear = cost > bound || (fewer > 0 && self.wishes.is_some());
+            if resting > rests || dear || set & working != 0 {
                 continue;
             }
             let chosen = (0..count).filter(|k| set & (1 << k) != 0);

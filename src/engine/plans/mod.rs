@@ -7,7 +7,7 @@ mod joint;
 pub(super) mod keep;
 pub(super) mod rows;
 pub(super) mod slices;
-mod tabu;
+pub(super) mod tabu;
 
 /// No resource.
 pub(crate) const NONE: u32 = u32::MAX;

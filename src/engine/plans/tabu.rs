@@ -7,6 +7,7 @@
 //! Nagata and Braysy (2009); tabu tenures follow Glover (1989).
 
 use super::{Assignment, NONE};
+use crate::engine::changes::Wishes;
 use crate::engine::random::Random;
 use crate::engine::{Problem, Stopper};
 
@@ -77,6 +78,8 @@ pub(crate) struct Tabu<'a> {
     /// Where the least was missing in this slice, while that is watched.
     low: Option<(u64, Assignment, Vec<bool>)>,
     step: u64,
+    /// What it costs to have an item on a resource, when fewest changes are wanted.
+    pub(super) wishes: Option<&'a Wishes>,
     pub(super) random: Random,
     pub(super) scratch: super::joint::Scratch,
 }
@@ -144,9 +147,15 @@ impl<'a> Tabu<'a> {
             by_weight: true,
             low: None,
             step: 0,
+            wishes: None,
             random: Random::seeded(seed),
             scratch: super::joint::Scratch::new(),
         })
+    }
+
+    /// From now on it only rearranges, at least cost by these wishes.
+    pub(crate) fn wish(&mut self, wishes: &'a Wishes) {
+        self.wishes = Some(wishes);
     }
 
     /// Forgets how the weights have grown; to be followed by [`Tabu::aim`].

@@ -16,6 +16,7 @@ fuzz_target!(|bytes: &[u8]| {
                     timetable: read.timetable,
                     reference: None,
                     issued: None,
+                    floor: None,
                     begun: Default::default(),
                 };
                 let budget = fewest::engine::Budget { steps: Some(500), ..Default::default() };
