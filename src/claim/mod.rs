@@ -270,3 +270,105 @@ pub struct ChangesProof {
     /// Relocations that are claimed to be needed.
     pub value: usize,
 }
+
+/// Something stated that a bound rests on.
+#[derive(Clone, Debug, PartialEq, Eq, PartialOrd, Ord)]
+pub enum Ground {
+    /// A piece is pinned on a resource.
+    Pin {
+        /// The piece.
+        piece: Arc<str>,
+        /// The resource.
+        on: Arc<str>,
+    },
+    /// A request may only use some resources or kinds.
+    Only {
+        /// The request.
+        request: Arc<str>,
+    },
+    /// A request never uses a resource or kind.
+    Never {
+        /// The request.
+        request: Arc<str>,
+        /// The resource or kind.
+        name: Arc<str>,
+    },
+    /// A request needs something that not every resource offers.
+    Need {
+        /// The request.
+        request: Arc<str>,
+        /// What it needs.
+        need: Arc<str>,
+    },
+    /// A request takes so many seats.
+    Size {
+        /// The request.
+        request: Arc<str>,
+        /// Seats.
+        size: u64,
+    },
+    /// A resource is closed for a while.
+    Closure {
+        /// The resource.
+        resource: Arc<str>,
+        /// Half-open.
+        span: Span,
+    },
+    /// A resource is only open at times.
+    Opening {
+        /// The resource.
+        resource: Arc<str>,
+    },
+}
+
+/// What one pin costs.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct PinPrice {
+    /// The pinned piece.
+    pub pin: Arc<str>,
+    /// Resources that are saved without it.
+    pub saves: usize,
+    /// Whether that is all it can save; else it is what was found.
+    pub proved: bool,
+}
+
+/// Why something has no place.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct NoPlace {
+    /// The piece, with what it stays together with.
+    pub pieces: Vec<Arc<str>>,
+    /// Pieces that cannot all be placed, itself included; none when no reason was found in
+    /// the time there was.
+    pub set: Vec<Arc<str>>,
+    /// The moment at which all of them run, when it takes but one.
+    pub at: Option<Instant>,
+    /// All that any of them may use, when it takes but a moment.
+    pub resources: Vec<Arc<str>>,
+    /// The cases, when it takes more than a moment.
+    pub cases: Option<Case>,
+    /// What it rests on: without any one of them the reason does not hold.
+    pub grounds: Vec<Ground>,
+}
+
+/// Why not fewer resources, or why not everything.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct Why {
+    /// Resources in use.
+    pub count: usize,
+    /// Proved lower bound for placing everything.
+    pub floor: usize,
+    /// The largest clique.
+    pub clique: usize,
+    /// The name of the proof of the floor.
+    pub by: &'static str,
+    /// The pieces that it speaks of.
+    pub pieces: Vec<Arc<str>>,
+    /// What it rests on: without any one of them that proof does not hold.
+    pub grounds: Vec<Ground>,
+    /// What each pin among them costs.
+    pub prices: Vec<PinPrice>,
+    /// What they save together, when there are several: resources, and whether that is proved.
+    pub together: Option<(usize, bool)>,
+    /// Why some pieces have no place.
+    pub unplaced: Vec<NoPlace>,
+}

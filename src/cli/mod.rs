@@ -6,6 +6,7 @@ mod apply;
 mod audit;
 mod count;
 mod intake;
+mod why;
 
 use clap::{Args, Parser, Subcommand};
 use std::fmt::Write;
@@ -148,6 +149,16 @@ enum Command {
         #[command(flatten)]
         search: Search,
     },
+    /// What forces the count above the clique, or why something has no place
+    Why {
+        /// The timetable
+        file: PathBuf,
+        /// One JSON object
+        #[arg(long)]
+        json: bool,
+        #[command(flatten)]
+        search: Search,
+    },
     /// Rechecks the plan files beside FILE, without engine or search
     Audit {
         /// The timetable
@@ -188,6 +199,7 @@ pub fn run(args: impl IntoIterator<Item = std::ffi::OsString>) -> Outcome {
             }),
             _,
         ) => apply::apply(&file, &script, search),
+        (Some(Command::Why { file, json, search }), _) => why::why(&file, json, search),
         (Some(Command::Audit { file }), _) => audit::audit(&file),
         (Some(Command::Intake(args)), _) => intake::intake(&args),
         (None, Some(file)) if std::io::stdout().is_terminal() && std::io::stdin().is_terminal() => {
@@ -200,7 +212,7 @@ pub fn run(args: impl IntoIterator<Item = std::ffi::OsString>) -> Outcome {
 
 /// The command or option of a later version that was asked for, if one was.
 fn later(args: &[std::ffi::OsString]) -> Option<&'static str> {
-    const COMMANDS: [&str; 6] = ["why", "ease", "issue", "differs", "handouts", "spoken"];
+    const COMMANDS: [&str; 5] = ["ease", "issue", "differs", "handouts", "spoken"];
     let first = args.get(1)?;
     COMMANDS.into_iter().find(|command| *first == **command)
 }

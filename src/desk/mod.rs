@@ -8,12 +8,14 @@ mod history;
 mod safety;
 mod settle;
 mod solver;
+mod why;
 
 pub use history::Step;
 use history::TextChange;
 pub use safety::{Access, Disk, Leftover, whoami};
 pub use settle::{Settled, Survey, settle};
 pub use solver::{Event, Job, Solver};
+pub use why::why;
 
 use crate::claim::{FloorProof, Plan};
 use crate::clock::{Instant, Zone};

@@ -16,7 +16,9 @@ pub use patch::Patch;
 pub use plan::{PlanFile, State, issued_path, plan_path};
 pub use read::{Read, read};
 
+use crate::claim::Ground;
 use crate::edit::Touched;
+use crate::timetable::{Common, Timetable};
 use sha2::{Digest, Sha256};
 use std::ops::Range;
 
@@ -65,6 +67,65 @@ impl Document {
         };
         let start = places.get(at)?.start;
         Some(self.text[..start].matches('\n').count() + 1)
+    }
+
+    /// The line, from 1, of a key of a table; the table's own when it is not found.
+    fn line_of_key(&self, table: &Touched, key: &str) -> Option<usize> {
+        let (places, at, name) = match table {
+            Touched::Request(at) => (&self.requests, *at, "request"),
+            Touched::Named(at) => (&self.named, *at, "resource"),
+            Touched::Kind(at) => (&self.kinds, *at, "kind"),
+            Touched::Occurrence(at) => (&self.occurrences, *at, "occurrence"),
+            _ => return self.line_of(table),
+        };
+        let place = places.get(at)?.clone();
+        let inside = patch::key_in(&self.text[place.clone()], name, key).unwrap_or(0);
+        let before = &self.text[..place.start + inside];
+        Some(before.matches('\n').count() + 1)
+    }
+
+    /// The line, from 1, on which the ground of a bound is stated. `timetable` must be the
+    /// one that belongs to this text.
+    pub fn line_of_ground(&self, timetable: &Timetable, ground: &Ground) -> Option<usize> {
+        let request = |id: &str, key| {
+            let at = timetable.position(id)?;
+            self.line_of_key(&Touched::Request(at), key)
+        };
+        let common = |id: &str, key, states: &dyn Fn(&Common) -> bool| {
+            let named = timetable.named.iter();
+            let own = named.clone().position(|named| *named.id == *id);
+            if let Some(at) = own.filter(|at| states(&timetable.named[*at].common)) {
+                return self.line_of_key(&Touched::Named(at), key);
+            }
+            let kind = timetable.resources().get(id)?.kind.clone()?;
+            let at = timetable.kinds.iter().position(|known| known.id == kind)?;
+            self.line_of_key(&Touched::Kind(at), key)
+        };
+        match ground {
+            Ground::Pin { piece, .. } => match timetable.occurrence(piece) {
+                None => request(piece, "pin"),
+                Some((at, date)) => {
+                    let repeats = timetable.requests[at].repeats.as_ref()?;
+                    let own = repeats
+                        .differs(date)
+                        .filter(|differs| differs.pin.is_some());
+                    match own {
+                        Some(own) => self.line_of_key(&Touched::Occurrence(own.table), "pin"),
+                        None => self.line_of_key(&Touched::Request(at), "pin"),
+                    }
+                }
+            },
+            Ground::Only { request: id } => request(id, "only"),
+            Ground::Never { request: id, .. } => request(id, "never"),
+            Ground::Need { request: id, .. } => request(id, "needs"),
+            Ground::Size { request: id, .. } => request(id, "size"),
+            Ground::Closure { resource, .. } => {
+                common(resource, "closed", &|common| common.closed.is_some())
+            }
+            Ground::Opening { resource } => {
+                common(resource, "open", &|common| common.open.is_some())
+            }
+        }
     }
 
     fn places(&mut self, table: &Touched) -> (&mut Vec<Range<usize>>, usize) {

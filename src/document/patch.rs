@@ -370,6 +370,38 @@ fn element_change(
     })
 }
 
+/// A table's text as a document of its own: whether it is written in braces, and what then
+/// stands before it.
+fn source_of(fragment: &str) -> (bool, &'static str, String) {
+    let braces = fragment.starts_with('{');
+    let lead = if braces { "x = " } else { "" };
+    (braces, lead, format!("{lead}{fragment}"))
+}
+
+/// The one table of such a document.
+fn table_of<'a>(
+    parsed: &'a toml_edit::Document<&str>,
+    braces: bool,
+    name: &str,
+) -> Option<&'a dyn TableLike> {
+    if braces {
+        return Some(parsed.get("x")?.as_inline_table()?);
+    }
+    let item = parsed.get(name)?;
+    match item.as_array_of_tables() {
+        Some(tables) => Some(tables.get(0)?),
+        None => item.as_table_like(),
+    }
+}
+
+/// The byte of a key in a table's text.
+pub(super) fn key_in(fragment: &str, name: &str, key: &str) -> Option<usize> {
+    let (braces, lead, source) = source_of(fragment);
+    let parsed = toml_edit::Document::parse(source.as_str()).ok()?;
+    let table = table_of(&parsed, braces, name)?;
+    Some(table.key(key)?.span()?.start - lead.len())
+}
+
 /// The bytes of a table's text to replace, and by what; `None` when there is nothing to do.
 fn change_in(
     fragment: &str,
@@ -378,19 +410,9 @@ fn change_in(
     value: Option<Set>,
     newline: &str,
 ) -> Option<(Range<usize>, String)> {
-    let braces = fragment.starts_with('{');
-    let lead = if braces { "x = " } else { "" };
-    let source = format!("{lead}{fragment}");
+    let (braces, lead, source) = source_of(fragment);
     let parsed = toml_edit::Document::parse(source.as_str()).ok()?;
-    let table: &dyn TableLike = if braces {
-        parsed.get("x")?.as_inline_table()?
-    } else {
-        let item = parsed.get(name)?;
-        match item.as_array_of_tables() {
-            Some(tables) => tables.get(0)?,
-            None => item.as_table_like()?,
-        }
-    };
+    let table = table_of(&parsed, braces, name)?;
     let here = |span: Range<usize>| span.start - lead.len()..span.end - lead.len();
     match (table.get(key), value) {
         (None, None) => None,

@@ -15,6 +15,7 @@ mod exact;
 mod plans;
 mod problem;
 mod random;
+pub mod reasons;
 mod solve;
 mod stop;
 

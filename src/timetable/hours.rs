@@ -110,6 +110,11 @@ impl Hours {
         self.opening.is_none() && self.closed.is_empty()
     }
 
+    /// The openings, as stated; `None` is always.
+    pub fn opening(&self) -> Option<&[Opening]> {
+        self.opening.as_deref()
+    }
+
     /// The closures, as stated.
     pub fn closed(&self) -> &[Closure] {
         &self.closed

@@ -178,6 +178,21 @@ impl Timetable {
         request.map(Piece::of_request)
     }
 
+    /// The piece of that id, with the dates that it stays together with after it; empty when
+    /// there is none.
+    pub fn with_what_stays(&self, id: &str) -> Vec<Piece> {
+        let Some(piece) = self.piece(id) else {
+            return Vec::new();
+        };
+        let mut item = vec![piece];
+        let request = Arc::clone(&item[0].request);
+        if let Some(repeats) = request.repeats.as_ref().filter(|_| request.together) {
+            let dates = (0..repeats.dates().len()).map(|at| Piece::of_date(&request, repeats, at));
+            item.extend(dates.filter(|date| !date.withdrawn && *date.id != *id));
+        }
+        item
+    }
+
     /// How many tables of what differs on a date there are.
     pub fn differing_tables(&self) -> usize {
         let repeating = self.requests.iter().filter_map(|r| r.repeats.as_ref());

@@ -5,9 +5,11 @@
 
 mod reason;
 mod state;
+mod why;
 
 pub use reason::{finding, unfit, unplaced};
 pub use state::{Progress, count_of, count_words, doubled, peaks, span, state, state_name};
+pub use why::{ground, no_place, why};
 
 /// A cautious line for everything that speaks of people and rooms: the figures are the
 /// file's own.

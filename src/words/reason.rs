@@ -5,7 +5,6 @@ use crate::claim::{Reason, Unplaced};
 use crate::text::clean;
 use crate::timetable::{Finding, FindingKind, Piece, Timetable, Unfit, all_may_use};
 use std::collections::BTreeMap;
-use std::sync::Arc;
 
 /// Why one resource cannot take a piece.
 pub fn unfit(unfit: &Unfit) -> String {
@@ -34,7 +33,7 @@ pub fn unplaced(timetable: &Timetable, unplaced: &Unplaced) -> String {
         Reason::PinTaken { pin, by } => format!("only {pin} may take it, and {by} has it then"),
         Reason::AllTaken => format!("every {} that may take it is taken then", clean(&noun.one)),
         Reason::NoResource => {
-            let item = item_of(timetable, &unplaced.piece);
+            let item = timetable.with_what_stays(&unplaced.piece);
             match item.is_empty() {
                 true => "it is unknown".into(),
                 false => no_resource(timetable, &item),
@@ -43,23 +42,9 @@ pub fn unplaced(timetable: &Timetable, unplaced: &Unplaced) -> String {
     }
 }
 
-/// The piece of that id, with the dates that it stays together with after it.
-fn item_of(timetable: &Timetable, id: &str) -> Vec<Piece> {
-    let Some(piece) = timetable.piece(id) else {
-        return Vec::new();
-    };
-    let mut item = vec![piece];
-    let request = Arc::clone(&item[0].request);
-    if let Some(repeats) = request.repeats.as_ref().filter(|_| request.together) {
-        let dates = (0..repeats.dates().len()).map(|at| Piece::of_date(&request, repeats, at));
-        item.extend(dates.filter(|date| !date.withdrawn && *date.id != *id));
-    }
-    item
-}
-
 /// Why no resource at all may take a piece (or pieces that stay together): the reasons,
 /// counted.
-fn no_resource(timetable: &Timetable, item: &[Piece]) -> String {
+pub(super) fn no_resource(timetable: &Timetable, item: &[Piece]) -> String {
     let noun = &timetable.settings.noun;
     let resources = timetable.resources();
     if let Some(pin) = item.iter().find_map(|piece| piece.pin.as_ref()) {
@@ -137,7 +122,7 @@ pub fn finding(timetable: &Timetable, finding: &Finding) -> String {
             "{piece} is pinned on {pin}, but must stay together with {other}, which is pinned elsewhere"
         ),
         FindingKind::NoResource => {
-            let because = no_resource(timetable, &item_of(timetable, piece));
+            let because = no_resource(timetable, &timetable.with_what_stays(piece));
             format!(
                 "{piece} has no possible {}: {because}",
                 clean(&timetable.settings.noun.one)

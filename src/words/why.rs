@@ -1,0 +1,261 @@
+//! Why not fewer, and why not everything, in sentences that can be said aloud.
+
+use super::{count_of, list, span};
+use crate::claim::{Ground, NoPlace, Why};
+use crate::clock::Zone;
+use crate::text::clean;
+use crate::timetable::{Piece, Timetable};
+use std::collections::BTreeMap;
+
+/// Names in a sentence before the rest is counted.
+const MOST_NAMES: usize = 9;
+
+/// A ground as an edit, or as the key that states it.
+pub fn ground(ground: &Ground, zone: Zone) -> String {
+    match ground {
+        Ground::Pin { piece, on } => format!("pin {piece} on {on}"),
+        Ground::Only { request } => format!("{request} only"),
+        Ground::Never { request, name } => format!("{request} never {name}"),
+        Ground::Need { request, need } => format!("{request} needs {}", clean(need)),
+        Ground::Size { request, size } => format!("{request} size {size}"),
+        Ground::Closure { resource, span } => format!(
+            "close {resource} from {} to {}",
+            zone.print(span.start),
+            zone.print(span.end)
+        ),
+        Ground::Opening { resource } => format!("{resource} open"),
+    }
+}
+
+/// Grounds in a sentence: the same sort together.
+fn grounds(grounds: &[Ground]) -> Vec<String> {
+    let mut pins: Vec<String> = Vec::new();
+    let mut sorts: BTreeMap<(u8, String), Vec<&str>> = BTreeMap::new();
+    for ground in grounds {
+        let mut add =
+            |order: u8, sort: String, name| sorts.entry((order, sort)).or_default().push(name);
+        match ground {
+            Ground::Pin { piece, on } => pins.push(format!("{piece} is pinned on {on}")),
+            Ground::Need { request, need } => {
+                add(0, format!("# {} {}", "needs", clean(need)), request)
+            }
+            Ground::Size { request, .. } => add(1, "the size of".into(), request),
+            Ground::Only { request } => add(2, "what is allowed to".into(), request),
+            Ground::Never { request, .. } => add(3, "what is ruled out for".into(), request),
+            Ground::Closure { resource, .. } => add(4, "the closure of".into(), resource),
+            Ground::Opening { resource } => add(5, "the opening times of".into(), resource),
+        }
+    }
+    let sorted = sorts.into_iter().map(|((_, sort), names)| {
+        let names = list(&names, MOST_NAMES);
+        match sort.strip_prefix("# ") {
+            Some(rest) => format!(
+                "{names} {}",
+                if names.contains(" and ") {
+                    rest.replacen("needs", "need", 1)
+                } else {
+                    rest.into()
+                }
+            ),
+            None => format!("{sort} {names}"),
+        }
+    });
+    pins.into_iter().chain(sorted).collect()
+}
+
+/// The whole answer in a few sentences.
+pub fn why(timetable: &Timetable, why: &Why) -> String {
+    let mut said = vec![floor(timetable, why)];
+    let reasons = grounds(&why.grounds);
+    if !reasons.is_empty() {
+        let reasons: Vec<&str> = reasons.iter().map(String::as_str).collect();
+        said.push(format!("That rests on this: {}.", reasons.join("; ")));
+    }
+    said.extend(prices(timetable, why));
+    said.extend(
+        why.unplaced
+            .iter()
+            .map(|unplaced| no_place(timetable, unplaced)),
+    );
+    said.join(" ")
+}
+
+fn floor(timetable: &Timetable, why: &Why) -> String {
+    let noun = &timetable.settings.noun;
+    let (one, floor) = (clean(&noun.one), count_of(why.floor, noun));
+    let names: Vec<&str> = why.pieces.iter().map(|id| &**id).collect();
+    let names = list(&names, MOST_NAMES);
+    let open = match why.count.cmp(&why.floor) {
+        std::cmp::Ordering::Greater if why.unplaced.is_empty() => format!(
+            " (The plan uses {}; that fewer cannot do is not proved.)",
+            why.count
+        ),
+        _ => String::new(),
+    };
+    if why.floor == 0 {
+        return "Nothing has to be placed.".into();
+    }
+    if why.floor <= why.clique {
+        return format!(
+            "It takes {floor} because so many overlap one another, and no two of those can share a {one}: {names}. Nothing else that is stated adds to that.{open}"
+        );
+    }
+    let ground = match why.by {
+        "incompatible" => apart(timetable, why),
+        "prices" => format!(
+            "even if every {one} took whatever suits it best, fewer could not take all of {names}"
+        ),
+        "cases" => format!("every way to put {names} on fewer fails"),
+        _ => format!("any two of {names} overlap somewhere"),
+    };
+    format!(
+        "It takes {floor}, although no more than {} overlap one another: {ground}.{open}",
+        why.clique
+    )
+}
+
+/// Why no two of some pieces can share: who runs at once, and why the others have to stay
+/// apart from them.
+fn apart(timetable: &Timetable, why: &Why) -> String {
+    let one = clean(&timetable.settings.noun.one);
+    let pieces: Vec<Piece> = why
+        .pieces
+        .iter()
+        .filter_map(|id| timetable.piece(id))
+        .collect();
+    // The moment at which most of them run.
+    let moments = pieces.iter().map(|piece| piece.span.start);
+    let at_once = moments.max_by_key(|at| {
+        let running = pieces
+            .iter()
+            .filter(|piece| piece.span.contains(*at))
+            .count();
+        (running, std::cmp::Reverse(*at))
+    });
+    let (running, others): (Vec<&Piece>, Vec<&Piece>) = pieces
+        .iter()
+        .partition(|piece| at_once.is_some_and(|at| piece.span.contains(at)));
+    let names = |pieces: &[&Piece]| {
+        let names: Vec<&str> = pieces.iter().map(|piece| &*piece.id).collect();
+        list(&names, MOST_NAMES)
+    };
+    let all = pieces.len();
+    if others.is_empty() || others.len() > 3 || running.len() < 2 {
+        let all: Vec<&Piece> = pieces.iter().collect();
+        return format!(
+            "no two of these can share a {one}, by time or by what they may use: {}",
+            names(&all)
+        );
+    }
+    let when = at_once.map_or_else(String::new, |at| {
+        let zone = timetable.settings.zone;
+        zone.civil(at).format("%a %d %b at %H:%M").to_string()
+    });
+    let others: Vec<String> = others
+        .iter()
+        .map(|piece| {
+            let may = may_use(timetable, piece);
+            format!(
+                "{} runs at another time ({}) but may only use {may}, and none of the others could have left that to it",
+                piece.id,
+                span(piece.span, timetable.settings.zone)
+            )
+        })
+        .collect();
+    format!(
+        "no two of these {all} can share a {one}. {} run at once on {when}: {}. {}",
+        running.len(),
+        names(&running),
+        others.join("; ")
+    )
+}
+
+/// What a piece may use.
+fn may_use(timetable: &Timetable, piece: &Piece) -> String {
+    let item = timetable.with_what_stays(&piece.id);
+    let all = timetable.resources().all.iter();
+    let may: Vec<&str> = all
+        .filter(|resource| crate::timetable::all_may_use(&item, resource).is_ok())
+        .map(|resource| &*resource.id)
+        .collect();
+    list(&may, 4)
+}
+
+fn prices(timetable: &Timetable, why: &Why) -> Option<String> {
+    let noun = &timetable.settings.noun;
+    let saving: Vec<String> = why
+        .prices
+        .iter()
+        .filter(|price| price.saves > 0)
+        .map(|price| {
+            format!(
+                "without the pin of {} {} would do",
+                price.pin,
+                count_of(why.count - price.saves, noun)
+            )
+        })
+        .collect();
+    let together = why.together.filter(|(saves, _)| {
+        let single = why.prices.iter().map(|price| price.saves).max();
+        *saves > single.unwrap_or(0)
+    });
+    let together = together.map(|(saves, _)| {
+        format!(
+            "without all of these pins together {} would do",
+            count_of(why.count - saves, noun)
+        )
+    });
+    let said: Vec<String> = saving.into_iter().chain(together).collect();
+    if said.is_empty() {
+        let none = !why.prices.is_empty();
+        return none.then(|| "No single one of these pins costs anything by itself.".into());
+    }
+    let mut text = said.join("; ");
+    if let Some(first) = text.get(..1) {
+        let upper = first.to_uppercase();
+        text.replace_range(..1, &upper);
+    }
+    Some(format!("{text}."))
+}
+
+/// Why something has no place.
+pub fn no_place(timetable: &Timetable, unplaced: &NoPlace) -> String {
+    let noun = &timetable.settings.noun;
+    let pieces: Vec<&str> = unplaced.pieces.iter().map(|id| &**id).collect();
+    let name = list(&pieces, 3);
+    let has = if pieces.len() == 1 { "has" } else { "have" };
+    let set: Vec<&str> = unplaced.set.iter().map(|id| &**id).collect();
+    let reasons = grounds(&unplaced.grounds);
+    let rests = match reasons.is_empty() {
+        true => String::new(),
+        false => format!(" That rests on this: {}.", reasons.join("; ")),
+    };
+    let resources: Vec<&str> = unplaced.resources.iter().map(|id| &**id).collect();
+    let ground = match (unplaced.at, &unplaced.cases, resources.as_slice()) {
+        (Some(_), _, []) => {
+            // Nothing can take it, whatever the others do.
+            let because = unplaced
+                .pieces
+                .first()
+                .map(|id| super::reason::no_resource(timetable, &timetable.with_what_stays(id)));
+            because.unwrap_or_default()
+        }
+        (Some(at), ..) => {
+            let zone = timetable.settings.zone;
+            let when = zone.civil(at).format("%a %d %b at %H:%M");
+            format!(
+                "{} run on {when}, and only {} may take any of them ({})",
+                list(&set, MOST_NAMES),
+                count_of(resources.len(), noun),
+                list(&resources, 6)
+            )
+        }
+        (None, Some(cases), _) => format!(
+            "however {} are put, one of them is left over ({} looked at)",
+            list(&set, MOST_NAMES),
+            super::count_words(cases.count(), "case")
+        ),
+        (None, None, _) => return format!("{name} {has} no place; no short reason was found."),
+    };
+    format!("{name} {has} no place: {ground}.{rests}")
+}
