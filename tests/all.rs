@@ -21,3 +21,4 @@ mod safety;
 mod samples;
 mod terminal;
 mod tools;
+mod why;

@@ -41,6 +41,9 @@ pub enum Action {
     Find,
     Findings,
     Days,
+    Why,
+    Who,
+    Prefer,
     Command,
     Help,
     Leave,
@@ -88,7 +91,7 @@ const CHANGE: &str = "Changing";
 const DESK: &str = "The desk";
 
 /// Everything that can be done, in the order of the help.
-pub const ACTIONS: [Entry; 35] = [
+pub const ACTIONS: [Entry; 38] = [
     entry(
         Action::Left,
         "left",
@@ -224,6 +227,30 @@ pub const ACTIONS: [Entry; 35] = [
         LOOK,
         None,
         "what is doubtful, has no place, or clashes",
+    ),
+    entry(
+        Action::Why,
+        "why",
+        &["y"],
+        LOOK,
+        Some("why"),
+        "why not fewer: what the count rests on, and why something has no place",
+    ),
+    entry(
+        Action::Who,
+        "who",
+        &["t"],
+        CHANGE,
+        Some("who"),
+        "who can take the piece in hand: every resource, free or not and why; Enter pins",
+    ),
+    entry(
+        Action::Prefer,
+        "prefer",
+        &["k"],
+        CHANGE,
+        None,
+        "put fewest changes before fewest resources, or back",
     ),
     entry(
         Action::Carry,

@@ -29,6 +29,11 @@ struct Report<'a> {
     unplaced: Vec<UnplacedOut<'a>>,
     unplaced_weight: u64,
     unplaced_floor: u64,
+    /// Pieces elsewhere than in the plan handed out, else the one saved; absent without one.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    relocated: Option<usize>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    relocated_floor: Option<usize>,
     clashes: Vec<ClashOut<'a>>,
     seconds: f64,
 }
@@ -156,6 +161,8 @@ fn report(settled: &Settled) -> Report<'_> {
             .collect(),
         unplaced_weight: receipt.unplaced_weight(),
         unplaced_floor: receipt.unplaced_floor(),
+        relocated: receipt.changes().map(|changes| changes.relocated()),
+        relocated_floor: receipt.changes().map(|changes| changes.floor()),
         clashes: survey
             .clashes
             .iter()
@@ -207,6 +214,9 @@ fn text(settled: &Settled, report: &Report<'_>) -> String {
     let mut out = format!("{}\n", clean(report.title));
     let state = words::state(settled.receipt(), resources, noun, Progress::AtRest);
     let _ = writeln!(out, "{state}");
+    if let Some(changes) = words::changes(settled.answer(), settled.receipt(), noun) {
+        let _ = writeln!(out, "{changes}");
+    }
     let _ = writeln!(out, "{}", words::peaks(report.clique, &survey.load, zone));
     if let Some(peak) = report.peaks.first() {
         let _ = writeln!(

@@ -18,6 +18,7 @@ mod random;
 pub mod reasons;
 mod solve;
 mod stop;
+pub mod who;
 
 pub use plans::alike::{bound_and_count, partition};
 pub use problem::{Class, Item, Problem};

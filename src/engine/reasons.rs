@@ -249,11 +249,10 @@ pub fn cannot_all(
     while next < around.len() && around.len() < AROUND {
         let from = around[next];
         next += 1;
-        for item in 0..problem.items.len() {
-            let near =
-                !seen[item] && !problem.choices(item).is_empty() && problem.overlap(from, item);
+        for (item, seen) in seen.iter_mut().enumerate() {
+            let near = !*seen && !problem.choices(item).is_empty() && problem.overlap(from, item);
             if near && around.len() < AROUND {
-                seen[item] = true;
+                *seen = true;
                 around.push(item);
             }
         }

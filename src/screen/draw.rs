@@ -30,6 +30,8 @@ pub fn draw(model: &Model, frame: &mut Frame<'_>) {
         Mode::Find(find) => cursor = panels::find::draw(model, find, buffer, whole),
         Mode::Form(form) => cursor = panels::form::draw(model, form, buffer, whole),
         Mode::Findings(at) => cursor = panels::findings::draw(model, *at, buffer, whole),
+        Mode::Why(at) => cursor = panels::why::draw(model, *at, buffer, whole),
+        Mode::Who(piece, at) => cursor = panels::who::draw(model, piece, *at, buffer, whole),
         Mode::Days(at) => cursor = panels::days::draw(model, *at, buffer, whole),
         _ => {}
     }

@@ -3,6 +3,7 @@
 //!
 //! Imports everything below.
 
+mod ask;
 mod carry;
 mod draw;
 mod form;

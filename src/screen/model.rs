@@ -4,7 +4,7 @@ use super::layout::{RowKind, Rows};
 use super::theme::Theme;
 use super::view::View;
 use crate::actions::Keys;
-use crate::claim::Reason;
+use crate::claim::{Reason, Why};
 use crate::clock::{Instant, Span};
 use crate::desk::{Desk, Settled};
 use crate::edit::{Change, Edit};
@@ -113,6 +113,10 @@ pub enum Mode {
     Changed,
     /// What is doubtful or cannot be, scrolled by so many lines.
     Findings(usize),
+    /// Why not fewer, with the chosen line.
+    Why(usize),
+    /// Who can take a piece, with the chosen resource.
+    Who(Arc<str>, usize),
     /// The days, with the chosen one.
     Days(usize),
     /// A form of fields for one request or resource.
@@ -144,6 +148,8 @@ pub struct Model {
     pub mode: Mode,
     /// For the user.
     pub message: Option<Message>,
+    /// Why not fewer, and of which state that was asked.
+    pub why: Option<(u64, Arc<Why>)>,
     /// The answer for what is carried.
     pub preview: Option<Arc<Settled>>,
     /// Which preview that must be.
@@ -178,6 +184,7 @@ impl Model {
             here: None,
             mode: Mode::Board,
             message: None,
+            why: None,
             preview: None,
             preview_generation: PREVIEWS,
             progress: Progress::Searching,

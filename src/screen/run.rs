@@ -207,6 +207,14 @@ impl Loop {
                 self.solver.submit(*job);
                 self.waiting = Some(Watch::now() + ANSWER_WITHIN);
             }
+            Effect::Why(settled) => {
+                let told = self.wake.clone();
+                std::thread::spawn(move || {
+                    let why = crate::desk::why(&settled, &crate::engine::Never);
+                    let msg = Msg::Why(settled.generation(), std::sync::Arc::new(why));
+                    let _ = told.send(Wake::Msg(msg));
+                });
+            }
             Effect::Save { other, leave } => {
                 self.model.desk.look_at_disk();
                 let own = other

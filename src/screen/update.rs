@@ -5,11 +5,13 @@ use super::carry;
 use super::layout::RowKind;
 use super::model::{Find, Mode, Model};
 use crate::actions::Action;
+use crate::claim::Why;
 use crate::clock::Instant;
-use crate::desk::{Disk, Event, Job};
+use crate::desk::{Disk, Event, Job, Settled};
 use crate::edit::{Change, Edit};
 use crate::store::Written;
 use crate::text::clean;
+use crate::timetable::Prefer;
 use crate::words::Progress;
 use crossterm::event::{KeyCode, KeyEvent, KeyModifiers};
 use fuzzy_matcher::FuzzyMatcher;
@@ -29,6 +31,8 @@ pub enum Msg {
     Resize(u16, u16),
     /// The solver says something.
     Solver(Event),
+    /// Why not fewer, for the state of that generation.
+    Why(u64, Arc<Why>),
     /// The journal's thread says something.
     Written(Written),
     /// The file on the disk is not what it was.
@@ -58,6 +62,8 @@ pub enum Effect {
         /// Whether to leave then.
         leave: bool,
     },
+    /// Find out why not fewer.
+    Why(Arc<Settled>),
     /// The plan that a save waited for is here.
     WritePlan,
     /// Take in the edits of an earlier session, or leave them in a file of their own.
@@ -99,6 +105,10 @@ pub fn update(model: &mut Model, msg: Msg) -> Vec<Effect> {
             Vec::new()
         }
         Msg::Solver(event) => heard(model, event),
+        Msg::Why(generation, why) => {
+            model.why = Some((generation, why));
+            Vec::new()
+        }
         Msg::Written(written) => {
             let before = model.desk.unsafe_because().is_some();
             model.desk.written(&written);
@@ -228,7 +238,8 @@ fn keyed(model: &mut Model, key: KeyEvent) -> Vec<Effect> {
                 }
             }
         }
-        (Mode::Findings(_) | Mode::Days(_), action) => {
+        (Mode::Who(..), action) => super::ask::choosing(model, key, action),
+        (Mode::Findings(_) | Mode::Days(_) | Mode::Why(_), action) => {
             super::panels::listed(model, key, action);
             Vec::new()
         }
@@ -526,6 +537,15 @@ fn acting(model: &mut Model, action: Action) -> Vec<Effect> {
         Action::Drop => return drop_request(model),
         Action::Findings => model.mode = Mode::Findings(0),
         Action::Days => super::panels::days::open(model),
+        Action::Why => return super::ask::why(model),
+        Action::Who => super::ask::who(model),
+        Action::Prefer => {
+            let prefer = match model.desk.timetable().settings.prefer {
+                Prefer::Count => Prefer::Changes,
+                Prefer::Changes => Prefer::Count,
+            };
+            return make(model, vec![Change::Prefer(prefer).into()]);
+        }
         Action::Undo => return make(model, vec![Change::Undo.into()]),
         Action::Redo => return make(model, vec![Change::Redo.into()]),
         Action::Carry => carry::lift(model),
@@ -546,7 +566,7 @@ fn page(model: &Model) -> usize {
     usize::from(model.areas().board.height).max(1)
 }
 
-fn to_row(model: &mut Model, row: usize) {
+pub(super) fn to_row(model: &mut Model, row: usize) {
     model.row = row.min(model.rows.rows.len().saturating_sub(1));
     let Some(here) = model.rows.rows.get(model.row) else {
         return;

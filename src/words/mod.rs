@@ -1,14 +1,16 @@
 //! Sentences: what is known, why something has no place, what a finding means. Everything
 //! from files is cleaned here before it can reach a terminal.
 //!
-//! Imports `clock`, `text`, `timetable`, `claim`, `overlap` and `audit`.
+//! Imports `clock`, `text`, `timetable`, `claim`, `overlap`, `audit` and `engine`.
 
 mod reason;
 mod state;
 mod why;
 
-pub use reason::{finding, unfit, unplaced};
-pub use state::{Progress, count_of, count_words, doubled, peaks, span, state, state_name};
+pub use reason::{choice, finding, unfit, unplaced};
+pub use state::{
+    Progress, changes, count_of, count_words, doubled, peaks, span, state, state_name,
+};
 pub use why::{ground, no_place, why};
 
 /// A cautious line for everything that speaks of people and rooms: the figures are the

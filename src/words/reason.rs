@@ -2,6 +2,7 @@
 
 use super::{count_of, list};
 use crate::claim::{Reason, Unplaced};
+use crate::engine::who::{Choice, Verdict};
 use crate::text::clean;
 use crate::timetable::{Finding, FindingKind, Piece, Timetable, Unfit, all_may_use};
 use std::collections::BTreeMap;
@@ -21,6 +22,34 @@ pub fn unfit(unfit: &Unfit) -> String {
             format!("{one} and {other} must stay together and overlap on it")
         }
         Unfit::Other(piece, because) => format!("for {piece} {}", self::unfit(because)),
+    }
+}
+
+/// What holds of a resource for a piece.
+pub fn choice(choice: &Choice) -> String {
+    match &choice.verdict {
+        Verdict::Here => "it is there now".into(),
+        Verdict::Free => "free".into(),
+        Verdict::FreeIf(moves) => {
+            let moves: Vec<String> = moves
+                .iter()
+                .map(|(piece, to)| format!("{piece} goes to {to}"))
+                .collect();
+            let moves: Vec<&str> = moves.iter().map(String::as_str).collect();
+            format!("free if {}", list(&moves, 4))
+        }
+        Verdict::Taken(by) => {
+            let names: Vec<&str> = by.iter().map(|id| &**id).collect();
+            let (has, they) = match names.len() {
+                1 => ("has", "it has"),
+                _ => ("have", "they have"),
+            };
+            format!(
+                "taken: {} {has} it, and {they} no free place elsewhere",
+                list(&names, 3)
+            )
+        }
+        Verdict::Cannot(because) => format!("cannot, because {}", unfit(because)),
     }
 }
 

@@ -1,6 +1,7 @@
 //! The state of knowledge in words.
 
 use crate::audit::{Knowledge, Receipt};
+use crate::claim::Answer;
 use crate::clock::{Instant, Resolved, Span, Zone};
 use crate::overlap::Load;
 use crate::text::clean;
@@ -60,6 +61,27 @@ pub fn state(receipt: &Receipt, resources: usize, noun: &Noun, progress: Progres
             }
         }
     }
+}
+
+/// What relocates against the earlier plan, and what the other choice would come to; `None`
+/// when nothing relocates and there is no choice.
+pub fn changes(answer: &Answer, receipt: &Receipt, noun: &Noun) -> Option<String> {
+    let found = receipt.changes()?;
+    let other = answer.changes.as_ref().and_then(|changes| changes.other);
+    let mut said = match (found.relocated(), found.fewest()) {
+        (0, _) if other.is_none() => return None,
+        (count, true) => format!("{count} relocated, fewest"),
+        (count, false) => format!("{count} relocated, at least {}", found.floor()),
+    };
+    if let Some((in_use, relocated)) = other {
+        let here = receipt.in_use();
+        let more = count_of(in_use.abs_diff(here), noun);
+        match in_use > here {
+            true => said.push_str(&format!("; with {more} more only {relocated}")),
+            false => said.push_str(&format!("; {more} fewer would relocate {relocated}")),
+        }
+    }
+    Some(said)
 }
 
 /// The name of a state in the contract.

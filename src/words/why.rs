@@ -2,13 +2,16 @@
 
 use super::{count_of, list, span};
 use crate::claim::{Ground, NoPlace, Why};
-use crate::clock::Zone;
+use crate::clock::{Instant, Zone};
 use crate::text::clean;
 use crate::timetable::{Piece, Timetable};
 use std::collections::BTreeMap;
 
 /// Names in a sentence before the rest is counted.
 const MOST_NAMES: usize = 9;
+
+/// Pieces beside those that run at once that are told one by one.
+const FEW: usize = 3;
 
 /// A ground as an edit, or as the key that states it.
 pub fn ground(ground: &Ground, zone: Zone) -> String {
@@ -28,7 +31,7 @@ pub fn ground(ground: &Ground, zone: Zone) -> String {
 }
 
 /// Grounds in a sentence: the same sort together.
-fn grounds(grounds: &[Ground]) -> Vec<String> {
+fn grounds(timetable: &Timetable, grounds: &[Ground]) -> Vec<String> {
     let mut pins: Vec<String> = Vec::new();
     let mut sorts: BTreeMap<(u8, String), Vec<&str>> = BTreeMap::new();
     for ground in grounds {
@@ -47,7 +50,11 @@ fn grounds(grounds: &[Ground]) -> Vec<String> {
         }
     }
     let sorted = sorts.into_iter().map(|((_, sort), names)| {
-        let names = list(&names, MOST_NAMES);
+        let all = names.len() == timetable.resources().all.len() && names.len() > 3;
+        let names = match all && sort.starts_with("the ") {
+            true => format!("all {}", count_of(names.len(), &timetable.settings.noun)),
+            false => list(&names, MOST_NAMES),
+        };
         match sort.strip_prefix("# ") {
             Some(rest) => format!(
                 "{names} {}",
@@ -65,18 +72,19 @@ fn grounds(grounds: &[Ground]) -> Vec<String> {
 
 /// The whole answer in a few sentences.
 pub fn why(timetable: &Timetable, why: &Why) -> String {
-    let mut said = vec![floor(timetable, why)];
-    let reasons = grounds(&why.grounds);
+    // What has no place matters most.
+    let unplaced = why
+        .unplaced
+        .iter()
+        .map(|unplaced| no_place(timetable, unplaced));
+    let mut said: Vec<String> = unplaced.collect();
+    said.push(floor(timetable, why));
+    let reasons = grounds(timetable, &why.grounds);
     if !reasons.is_empty() {
         let reasons: Vec<&str> = reasons.iter().map(String::as_str).collect();
         said.push(format!("That rests on this: {}.", reasons.join("; ")));
     }
     said.extend(prices(timetable, why));
-    said.extend(
-        why.unplaced
-            .iter()
-            .map(|unplaced| no_place(timetable, unplaced)),
-    );
     said.join(" ")
 }
 
@@ -118,56 +126,74 @@ fn floor(timetable: &Timetable, why: &Why) -> String {
 /// apart from them.
 fn apart(timetable: &Timetable, why: &Why) -> String {
     let one = clean(&timetable.settings.noun.one);
+    let zone = timetable.settings.zone;
     let pieces: Vec<Piece> = why
         .pieces
         .iter()
         .filter_map(|id| timetable.piece(id))
         .collect();
-    // The moment at which most of them run.
-    let moments = pieces.iter().map(|piece| piece.span.start);
-    let at_once = moments.max_by_key(|at| {
-        let running = pieces
-            .iter()
-            .filter(|piece| piece.span.contains(*at))
-            .count();
-        (running, std::cmp::Reverse(*at))
-    });
-    let (running, others): (Vec<&Piece>, Vec<&Piece>) = pieces
-        .iter()
-        .partition(|piece| at_once.is_some_and(|at| piece.span.contains(at)));
-    let names = |pieces: &[&Piece]| {
+    let names = |pieces: &[&Piece], most: usize| {
         let names: Vec<&str> = pieces.iter().map(|piece| &*piece.id).collect();
-        list(&names, MOST_NAMES)
+        list(&names, most)
     };
-    let all = pieces.len();
-    if others.is_empty() || others.len() > 3 || running.len() < 2 {
-        let all: Vec<&Piece> = pieces.iter().collect();
-        return format!(
-            "no two of these can share a {one}, by time or by what they may use: {}",
-            names(&all)
-        );
+    // Those that run at one moment, then those of the rest, and so on.
+    let mut groups: Vec<(Instant, Vec<&Piece>)> = Vec::new();
+    let mut rest: Vec<&Piece> = pieces.iter().collect();
+    while !rest.is_empty() {
+        let running = |at: Instant| rest.iter().filter(move |piece| piece.span.contains(at));
+        let moments = rest.iter().map(|piece| piece.span.start);
+        let Some(at) = moments.max_by_key(|at| (running(*at).count(), std::cmp::Reverse(*at)))
+        else {
+            break;
+        };
+        let group: Vec<&Piece> = running(at).copied().collect();
+        rest.retain(|piece| !piece.span.contains(at));
+        groups.push((at, group));
     }
-    let when = at_once.map_or_else(String::new, |at| {
-        let zone = timetable.settings.zone;
-        zone.civil(at).format("%a %d %b at %H:%M").to_string()
-    });
-    let others: Vec<String> = others
-        .iter()
-        .map(|piece| {
-            let may = may_use(timetable, piece);
+    // The largest first tells one that stands out; several are told in order of time.
+    if groups.len() > 1 && pieces.len() - groups[0].1.len() > FEW {
+        groups.sort_by_key(|(at, _)| *at);
+    }
+    let all: Vec<&Piece> = pieces.iter().collect();
+    let when = |at: Instant| zone.civil(at).format("%a %d %b at %H:%M").to_string();
+    match groups.as_slice() {
+        [(at, first), others @ ..]
+            if first.len() > 1 && !others.is_empty() && all.len() - first.len() <= FEW =>
+        {
+            let others = others.iter().flat_map(|(_, group)| group).map(|piece| {
+                format!(
+                    "{} runs at another time ({}), but may only use {}; no {one} that it may use can take any of those {} as well",
+                    piece.id,
+                    span(piece.span, zone),
+                    may_use(timetable, piece),
+                    first.len()
+                )
+            });
+            let others: Vec<String> = others.collect();
             format!(
-                "{} runs at another time ({}) but may only use {may}, and none of the others could have left that to it",
-                piece.id,
-                span(piece.span, timetable.settings.zone)
+                "no two of the {} pieces counted can share a {one}. {} run at once on {}: {}. {}",
+                all.len(),
+                first.len(),
+                when(*at),
+                names(first, MOST_NAMES),
+                others.join("; ")
             )
-        })
-        .collect();
-    format!(
-        "no two of these {all} can share a {one}. {} run at once on {when}: {}. {}",
-        running.len(),
-        names(&running),
-        others.join("; ")
-    )
+        }
+        [_, _, ..] if groups.len() <= 6 => {
+            let said = groups.iter().map(|(at, group)| {
+                format!("{} on {} ({})", group.len(), when(*at), names(group, 3))
+            });
+            let said: Vec<String> = said.collect();
+            format!(
+                "they run in groups, {}, and no {one} that may take one of a group may also take one of another",
+                said.join(", ")
+            )
+        }
+        _ => format!(
+            "no two of these can share a {one}, by time or by what they may use: {}",
+            names(&all, MOST_NAMES)
+        ),
+    }
 }
 
 /// What a piece may use.
@@ -225,7 +251,7 @@ pub fn no_place(timetable: &Timetable, unplaced: &NoPlace) -> String {
     let name = list(&pieces, 3);
     let has = if pieces.len() == 1 { "has" } else { "have" };
     let set: Vec<&str> = unplaced.set.iter().map(|id| &**id).collect();
-    let reasons = grounds(&unplaced.grounds);
+    let reasons = grounds(timetable, &unplaced.grounds);
     let rests = match reasons.is_empty() {
         true => String::new(),
         false => format!(" That rests on this: {}.", reasons.join("; ")),

@@ -124,7 +124,7 @@ fn typed(model: &Model, input: &tui_input::Input, buffer: &mut Buffer, area: Rec
 }
 
 /// What is hinted at, the most needed first.
-const HINTS: [Action; 12] = [
+const HINTS: [Action; 14] = [
     Action::Help,
     Action::Carry,
     Action::Undo,
@@ -132,6 +132,8 @@ const HINTS: [Action; 12] = [
     Action::Leave,
     Action::Find,
     Action::Command,
+    Action::Why,
+    Action::Who,
     Action::NextPeak,
     Action::Pin,
     Action::Fasten,

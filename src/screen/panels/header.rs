@@ -66,6 +66,9 @@ pub(in crate::screen) fn draw(model: &Model, buffer: &mut Buffer, area: Rect) {
             let floor = settled.receipt().floor();
             peaks = peaks.replacen(':', &format!(", {{ }} need {floor}:"), 1);
         }
+        if let Some(changes) = words::changes(settled.answer(), settled.receipt(), &settings.noun) {
+            peaks = format!("{changes}   {peaks}");
+        }
         let room = usize::from(area.width).saturating_sub(usize::from(x) + 3 + width(&saved) + 1);
         x = put(
             buffer,

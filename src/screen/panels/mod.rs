@@ -10,6 +10,8 @@ pub(super) mod form;
 pub(super) mod header;
 pub(super) mod help;
 pub(super) mod load;
+pub(super) mod who;
+pub(super) mod why;
 
 use super::draw::{blank, put};
 use super::model::{Mode, Model};
@@ -32,11 +34,12 @@ fn sheet(model: &Model, buffer: &mut Buffer, whole: Rect, height: u16, heading: 
 
 /// A key in one of the panels that list something: up and down, Enter goes, all else leaves.
 pub(super) fn listed(model: &mut Model, key: KeyEvent, action: Option<Action>) {
-    let count = match model.mode {
+    let count = match &model.mode {
         Mode::Findings(_) => findings::lines(model).len(),
+        Mode::Why(_) => why::lines(model).len(),
         _ => days::days(model).len(),
     };
-    let (Mode::Findings(chosen) | Mode::Days(chosen)) = &mut model.mode else {
+    let (Mode::Findings(chosen) | Mode::Days(chosen) | Mode::Why(chosen)) = &mut model.mode else {
         return;
     };
     let page = usize::from(model.size.1) / 2;
@@ -66,6 +69,29 @@ fn go(model: &mut Model) {
             {
                 model.show_day(model.rows.pieces[piece].span.start);
                 model.take(piece);
+            }
+        }
+        Mode::Why(chosen) => {
+            let line = why::lines(model).into_iter().nth(chosen);
+            match line.and_then(|(_, target)| target) {
+                Some(why::Target::Piece(id)) => {
+                    if let Some(piece) = model.rows.find(&id) {
+                        model.show_day(model.rows.pieces[piece].span.start);
+                        model.take(piece);
+                    }
+                }
+                Some(why::Target::Resource(id)) => {
+                    let rows = model.rows.rows.iter();
+                    let row = rows
+                        .map(|row| model.row_name(&row.kind))
+                        .position(|name| *name == *id);
+                    match row {
+                        Some(row) => super::update::to_row(model, row),
+                        None => model.say(format!("{id} is not in use"), false),
+                    }
+                }
+                // A line of the sentence leads nowhere.
+                None => model.mode = Mode::Why(chosen),
             }
         }
         Mode::Days(chosen) => {
