@@ -7,7 +7,7 @@ use fewest::audit;
 use fewest::claim::Ground;
 use fewest::desk::why;
 use fewest::engine::Never;
-use fewest::engine::reasons::{explicit, without};
+use fewest::engine::reasons::{explicit, plainer, without};
 use fewest::engine::who::{Verdict, who_can_take};
 use proptest::prelude::*;
 use std::collections::BTreeSet;
@@ -72,7 +72,9 @@ proptest! {
             let less = only(&tiny, &requests, &why.grounds);
             let (left, used) = less.best();
             prop_assert!(left > 0 || used >= why.floor, "{why:?}");
-            let floor = &settled.answer().floor;
+            let floor = plainer(&read, &settled.answer().floor, &Never);
+            let floor = floor.as_ref().unwrap_or(&settled.answer().floor);
+            prop_assert_eq!(floor.name(), why.by);
             let small = explicit(&read, &|request| requests.contains(&request.id[1..].parse().unwrap()));
             prop_assert!(audit::check_floor(&small, floor).is_ok());
             // All that is not a ground taken away, and then one ground as well.

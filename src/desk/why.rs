@@ -4,7 +4,7 @@
 use super::{Job, Settled};
 use crate::audit;
 use crate::claim::{FloorProof, Ground, HallViolation, NoPlace, PinPrice, Why};
-use crate::engine::reasons::{cannot_all, explicit, minimal, without};
+use crate::engine::reasons::{cannot_all, explicit, minimal, plainer, without};
 use crate::engine::{Budget, Either, Stopper, Until};
 use crate::lookup::FastSet;
 use crate::timetable::{Piece, Resource, Timetable, all_may_use};
@@ -28,12 +28,15 @@ const PER_PIECE: Duration = Duration::from_secs(2);
 pub fn why(settled: &Settled, stop: &(dyn Stopper + Sync)) -> Why {
     let (answer, receipt) = (settled.answer(), settled.receipt());
     let timetable = &settled.survey().timetable;
+    let plainer = plainer(timetable, &answer.floor, stop);
+    let plainer = plainer.filter(|plainer| audit::check_floor(timetable, plainer).is_ok());
+    let floor = plainer.as_ref().unwrap_or(&answer.floor);
     let mut why = Why {
         count: receipt.in_use(),
         floor: receipt.floor(),
         clique: settled.clique(),
-        by: answer.floor.name(),
-        pieces: answer.floor.pieces(),
+        by: floor.name(),
+        pieces: floor.pieces(),
         grounds: Vec::new(),
         prices: Vec::new(),
         together: None,
@@ -41,7 +44,7 @@ pub fn why(settled: &Settled, stop: &(dyn Stopper + Sync)) -> Why {
     };
     if why.floor > why.clique {
         let small = only_with(timetable, &why.pieces);
-        let holds = |less: &Timetable| audit::check_floor(less, &answer.floor).is_ok();
+        let holds = |less: &Timetable| audit::check_floor(less, floor).is_ok();
         if holds(&small) {
             why.grounds = minimal(&small, &holds, stop).0;
         }

@@ -2,9 +2,10 @@
 //! remains is minimal for that bound, because a bound that fails with less stated fails with
 //! still less (deletion filter; Chinneck, Dravnieks 1991).
 
+use super::bounds::incompatible;
 use super::exact::cases::{self, Outcome};
 use super::{Problem, Stopper};
-use crate::claim::{Case, Ground};
+use crate::claim::{Case, FloorProof, Ground};
 use crate::timetable::{Common, Listed, Named, Piece, Request, Timetable};
 use std::collections::HashMap;
 use std::sync::Arc;
@@ -218,6 +219,34 @@ fn drop_some(
     let (one, other) = some.split_at(some.len() / 2);
     drop_some(left, one, holds, grounds);
     drop_some(left, other, holds, grounds);
+}
+
+/// Climbs in the search for a plainer proof.
+const CLIMBS: u32 = 400;
+
+/// A proof of the same floor that is easier to follow than prices or cases, if there is one:
+/// pieces of which no two can share a resource.
+pub fn plainer(
+    timetable: &Timetable,
+    floor: &FloorProof,
+    stop: &dyn Stopper,
+) -> Option<FloorProof> {
+    if !matches!(floor, FloorProof::Prices { .. } | FloorProof::Cases { .. }) {
+        return None;
+    }
+    let problem = Problem::new(timetable, &timetable.pieces(), &HashMap::new());
+    let mut search = incompatible::Search::new(&problem, &[], 1, stop)?;
+    for _ in 0..CLIMBS {
+        if search.best.len() >= floor.value() || stop.stop() {
+            break;
+        }
+        search.climb();
+    }
+    let enough = search.best.len() >= floor.value();
+    let names = search.best.iter().take(floor.value());
+    enough.then(|| FloorProof::Incompatible {
+        pieces: names.map(|item| Arc::clone(problem.name(*item))).collect(),
+    })
 }
 
 /// Cases looked at for a set that cannot all be placed.

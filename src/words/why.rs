@@ -6,6 +6,23 @@ use crate::clock::{Instant, Zone};
 use crate::text::clean;
 use crate::timetable::{Piece, Timetable};
 use std::collections::BTreeMap;
+use std::sync::Arc;
+
+/// What a piece is called in a sentence: what stays together goes by the name of its request.
+fn spoken(timetable: &Timetable, id: &str) -> String {
+    match timetable.piece(id) {
+        Some(piece) if piece.together() => piece.request.id.to_string(),
+        _ => id.to_string(),
+    }
+}
+
+/// A list of pieces as they are called.
+fn pieces(timetable: &Timetable, ids: &[Arc<str>], most: usize) -> String {
+    let mut names: Vec<String> = ids.iter().map(|id| spoken(timetable, id)).collect();
+    names.dedup();
+    let names: Vec<&str> = names.iter().map(String::as_str).collect();
+    list(&names, most)
+}
 
 /// Names in a sentence before the rest is counted.
 const MOST_NAMES: usize = 9;
@@ -91,8 +108,7 @@ pub fn why(timetable: &Timetable, why: &Why) -> String {
 fn floor(timetable: &Timetable, why: &Why) -> String {
     let noun = &timetable.settings.noun;
     let (one, floor) = (clean(&noun.one), count_of(why.floor, noun));
-    let names: Vec<&str> = why.pieces.iter().map(|id| &**id).collect();
-    let names = list(&names, MOST_NAMES);
+    let names = pieces(timetable, &why.pieces, MOST_NAMES);
     let open = match why.count.cmp(&why.floor) {
         std::cmp::Ordering::Greater if why.unplaced.is_empty() => format!(
             " (The plan uses {}; that fewer cannot do is not proved.)",
@@ -133,8 +149,8 @@ fn apart(timetable: &Timetable, why: &Why) -> String {
         .filter_map(|id| timetable.piece(id))
         .collect();
     let names = |pieces: &[&Piece], most: usize| {
-        let names: Vec<&str> = pieces.iter().map(|piece| &*piece.id).collect();
-        list(&names, most)
+        let ids: Vec<Arc<str>> = pieces.iter().map(|piece| Arc::clone(&piece.id)).collect();
+        self::pieces(timetable, &ids, most)
     };
     // Those that run at one moment, then those of the rest, and so on.
     let mut groups: Vec<(Instant, Vec<&Piece>)> = Vec::new();
@@ -163,7 +179,7 @@ fn apart(timetable: &Timetable, why: &Why) -> String {
             let others = others.iter().flat_map(|(_, group)| group).map(|piece| {
                 format!(
                     "{} runs at another time ({}), but may only use {}; no {one} that it may use can take any of those {} as well",
-                    piece.id,
+                    spoken(timetable, &piece.id),
                     span(piece.span, zone),
                     may_use(timetable, piece),
                     first.len()
@@ -247,10 +263,12 @@ fn prices(timetable: &Timetable, why: &Why) -> Option<String> {
 /// Why something has no place.
 pub fn no_place(timetable: &Timetable, unplaced: &NoPlace) -> String {
     let noun = &timetable.settings.noun;
-    let pieces: Vec<&str> = unplaced.pieces.iter().map(|id| &**id).collect();
-    let name = list(&pieces, 3);
-    let has = if pieces.len() == 1 { "has" } else { "have" };
-    let set: Vec<&str> = unplaced.set.iter().map(|id| &**id).collect();
+    let mut name = pieces(timetable, &unplaced.pieces, 3);
+    if unplaced.pieces.len() > 1 {
+        name.push_str(&format!(" ({} dates together)", unplaced.pieces.len()));
+    }
+    let has = "has";
+    let set = pieces(timetable, &unplaced.set, MOST_NAMES);
     let reasons = grounds(timetable, &unplaced.grounds);
     let rests = match reasons.is_empty() {
         true => String::new(),
@@ -271,14 +289,14 @@ pub fn no_place(timetable: &Timetable, unplaced: &NoPlace) -> String {
             let when = zone.civil(at).format("%a %d %b at %H:%M");
             format!(
                 "{} run on {when}, and only {} may take any of them ({})",
-                list(&set, MOST_NAMES),
+                set,
                 count_of(resources.len(), noun),
                 list(&resources, 6)
             )
         }
         (None, Some(cases), _) => format!(
             "however {} are put, one of them is left over ({} looked at)",
-            list(&set, MOST_NAMES),
+            set,
             super::count_words(cases.count(), "case")
         ),
         (None, None, _) => return format!("{name} {has} no place; no short reason was found."),
