@@ -166,19 +166,24 @@ impl Tiny {
 }
 
 pub(crate) fn tiny() -> impl Strategy<Value = Tiny> {
-    sized(1..4, 0..8)
+    sized(1..4, 0..8, (1..4, 0.5))
 }
 
 /// Too many to try everything.
 pub(crate) fn small() -> impl Strategy<Value = Tiny> {
-    sized(3..6, 8..15)
+    sized(4..6, 8..15, (2..5, 0.8))
 }
 
-fn sized(rooms: Range<usize>, requests: Range<usize>) -> impl Strategy<Value = Tiny> {
+/// So many rooms and requests, with so many seats and such a chance of a projector.
+fn sized(
+    rooms: Range<usize>,
+    requests: Range<usize>,
+    (seats, projector): (Range<u32>, f64),
+) -> impl Strategy<Value = Tiny> {
     let rooms = prop::collection::vec(
         (
-            1u32..4,
-            any::<bool>(),
+            seats,
+            prop::bool::weighted(projector),
             prop::sample::select(vec![0i64, 0, 10]),
         ),
         rooms,

@@ -35,6 +35,9 @@ fn perform(model: &mut Model, effects: Vec<Effect>) {
             };
             let settled = job.run(budget, &Never, &mut |_| {}).unwrap();
             update(model, Msg::Solver(Event::Settled(settled)));
+        } else if let Effect::Why(settled) = effect {
+            let why = fewest::desk::why(&settled, &Never);
+            update(model, Msg::Why(settled.generation(), why.into()));
         }
     }
 }
@@ -70,7 +73,9 @@ fn frame(model: &Model, columns: u16, rows: u16) -> String {
 }
 
 /// Keys that open each panel, and what it shows at 80x24.
-const PANELS: [(&str, &str); 12] = [
+const PANELS: [(&str, &str); 14] = [
+    ("y", "why: Enter on a ground"),
+    ("t", "who can take"),
     ("", "? help"),
     ("?", "Keys and signs"),
     ("/el", "Find a piece"),
@@ -220,4 +225,141 @@ fn toml_edit_string(text: &str) -> String {
         quoted.push_str(&format!("\\U{:08x}", u32::from(c)));
     }
     quoted + "\""
+}
+
+/// The text of a screen of that size.
+fn shown(model: &Model) -> String {
+    frame(model, 80, 24)
+}
+
+#[test]
+fn why_leads_to_its_grounds_and_who_pins() {
+    let folder = folder_with(&["sample-timetables/exam-fortnight.toml"]);
+    let mut model = model(&folder.path().join("exam-fortnight.toml"), false);
+    type_in(&mut model, "y");
+    let text = shown(&model);
+    assert!(
+        text.contains("It takes 9 rooms, although no more than 8"),
+        "{text}"
+    );
+    assert!(text.contains("line 497: pin mus-102 on gallery"), "{text}");
+    // Down to the first ground, and to its piece.
+    for _ in 0..12 {
+        if shown(&model).contains(">line 497") {
+            break;
+        }
+        type_in(&mut model, "v");
+    }
+    type_in(&mut model, "\n");
+    assert!(shown(&model).contains("mus-102  "), "{}", shown(&model));
+    type_in(&mut model, "t");
+    let text = shown(&model);
+    assert!(text.contains("who can take mus-102"), "{text}");
+    assert!(text.contains("gallery      it is there now"), "{text}");
+    assert!(text.contains("cannot, because"), "{text}");
+    // The second is the nearest fit besides; pinned there, eight rooms do.
+    type_in(&mut model, "v\n");
+    assert_eq!(model.desk.unsaved(), 1);
+    let pinned = model
+        .desk
+        .timetable()
+        .request("mus-102")
+        .unwrap()
+        .pin
+        .clone();
+    assert_ne!(pinned.as_deref(), Some("gallery"));
+    let job = model.desk.job();
+    let settled = job.run(Budget::default(), &Never, &mut |_| {}).unwrap();
+    update(&mut model, Msg::Solver(Event::Settled(settled)));
+    assert!(
+        shown(&model).contains("8 rooms in use"),
+        "{}",
+        shown(&model)
+    );
+}
+
+/// Where fewest resources and fewest changes pull apart, the screen says what the other
+/// choice would come to, and a key chooses.
+#[test]
+fn resources_and_changes_can_pull_apart() {
+    let folder = tempfile::tempdir().unwrap();
+    let path = folder.path().join("apart.toml");
+    let mut text = "[timetable]\ntitle = \"Apart\"\nnoun = [\"crew\", \"crews\"]\n".to_string();
+    for crew in ["one", "two"] {
+        text.push_str(&format!("[[resource]]\nid = \"{crew}\"\n"));
+    }
+    for (id, from, to, pin) in [
+        ("a", 8, 9, "one"),
+        ("b", 8, 10, "two"),
+        ("c", 10, 11, "two"),
+        ("d", 11, 12, "two"),
+    ] {
+        text.push_str(&format!(
+            "[[request]]\nid = \"{id}\"\nstart = 2027-01-11T{from:02}:00:00\nend = 2027-01-11T{to:02}:00:00\npin = \"{pin}\"\n"
+        ));
+    }
+    std::fs::write(&path, text).unwrap();
+    let mut model = model(&path, false);
+    type_in(&mut model, ":unpin a\n:unpin b\n:unpin c\n:unpin d\n");
+    // Without b one crew could do it all, if a went to it.
+    type_in(&mut model, ":withdraw b\n");
+    assert!(
+        shown(&model).contains("1 crew in use, at least 1: proved"),
+        "{}",
+        shown(&model)
+    );
+    let text = shown(&model);
+    assert!(
+        text.contains("1 relocated (fewest), 0 with 1 crew more"),
+        "{text}"
+    );
+    type_in(&mut model, "u");
+    type_in(&mut model, "k");
+    type_in(&mut model, ":withdraw b\n");
+    let text = shown(&model);
+    assert!(text.contains("2 crews in use, at least 1"), "{text}");
+    assert!(
+        text.contains("0 relocated (fewest), 1 with 1 crew fewer"),
+        "{text}"
+    );
+    type_in(&mut model, "k");
+    assert!(shown(&model).contains("1 crew in use"), "{}", shown(&model));
+}
+
+/// What has begun stays where it is, whatever else changes.
+#[test]
+fn what_is_settled_stays() {
+    let folder = folder_with(&["sample-timetables/three-day-event.toml"]);
+    let mut model = model(&folder.path().join("three-day-event.toml"), false);
+    let on = |model: &Model, id: &str| {
+        let settled = model.desk.settled().unwrap();
+        let placements = settled.answer().plan.placements.iter();
+        let mut on = placements.filter(|p| *p.piece == *id);
+        on.next().map(|p| p.resource.to_string())
+    };
+    let until = fewest::clock::Instant(1_812_621_600);
+    let begun: Vec<(String, Option<String>)> = model
+        .desk
+        .timetable()
+        .pieces()
+        .iter()
+        .filter(|piece| piece.span.start < until)
+        .map(|piece| (piece.id.to_string(), on(&model, &piece.id)))
+        .collect();
+    assert!(begun.len() > 3);
+    let line = format!(
+        ":settle until {}\n",
+        model.desk.timetable().settings.zone.print(until)
+    );
+    type_in(&mut model, &line);
+    for line in [
+        ":close salon-2 from 2027-06-11 08:00 to 2027-06-11 20:00\n",
+        ":prefer changes\n",
+        ":prefer count\n",
+    ] {
+        type_in(&mut model, line);
+        for (id, was) in &begun {
+            assert_eq!(on(&model, id), *was, "{id} after {line}");
+        }
+    }
 }

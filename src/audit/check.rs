@@ -13,7 +13,7 @@ use std::sync::Arc;
 /// # Errors
 /// Every reason to refuse it.
 pub fn check(timetable: &Timetable, answer: &Answer) -> Result<Receipt, Vec<Refusal>> {
-    let facts = Facts::of(timetable);
+    let facts = Facts::of(timetable, Some(&answer.plan));
     let mut refusals = Vec::new();
     let in_use = plan(&facts, &answer.plan, &mut refusals);
     let floor = floor(&facts, &answer.floor, &mut refusals);
@@ -75,7 +75,7 @@ pub fn check(timetable: &Timetable, answer: &Answer) -> Result<Receipt, Vec<Refu
 /// Every reason to refuse it.
 pub fn check_plan(timetable: &Timetable, claimed: &Plan) -> Result<usize, Vec<Refusal>> {
     let mut refusals = Vec::new();
-    let in_use = plan(&Facts::of(timetable), claimed, &mut refusals);
+    let in_use = plan(&Facts::of(timetable, Some(claimed)), claimed, &mut refusals);
     if refusals.is_empty() {
         Ok(in_use)
     } else {
@@ -89,7 +89,7 @@ pub fn check_plan(timetable: &Timetable, claimed: &Plan) -> Result<usize, Vec<Re
 /// Every reason to refuse it.
 pub fn check_floor(timetable: &Timetable, claimed: &FloorProof) -> Result<usize, Vec<Refusal>> {
     let mut refusals = Vec::new();
-    let value = floor(&Facts::of(timetable), claimed, &mut refusals);
+    let value = floor(&Facts::of(timetable, None), claimed, &mut refusals);
     if refusals.is_empty() {
         Ok(value)
     } else {
@@ -106,7 +106,7 @@ pub fn check_violations(
     claimed: &[HallViolation],
 ) -> Result<u64, Vec<Refusal>> {
     let mut refusals = Vec::new();
-    let least = violations(&Facts::of(timetable), claimed, &mut refusals);
+    let least = violations(&Facts::of(timetable, None), claimed, &mut refusals);
     if refusals.is_empty() {
         Ok(least)
     } else {
@@ -132,8 +132,19 @@ pub(super) struct Facts<'a> {
 }
 
 impl<'a> Facts<'a> {
-    fn of(timetable: &'a Timetable) -> Facts<'a> {
-        let all = timetable.pieces();
+    /// What has begun stays where `plan` has it, as if it were pinned there.
+    fn of(timetable: &'a Timetable, plan: Option<&Plan>) -> Facts<'a> {
+        let mut all = timetable.pieces();
+        if let Some(plan) = plan.filter(|_| timetable.settings.settled_until.is_some()) {
+            let placed = plan.placements.iter();
+            let on: FastMap<&str, &Arc<str>> = placed.map(|p| (&*p.piece, &p.resource)).collect();
+            let begun = all
+                .iter_mut()
+                .filter(|piece| piece.begun(&timetable.settings));
+            for piece in begun.filter(|piece| piece.pin.is_none()) {
+                piece.pin = on.get(&*piece.id).map(|resource| Arc::clone(resource));
+            }
+        }
         let places = all
             .iter()
             .enumerate()

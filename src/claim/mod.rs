@@ -281,6 +281,13 @@ pub enum Ground {
         /// The resource.
         on: Arc<str>,
     },
+    /// A piece has begun on a resource and stays there.
+    Begun {
+        /// The piece.
+        piece: Arc<str>,
+        /// The resource.
+        on: Arc<str>,
+    },
     /// A request may only use some resources or kinds.
     Only {
         /// The request.

@@ -17,7 +17,7 @@ pub use settle::{Settled, Survey, settle};
 pub use solver::{Event, Job, Solver};
 pub use why::why;
 
-use crate::claim::{FloorProof, Plan};
+use crate::claim::{FloorProof, Placement, Plan};
 use crate::clock::{Instant, Zone};
 use crate::document::{self, Document, Mistake, Mistakes, PlanFile, State, issued_path, plan_path};
 use crate::edit::{self, Change, Edit, Refused};
@@ -283,6 +283,15 @@ impl Desk {
                     return Err(refused);
                 }
             }
+        }
+        // What has begun stays where it is now.
+        if edits_made
+            .iter()
+            .any(|edit| matches!(edit.what, Change::Settle(_)))
+            && let Some(plan) = &self.reference
+        {
+            let on = |p: &Placement| (Arc::clone(&p.piece), Arc::clone(&p.resource));
+            Arc::make_mut(&mut self.begun).extend(plan.placements.iter().map(on));
         }
         self.timetable = timetable;
         self.history.push(Step {

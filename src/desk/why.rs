@@ -3,7 +3,8 @@
 
 use super::{Job, Settled};
 use crate::audit;
-use crate::claim::{FloorProof, Ground, HallViolation, NoPlace, PinPrice, Why};
+use crate::claim::{FloorProof, Ground, HallViolation, NoPlace, PinPrice, Plan, Why};
+use crate::edit::Change;
 use crate::engine::reasons::{cannot_all, explicit, minimal, plainer, without};
 use crate::engine::{Budget, Either, Stopper, Until};
 use crate::lookup::FastSet;
@@ -27,7 +28,9 @@ const PER_PIECE: Duration = Duration::from_secs(2);
 /// no place.
 pub fn why(settled: &Settled, stop: &(dyn Stopper + Sync)) -> Why {
     let (answer, receipt) = (settled.answer(), settled.receipt());
-    let timetable = &settled.survey().timetable;
+    let stated = &settled.survey().timetable;
+    let (as_it_is, begun) = with_begun(stated, &answer.plan);
+    let timetable = &as_it_is;
     let plainer = plainer(timetable, &answer.floor, stop);
     let plainer = plainer.filter(|plainer| audit::check_floor(timetable, plainer).is_ok());
     let floor = plainer.as_ref().unwrap_or(&answer.floor);
@@ -48,7 +51,7 @@ pub fn why(settled: &Settled, stop: &(dyn Stopper + Sync)) -> Why {
         if holds(&small) {
             why.grounds = minimal(&small, &holds, stop).0;
         }
-        price_pins(settled, &mut why, stop);
+        price_pins(settled, timetable, &mut why, stop);
     }
     let mut seen: FastSet<Arc<str>> = FastSet::default();
     for unplaced in &answer.plan.unplaced {
@@ -69,7 +72,41 @@ pub fn why(settled: &Settled, stop: &(dyn Stopper + Sync)) -> Why {
                 .push(no_place(timetable, &answer.violations, pieces, stop));
         }
     }
+    let of_unplaced = why
+        .unplaced
+        .iter_mut()
+        .map(|unplaced| &mut unplaced.grounds);
+    for ground in of_unplaced.chain([&mut why.grounds]).flatten() {
+        if let Ground::Pin { piece, on } = ground
+            && begun.contains(piece)
+        {
+            let (piece, on) = (Arc::clone(piece), Arc::clone(on));
+            *ground = Ground::Begun { piece, on };
+        }
+    }
+    why.prices.retain(|price| !begun.contains(&price.pin));
     why
+}
+
+/// The timetable with what has begun pinned where it is, and which pieces those are.
+fn with_begun(timetable: &Timetable, plan: &Plan) -> (Timetable, FastSet<Arc<str>>) {
+    let (mut pinned, mut begun) = (timetable.clone(), FastSet::default());
+    if timetable.settings.settled_until.is_none() {
+        return (pinned, begun);
+    }
+    for placement in &plan.placements {
+        let piece = timetable.piece(&placement.piece);
+        if piece.is_some_and(|p| p.pin.is_none() && p.begun(&timetable.settings)) {
+            let pin = Change::Pin {
+                piece: Arc::clone(&placement.piece),
+                on: Arc::clone(&placement.resource),
+            };
+            if crate::edit::apply(&mut pinned, &pin.into()).is_ok() {
+                begun.insert(Arc::clone(&placement.piece));
+            }
+        }
+    }
+    (pinned, begun)
 }
 
 /// The timetable with the requests of these pieces alone.
@@ -79,8 +116,12 @@ fn only_with(timetable: &Timetable, pieces: &[Arc<str>]) -> Timetable {
     explicit(timetable, &|request| requests.contains(&request.id))
 }
 
-fn price_pins(settled: &Settled, why: &mut Why, stop: &(dyn Stopper + Sync)) {
-    let timetable = &settled.survey().timetable;
+fn price_pins(
+    settled: &Settled,
+    timetable: &Timetable,
+    why: &mut Why,
+    stop: &(dyn Stopper + Sync),
+) {
     let pins: Vec<&Ground> = why
         .grounds
         .iter()

@@ -102,6 +102,10 @@ impl Document {
             self.line_of_key(&Touched::Kind(at), key)
         };
         match ground {
+            Ground::Begun { .. } => {
+                let at = *self.head.first().map(|place| &place.start)?;
+                Some(self.text[..at].matches('\n').count() + 1)
+            }
             Ground::Pin { piece, .. } => match timetable.occurrence(piece) {
                 None => request(piece, "pin"),
                 Some((at, date)) => {

@@ -98,7 +98,7 @@ pub fn without(timetable: &Timetable, ground: &Ground) -> Timetable {
         }
     };
     match ground {
-        Ground::Pin { piece, .. } => unpin(&mut less, piece),
+        Ground::Pin { piece, .. } | Ground::Begun { piece, .. } => unpin(&mut less, piece),
         Ground::Only { request: id } => request(id, &|request| request.only.clear()),
         Ground::Never { request: id, name } => {
             request(id, &|request| request.never.retain(|other| other != name));

@@ -167,6 +167,7 @@ fn heard(model: &mut Model, event: Event) -> Vec<Effect> {
                 model.refresh();
             } else if model.desk.receive(settled) {
                 model.refresh();
+                tell_of_the_other_choice(model);
                 if model.desk.plan_is_due() {
                     return vec![Effect::WritePlan];
                 }
@@ -181,6 +182,28 @@ fn heard(model: &mut Model, event: Event) -> Vec<Effect> {
         Event::Fault(said) => model.say(format!("a fault of the program: {said}"), true),
     }
     Vec::new()
+}
+
+/// Where fewest resources and fewest changes pull apart, says what the other would cost.
+fn tell_of_the_other_choice(model: &mut Model) {
+    let noun = &model.timetable().settings.noun;
+    let said = model
+        .desk
+        .settled()
+        .and_then(|settled| crate::words::other_choice(settled.answer(), settled.receipt(), noun));
+    if let Some(said) = said
+        && model.message.is_none()
+        && matches!(model.mode, Mode::Board)
+    {
+        let key = model
+            .setup
+            .keys
+            .of(Action::Prefer)
+            .first()
+            .copied()
+            .unwrap_or("k");
+        model.say(format!("{said} ({key} prefers that)"), false);
+    }
 }
 
 /// The name of a key, as the table of actions has it.

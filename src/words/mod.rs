@@ -9,7 +9,7 @@ mod why;
 
 pub use reason::{choice, finding, unfit, unplaced};
 pub use state::{
-    Progress, changes, count_of, count_words, doubled, peaks, span, state, state_name,
+    Progress, changes, count_of, count_words, doubled, other_choice, peaks, span, state, state_name,
 };
 pub use why::{ground, no_place, why};
 

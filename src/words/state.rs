@@ -70,18 +70,30 @@ pub fn changes(answer: &Answer, receipt: &Receipt, noun: &Noun) -> Option<String
     let other = answer.changes.as_ref().and_then(|changes| changes.other);
     let mut said = match (found.relocated(), found.fewest()) {
         (0, _) if other.is_none() => return None,
-        (count, true) => format!("{count} relocated, fewest"),
-        (count, false) => format!("{count} relocated, at least {}", found.floor()),
+        (count, true) => format!("{count} relocated (fewest)"),
+        (count, false) => format!("{count} relocated (at least {})", found.floor()),
     };
     if let Some((in_use, relocated)) = other {
         let here = receipt.in_use();
         let more = count_of(in_use.abs_diff(here), noun);
         match in_use > here {
-            true => said.push_str(&format!("; with {more} more only {relocated}")),
-            false => said.push_str(&format!("; {more} fewer would relocate {relocated}")),
+            true => said.push_str(&format!(", {relocated} with {more} more")),
+            false => said.push_str(&format!(", {relocated} with {more} fewer")),
         }
     }
     Some(said)
+}
+
+/// What the other choice would come to, as a sentence, where fewest resources and fewest
+/// changes pull apart.
+pub fn other_choice(answer: &Answer, receipt: &Receipt, noun: &Noun) -> Option<String> {
+    let (in_use, relocated) = answer.changes.as_ref()?.other?;
+    let here = receipt.in_use();
+    let more = count_of(in_use.abs_diff(here), noun);
+    Some(match in_use > here {
+        true => format!("with {more} more only {relocated} would relocate"),
+        false => format!("{more} fewer would relocate {relocated}"),
+    })
 }
 
 /// The name of a state in the contract.

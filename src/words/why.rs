@@ -34,6 +34,7 @@ const FEW: usize = 3;
 pub fn ground(ground: &Ground, zone: Zone) -> String {
     match ground {
         Ground::Pin { piece, on } => format!("pin {piece} on {on}"),
+        Ground::Begun { piece, on } => format!("settled_until: {piece} has begun on {on}"),
         Ground::Only { request } => format!("{request} only"),
         Ground::Never { request, name } => format!("{request} never {name}"),
         Ground::Need { request, need } => format!("{request} needs {}", clean(need)),
@@ -56,6 +57,7 @@ fn grounds(timetable: &Timetable, grounds: &[Ground]) -> Vec<String> {
             |order: u8, sort: String, name| sorts.entry((order, sort)).or_default().push(name);
         match ground {
             Ground::Pin { piece, on } => pins.push(format!("{piece} is pinned on {on}")),
+            Ground::Begun { piece, on } => pins.push(format!("{piece} has begun on {on}")),
             Ground::Need { request, need } => {
                 add(0, format!("# {} {}", "needs", clean(need)), request)
             }

@@ -64,6 +64,7 @@ fn target(timetable: &crate::timetable::Timetable, ground: &Ground) -> Target {
     };
     match ground {
         Ground::Pin { piece: id, .. }
+        | Ground::Begun { piece: id, .. }
         | Ground::Only { request: id }
         | Ground::Never { request: id, .. }
         | Ground::Need { request: id, .. }
