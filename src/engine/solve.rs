@@ -3,7 +3,7 @@
 
 use super::bounds::ladder::{Found, Ladder};
 use super::bounds::{clique, hall, incompatible, prices};
-use super::changes::{self, Changes, Wishes};
+use super::changes::{self, Changes, Places, Wishes};
 use super::plans::slices::{Known, Plans, SLICE, SLICE_WORK, Slice};
 use super::plans::{Assignment, NONE, align, alike, greedy, keep, rows};
 use super::{Problem, Stopper};
@@ -45,38 +45,23 @@ impl Reference {
         plan: &Arc<Plan>,
         issued: Option<&Arc<Plan>>,
     ) -> Reference {
-        let resources = timetable.resources();
-        // Placements are listed in the order of the items, as a rule; the map is for the rest.
-        let mut before: FastMap<&str, &Placement> = FastMap::default();
-        let single = problem.items.len() == problem.ids.len();
-        let in_order = single
-            && plan.placements.len() == problem.ids.len()
-            && problem
-                .ids
-                .iter()
-                .zip(&plan.placements)
-                .all(|(id, p)| *id == p.piece);
-        if !in_order {
-            before.extend(plan.placements.iter().map(|p| (&*p.piece, p)));
-        }
+        let places = Places::of(problem, timetable, plan);
         let kept = (0..problem.items.len()).map(|item| {
             let mut pieces = problem.pieces(item);
-            let placement = |piece: usize| match in_order {
-                true => plan.placements.get(piece),
-                false => before.get(&*problem.ids[piece]).copied(),
-            };
             // Where the first of it was, for one that was apart before.
-            let first = pieces.clone().find_map(placement);
-            let place = first.and_then(|p| resources.position(&p.resource));
+            let first = pieces.clone().find_map(|piece| places.0[piece]);
             Kept {
-                resource: place.map_or(NONE, |place| place as u32),
-                changed: pieces
-                    .any(|piece| placement(piece).is_none_or(|p| p.span != problem.spans[piece])),
+                resource: first.map_or(NONE, |(resource, _)| resource),
+                changed: pieces.any(|piece| {
+                    places.0[piece].is_none_or(|(_, span)| span != problem.spans[piece])
+                }),
             }
         });
+        let kept = kept.collect();
+        let first = issued.map(|issued| Places::of(problem, timetable, issued));
         Reference {
-            kept: kept.collect(),
-            wishes: Wishes::of(problem, timetable, issued.map(|issued| &**issued), plan),
+            kept,
+            wishes: Wishes::of(problem, first.as_ref(), &places),
             two: issued.is_some(),
             since: Arc::clone(issued.unwrap_or(plan)),
             prefer: timetable.settings.prefer,

@@ -10,7 +10,7 @@
 mod moves;
 mod wishes;
 
-pub(crate) use wishes::{FIRST, Wishes};
+pub(crate) use wishes::{FIRST, Places, Wishes};
 
 use super::bounds::prices::{Chains, Prices};
 use super::plans::tabu::Tabu;
@@ -18,6 +18,7 @@ use super::plans::{Assignment, NONE, rows};
 use super::{Problem, Stopper};
 use crate::claim::ChangesProof;
 use moves::{Moves, NothingKnown, Useless};
+use std::sync::Arc;
 
 /// Unplaced pieces beyond which growing budgets are not tried from the old plan.
 const MOST_MISSING: usize = 40;
@@ -42,8 +43,11 @@ const STEPS: u32 = 20;
 /// Steps of the ascent at most, and without a better bound.
 const MOST_STEPS: u32 = 3_000;
 
+/// Most (piece, resource) pairs that prices are looked for; beyond it only the plan counts.
+const MOST_ENTRIES: usize = 3_000_000;
+
 /// Most (item, resource) pairs for which losses are kept.
-const MOST_PAIRS: usize = 20_000_000;
+const MOST_PAIRS: usize = 4_000_000;
 
 /// What is known of the changes a plan makes.
 pub(crate) struct Known {
@@ -129,6 +133,9 @@ impl<'a> Changes<'a> {
     /// A plan with few changes in a moment: growing budgets from what can stay as it is, then
     /// short improving chains from the best plan. About `nodes` cases.
     pub(crate) fn quick(&mut self, nodes: u64, stop: &dyn Stopper) {
+        if self.cost == self.least {
+            return;
+        }
         self.deepen(self.least / self.unit, nodes, &NothingKnown, stop);
         if self.cost > self.least && self.cost < u64::MAX {
             self.improve(stop);
@@ -224,8 +231,39 @@ impl<'a> Changes<'a> {
                 false => 0,
             }
         };
+        // Everything by itself where it costs least: prices of its own for what must move.
+        let least = self.least / unit;
+        if self.relocated() == least && (out == 0 || least == 0) {
+            let own = (0..problem.items.len()).filter(|item| !self.skip[*item]);
+            let prices = own
+                .map(|item| (item, (wishes.least(item) / unit) as i64))
+                .filter(|(_, price)| *price > 0)
+                .map(|(item, price)| (Arc::clone(problem.name(item)), price));
+            return Known {
+                on: self.best.clone(),
+                relocated: self.relocated(),
+                proof: Some(ChangesProof {
+                    unit: 1,
+                    prices: prices.collect(),
+                    limit: self.limit,
+                    value: least as usize,
+                }),
+            };
+        }
         if self.relocated() > self.least / unit + MANY {
             self.rearrange(1, stop);
+        }
+        let entries = problem.units.iter().map(|unit| {
+            let classes = problem.choices(unit.item as usize).iter();
+            let members = classes.map(|class| problem.classes[*class as usize].members.len());
+            members.sum::<usize>()
+        });
+        if entries.sum::<usize>() > MOST_ENTRIES {
+            return Known {
+                on: self.best.clone(),
+                relocated: self.relocated(),
+                proof: None,
+            };
         }
         let chains = Chains::costing(problem, &cost, self.limit, out);
         // By itself everything costs its least: a start that proves as much.

@@ -1,13 +1,43 @@
 //! Where everything was before, and what it costs to put it elsewhere.
 
-use crate::claim::Plan;
+use crate::claim::{Placement, Plan};
+use crate::clock::Span;
 use crate::engine::Problem;
+use crate::engine::plans::NONE;
 use crate::lookup::FastMap;
 use crate::timetable::Timetable;
 
 /// What a relocation against the plan that counts first costs, in relocations against the
 /// plan that counts second.
 pub(crate) const FIRST: u64 = 1 << 20;
+
+/// Per piece of a problem where a plan has it (or [`NONE`] when that is no resource any more)
+/// and when; `None` where the plan does not have it.
+pub(crate) struct Places(pub(crate) Vec<Option<(u32, Span)>>);
+
+impl Places {
+    /// Where a plan has the pieces of a problem.
+    pub(crate) fn of(problem: &Problem, timetable: &Timetable, plan: &Plan) -> Places {
+        let resources = timetable.resources();
+        let place = |placement: &Placement| {
+            let resource = resources.position(&placement.resource);
+            (
+                resource.map_or(NONE, |resource| resource as u32),
+                placement.span,
+            )
+        };
+        // Placements are listed in the order of the pieces, as a rule; the map is for the rest.
+        let in_order = plan.placements.len() == problem.ids.len();
+        let mut pairs = problem.ids.iter().zip(&plan.placements);
+        if in_order && pairs.all(|(id, placement)| *id == placement.piece) {
+            return Places(plan.placements.iter().map(|p| Some(place(p))).collect());
+        }
+        let placements = plan.placements.iter();
+        let known: FastMap<&str, &Placement> = placements.map(|p| (&*p.piece, p)).collect();
+        let ids = problem.ids.iter();
+        Places(ids.map(|id| known.get(&**id).map(|p| place(p))).collect())
+    }
+}
 
 /// Per item where its pieces were, and so what each resource costs.
 #[derive(Clone, Debug, Default)]
@@ -22,24 +52,10 @@ pub(crate) struct Wishes {
 impl Wishes {
     /// The wishes that follow from one plan, or from one that counts first and one that
     /// counts second. A piece that a plan does not have has no wish by that plan.
-    pub(crate) fn of(
-        problem: &Problem,
-        timetable: &Timetable,
-        first: Option<&Plan>,
-        second: &Plan,
-    ) -> Wishes {
-        let resources = timetable.resources();
-        /// Per piece the place of its resource, if there still is one.
-        type Places = FastMap<Box<str>, Option<usize>>;
-        let on = |plan: &Plan| -> Places {
-            let placements = plan.placements.iter();
-            placements
-                .map(|p| (Box::from(&*p.piece), resources.position(&p.resource)))
-                .collect()
-        };
-        let plans: Vec<(u64, Places)> = match first {
-            Some(first) => vec![(FIRST, on(first)), (1, on(second))],
-            None => vec![(1, on(second))],
+    pub(crate) fn of(problem: &Problem, first: Option<&Places>, second: &Places) -> Wishes {
+        let plans: Vec<(u64, &Places)> = match first {
+            Some(first) => vec![(FIRST, first), (1, second)],
+            None => vec![(1, second)],
         };
         let mut wishes = Wishes::default();
         for item in 0..problem.items.len() {
@@ -47,19 +63,18 @@ impl Wishes {
             let mut elsewhere = 0;
             for piece in problem.pieces(item) {
                 for (cost, plan) in &plans {
-                    let Some(place) = plan.get(&*problem.ids[piece]) else {
+                    let Some((place, _)) = plan.0[piece] else {
                         continue;
                     };
                     elsewhere += cost;
                     // Where it was is no more, or not any more for it: elsewhere in any case.
-                    if let Some(place) = place.filter(|place| problem.allows(item, *place)) {
-                        let known = wishes.places[from..]
-                            .iter_mut()
-                            .find(|(r, _)| *r == place as u32);
-                        match known {
-                            Some((_, saves)) => *saves += cost,
-                            None => wishes.places.push((place as u32, *cost)),
-                        }
+                    if place == NONE || !problem.allows(item, place as usize) {
+                        continue;
+                    }
+                    let known = wishes.places[from..].iter_mut().find(|(r, _)| *r == place);
+                    match known {
+                        Some((_, saves)) => *saves += cost,
+                        None => wishes.places.push((place, *cost)),
                     }
                 }
             }
@@ -103,10 +118,7 @@ impl Wishes {
 
     /// What a plan costs; what has no place costs nothing.
     pub(crate) fn total(&self, on: &[u32]) -> u64 {
-        let placed = on
-            .iter()
-            .enumerate()
-            .filter(|(_, r)| **r != crate::engine::plans::NONE);
+        let placed = on.iter().enumerate().filter(|(_, r)| **r != NONE);
         placed.map(|(item, r)| self.cost(item, *r)).sum()
     }
 }
