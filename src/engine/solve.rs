@@ -349,9 +349,6 @@ impl Solving<'_, '_> {
         let first = reference.prefer == Prefer::Changes;
         let (problem, wishes, two) = (self.problem, &reference.wishes, reference.two);
         let all = problem.resources.len();
-        if first && self.value(self.shown()).0 > self.value(&self.best).0 {
-            self.near = None;
-        }
         let start = self.shown().clone();
         let limit = if first { all } else { self.value(&start).1 };
         let mut changes = Changes::new(problem, wishes, two, &start, limit);
@@ -360,40 +357,67 @@ impl Solving<'_, '_> {
             self.keep(known, first);
             self.report();
         });
+        let (proof, other) = (self.proof.clone(), self.other);
         self.keep(&known, first);
-        if first && !stop.stop() {
-            // As few resources as the same changes allow.
-            let mut on = known.on.clone();
-            while let Some(limit) = self.value(&on).1.checked_sub(1) {
-                let mut fewer = Changes::new(problem, wishes, two, &on, limit);
-                fewer.quick(THOROUGH, stop);
-                match fewer
-                    .plan()
-                    .filter(|_| fewer.relocated() <= known.relocated)
-                {
-                    Some(plan) => on.clone_from(plan),
-                    None => break,
-                }
-            }
-            self.near = Some(on);
+        if first {
+            self.as_few_as_the_same_changes_allow(reference, &known, stop);
         }
-        // What the other choice would come to.
+        // Where nothing moves for its own sake, no other choice moves less.
+        self.other = None;
+        if first || !changes.at_least() {
+            self.other = self.other_choice(reference, &start, &known, stop);
+        }
+        if *self.shown() != start || self.proof != proof || self.other != other {
+            self.report();
+        }
+    }
+
+    /// With the same changes, fewer resources, where changes come first.
+    fn as_few_as_the_same_changes_allow(
+        &mut self,
+        reference: &Reference,
+        known: &changes::Known,
+        stop: &dyn Stopper,
+    ) {
+        let mut on = known.on.clone();
+        while let Some(limit) = self.value(&on).1.checked_sub(1).filter(|_| !stop.stop()) {
+            let (wishes, two) = (&reference.wishes, reference.two);
+            let mut fewer = Changes::new(self.problem, wishes, two, &on, limit);
+            fewer.quick(THOROUGH, stop);
+            let same = fewer
+                .plan()
+                .filter(|_| fewer.relocated() <= known.relocated);
+            match same {
+                Some(plan) => on.clone_from(plan),
+                None => break,
+            }
+        }
+        self.near = Some(on);
+    }
+
+    /// What the other choice would come to, if it is another.
+    fn other_choice(
+        &self,
+        reference: &Reference,
+        start: &[u32],
+        known: &changes::Known,
+        stop: &dyn Stopper,
+    ) -> Option<(usize, usize)> {
+        let first = reference.prefer == Prefer::Changes;
         let (from, limit) = match first {
-            true => (&self.best, self.value(&self.best).1),
-            false => (&start, all),
+            true => (&*self.best, self.value(&self.best).1),
+            false => (start, self.problem.resources.len()),
         };
-        let mut other = Changes::new(problem, wishes, two, from, limit);
+        let (wishes, two) = (&reference.wishes, reference.two);
+        let mut other = Changes::new(self.problem, wishes, two, from, limit);
         other.quick(THOROUGH, stop);
         let shown = (self.value(self.shown()).1, known.relocated);
-        self.other = other.plan().and_then(|plan| {
-            let other = (self.value(plan).1, other.relocated());
-            let apart = match first {
-                true => other.0 < shown.0 && other.1 > shown.1,
-                false => other.1 < shown.1,
-            };
-            apart.then_some((other.0, other.1 as usize))
-        });
-        self.report();
+        let found = (self.value(other.plan()?).1, other.relocated());
+        let apart = match first {
+            true => found.0 < shown.0 && found.1 > shown.1,
+            false => found.1 < shown.1,
+        };
+        apart.then_some((found.0, found.1 as usize))
     }
 
     fn keep(&mut self, known: &changes::Known, first: bool) {

@@ -130,6 +130,11 @@ impl<'a> Changes<'a> {
         self.cost / self.unit
     }
 
+    /// Whether the best plan costs no more than everything does by itself.
+    pub(crate) fn at_least(&self) -> bool {
+        self.cost == self.least
+    }
+
     /// A plan with few changes in a moment: growing budgets from what can stay as it is, then
     /// short improving chains from the best plan. About `nodes` cases.
     pub(crate) fn quick(&mut self, nodes: u64, stop: &dyn Stopper) {
@@ -175,6 +180,9 @@ impl<'a> Changes<'a> {
     /// Budgets from `from` relocations on, until a plan is found that is better than the
     /// best or the cases run out.
     fn deepen(&mut self, from: u64, nodes: u64, useless: &dyn Useless, stop: &dyn Stopper) {
+        if stop.stop() {
+            return;
+        }
         let base = self.at_home();
         for level in from..from + MOST_LEVELS {
             let budget = level * self.unit + (self.unit - 1);
@@ -242,7 +250,7 @@ impl<'a> Changes<'a> {
             return Known {
                 on: self.best.clone(),
                 relocated: self.relocated(),
-                proof: Some(ChangesProof {
+                proof: (least > 0).then(|| ChangesProof {
                     unit: 1,
                     prices: prices.collect(),
                     limit: self.limit,
