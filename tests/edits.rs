@@ -141,7 +141,11 @@ fn an_edit_changes_its_value_and_no_other_byte() {
             "pin = \"hall\" # the big one",
             "pin = \"hall\" # the big one\nstart = 2027-01-25T16:30:00",
         ),
-        ("unpin w@2027-01-25", "\npin = \"hall\" # the big one", ""),
+        (
+            "unpin w@2027-01-25",
+            "[[occurrence]]\nof = \"w\"\ndate = 2027-01-25\npin = \"hall\" # the big one\n\n",
+            "",
+        ),
         (
             "withdraw w@2027-02-01",
             "length = \"1h\"\n",

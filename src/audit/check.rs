@@ -6,6 +6,7 @@ use crate::claim::{Answer, FloorProof, HallViolation, OutPrices, Plan};
 use crate::clock::{Instant, Span};
 use crate::lookup::{FastMap, FastSet};
 use crate::timetable::{Piece, Resource, Timetable};
+use std::collections::HashMap;
 use std::sync::Arc;
 
 /// Checks a whole answer: the plan, the floor, the violations.
@@ -13,7 +14,7 @@ use std::sync::Arc;
 /// # Errors
 /// Every reason to refuse it.
 pub fn check(timetable: &Timetable, answer: &Answer) -> Result<Receipt, Vec<Refusal>> {
-    let facts = Facts::of(timetable, Some(&answer.plan));
+    let facts = Facts::of(timetable, &answer.stays);
     let mut refusals = Vec::new();
     let in_use = plan(&facts, &answer.plan, &mut refusals);
     let floor = floor(&facts, &answer.floor, &mut refusals);
@@ -75,7 +76,11 @@ pub fn check(timetable: &Timetable, answer: &Answer) -> Result<Receipt, Vec<Refu
 /// Every reason to refuse it.
 pub fn check_plan(timetable: &Timetable, claimed: &Plan) -> Result<usize, Vec<Refusal>> {
     let mut refusals = Vec::new();
-    let in_use = plan(&Facts::of(timetable, Some(claimed)), claimed, &mut refusals);
+    let in_use = plan(
+        &Facts::of(timetable, &HashMap::new()),
+        claimed,
+        &mut refusals,
+    );
     if refusals.is_empty() {
         Ok(in_use)
     } else {
@@ -89,7 +94,11 @@ pub fn check_plan(timetable: &Timetable, claimed: &Plan) -> Result<usize, Vec<Re
 /// Every reason to refuse it.
 pub fn check_floor(timetable: &Timetable, claimed: &FloorProof) -> Result<usize, Vec<Refusal>> {
     let mut refusals = Vec::new();
-    let value = floor(&Facts::of(timetable, None), claimed, &mut refusals);
+    let value = floor(
+        &Facts::of(timetable, &HashMap::new()),
+        claimed,
+        &mut refusals,
+    );
     if refusals.is_empty() {
         Ok(value)
     } else {
@@ -106,7 +115,11 @@ pub fn check_violations(
     claimed: &[HallViolation],
 ) -> Result<u64, Vec<Refusal>> {
     let mut refusals = Vec::new();
-    let least = violations(&Facts::of(timetable, None), claimed, &mut refusals);
+    let least = violations(
+        &Facts::of(timetable, &HashMap::new()),
+        claimed,
+        &mut refusals,
+    );
     if refusals.is_empty() {
         Ok(least)
     } else {
@@ -132,17 +145,15 @@ pub(super) struct Facts<'a> {
 }
 
 impl<'a> Facts<'a> {
-    /// What has begun stays where `plan` has it, as if it were pinned there.
-    fn of(timetable: &'a Timetable, plan: Option<&Plan>) -> Facts<'a> {
+    /// What has begun stays where `stays` says, as if it were pinned there.
+    fn of(timetable: &'a Timetable, stays: &HashMap<Arc<str>, Arc<str>>) -> Facts<'a> {
         let mut all = timetable.pieces();
-        if let Some(plan) = plan.filter(|_| timetable.settings.settled_until.is_some()) {
-            let placed = plan.placements.iter();
-            let on: FastMap<&str, &Arc<str>> = placed.map(|p| (&*p.piece, &p.resource)).collect();
+        if !stays.is_empty() {
             let begun = all
                 .iter_mut()
                 .filter(|piece| piece.begun(&timetable.settings));
             for piece in begun.filter(|piece| piece.pin.is_none()) {
-                piece.pin = on.get(&*piece.id).map(|resource| Arc::clone(resource));
+                piece.pin = stays.get(&piece.id).cloned();
             }
         }
         let places = all

@@ -4,6 +4,7 @@
 //! Imports `clock`.
 
 use crate::clock::{Instant, Span};
+use std::collections::HashMap;
 use std::sync::Arc;
 
 /// One piece on one resource, at its own time (without buffers).
@@ -237,6 +238,9 @@ pub struct Answer {
     pub out: Option<OutPrices>,
     /// What changes against an earlier plan, where there is one.
     pub changes: Option<Changes>,
+    /// Pieces that have begun, and the resources on which they stay; all of the above takes
+    /// that as given.
+    pub stays: Arc<HashMap<Arc<str>, Arc<str>>>,
     /// Seconds of search so far.
     pub seconds: f64,
 }
@@ -287,6 +291,11 @@ pub enum Ground {
         piece: Arc<str>,
         /// The resource.
         on: Arc<str>,
+    },
+    /// All dates of a request stay on one resource.
+    Together {
+        /// The request.
+        request: Arc<str>,
     },
     /// A request may only use some resources or kinds.
     Only {

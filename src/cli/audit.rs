@@ -10,6 +10,7 @@ use crate::timetable::Timetable;
 use crate::words::{self, state_name};
 use std::fmt::Write;
 use std::path::Path;
+use std::sync::Arc;
 
 /// Refusals written out; the rest are counted.
 const MOST_SHOWN: usize = 30;
@@ -118,6 +119,15 @@ fn judge(
             }
         };
     };
+    // What has begun stays where the plan has it.
+    let begun = |id: &str| {
+        let piece = timetable.piece(id);
+        piece.is_some_and(|piece| piece.begun(&timetable.settings))
+    };
+    let placed = plan.placements.iter().filter(|p| begun(&p.piece));
+    let stays = placed
+        .map(|p| (Arc::clone(&p.piece), Arc::clone(&p.resource)))
+        .collect();
     match check(
         timetable,
         &Answer {
@@ -127,6 +137,7 @@ fn judge(
             violations,
             out,
             changes: None,
+            stays: Arc::new(stays),
             seconds: 0.0,
         },
     ) {

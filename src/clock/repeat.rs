@@ -53,7 +53,18 @@ pub fn starts(
         civil_starts(rule, zone.civil(first), zone, 1)?;
         return Err(RepeatError::Endless);
     }
+    let says = |wanted: &str| {
+        let mut keys = rule.split(';').filter_map(|part| part.split('=').next());
+        keys.any(|key| key.trim().eq_ignore_ascii_case(wanted))
+    };
+    if says("COUNT") && says("UNTIL") {
+        let both = "COUNT and UNTIL exclude each other";
+        return Err(RepeatError::NoRule(both.into()));
+    }
     let civil = civil_starts(rule, zone.civil(first), zone, MOST_STARTS + 1)?;
+    if civil.is_empty() {
+        return Err(RepeatError::NoRule("it gives no date at all".into()));
+    }
     if civil.len() > MOST_STARTS {
         return Err(RepeatError::TooMany);
     }
@@ -86,8 +97,13 @@ pub fn civil_starts(
     for part in rule.split(';') {
         match part.split_once('=') {
             Some((key, value)) if key.trim().eq_ignore_ascii_case("UNTIL") => {
-                let until = until(value.trim(), zone)
-                    .ok_or_else(|| RepeatError::NoRule(format!("UNTIL={value} is no date")))?;
+                let until = until(value.trim(), zone).ok_or_else(|| {
+                    let (from, to) = (YEARS.start(), YEARS.end());
+                    RepeatError::NoRule(format!("UNTIL={value} is no date from {from} to {to}"))
+                })?;
+                if until < first {
+                    return Err(RepeatError::NoRule("UNTIL is before the start".into()));
+                }
                 parts.push(format!("UNTIL={}", until.format("%Y%m%dT%H%M%SZ")));
             }
             _ => parts.push(part.to_string()),

@@ -5,7 +5,7 @@ use super::settle::{Settled, Survey, settle};
 use crate::audit;
 use crate::claim::{Answer, FloorProof, Plan};
 use crate::engine::{self, Budget, Flag, Problem, Reference, Stopper};
-use crate::timetable::Timetable;
+use crate::timetable::{Timetable, stays};
 use std::collections::HashMap;
 use std::panic::{AssertUnwindSafe, catch_unwind};
 use std::sync::Arc;
@@ -57,7 +57,8 @@ impl Job {
     ) -> Result<Arc<Settled>, String> {
         let began = Instant::now();
         let pieces = self.timetable.pieces();
-        let problem = Problem::new(&self.timetable, &pieces, &self.begun);
+        let stays = Arc::new(stays(&self.timetable, &pieces, &self.begun));
+        let problem = Problem::new(&self.timetable, &pieces, &stays);
         let reference = self
             .reference
             .as_ref()
@@ -75,6 +76,7 @@ impl Job {
                 return;
             }
             let timed = Answer {
+                stays: Arc::clone(&stays),
                 seconds: began.elapsed().as_secs_f64(),
                 ..answer.clone()
             };

@@ -3,12 +3,13 @@
 
 use super::{Job, Settled};
 use crate::audit;
-use crate::claim::{FloorProof, Ground, HallViolation, NoPlace, PinPrice, Plan, Why};
+use crate::claim::{FloorProof, Ground, HallViolation, NoPlace, PinPrice, Why};
 use crate::edit::Change;
 use crate::engine::reasons::{cannot_all, explicit, minimal, plainer, without};
 use crate::engine::{Budget, Either, Stopper, Until};
 use crate::lookup::FastSet;
 use crate::timetable::{Piece, Resource, Timetable, all_may_use};
+use std::collections::HashMap;
 use std::sync::Arc;
 use std::time::{Duration, Instant};
 
@@ -29,7 +30,7 @@ const PER_PIECE: Duration = Duration::from_secs(2);
 pub fn why(settled: &Settled, stop: &(dyn Stopper + Sync)) -> Why {
     let (answer, receipt) = (settled.answer(), settled.receipt());
     let stated = &settled.survey().timetable;
-    let (as_it_is, begun) = with_begun(stated, &answer.plan);
+    let (as_it_is, begun) = with_begun(stated, &answer.stays);
     let timetable = &as_it_is;
     let plainer = plainer(timetable, &answer.floor, stop);
     let plainer = plainer.filter(|plainer| audit::check_floor(timetable, plainer).is_ok());
@@ -45,12 +46,14 @@ pub fn why(settled: &Settled, stop: &(dyn Stopper + Sync)) -> Why {
         together: None,
         unplaced: Vec::new(),
     };
-    if why.floor > why.clique {
+    if why.floor > 0 {
         let small = only_with(timetable, &why.pieces);
         let holds = |less: &Timetable| audit::check_floor(less, floor).is_ok();
         if holds(&small) {
             why.grounds = minimal(&small, &holds, stop).0;
         }
+    }
+    if why.floor > why.clique {
         price_pins(settled, timetable, &mut why, stop);
     }
     let mut seen: FastSet<Arc<str>> = FastSet::default();
@@ -89,21 +92,18 @@ pub fn why(settled: &Settled, stop: &(dyn Stopper + Sync)) -> Why {
 }
 
 /// The timetable with what has begun pinned where it is, and which pieces those are.
-fn with_begun(timetable: &Timetable, plan: &Plan) -> (Timetable, FastSet<Arc<str>>) {
+fn with_begun(
+    timetable: &Timetable,
+    stays: &HashMap<Arc<str>, Arc<str>>,
+) -> (Timetable, FastSet<Arc<str>>) {
     let (mut pinned, mut begun) = (timetable.clone(), FastSet::default());
-    if timetable.settings.settled_until.is_none() {
-        return (pinned, begun);
-    }
-    for placement in &plan.placements {
-        let piece = timetable.piece(&placement.piece);
-        if piece.is_some_and(|p| p.pin.is_none() && p.begun(&timetable.settings)) {
-            let pin = Change::Pin {
-                piece: Arc::clone(&placement.piece),
-                on: Arc::clone(&placement.resource),
-            };
-            if crate::edit::apply(&mut pinned, &pin.into()).is_ok() {
-                begun.insert(Arc::clone(&placement.piece));
-            }
+    for (piece, on) in stays {
+        let pin = Change::Pin {
+            piece: Arc::clone(piece),
+            on: Arc::clone(on),
+        };
+        if crate::edit::apply(&mut pinned, &pin.into()).is_ok() {
+            begun.insert(Arc::clone(piece));
         }
     }
     (pinned, begun)

@@ -119,6 +119,7 @@ impl Document {
                     }
                 }
             },
+            Ground::Together { request: id } => request(id, "together"),
             Ground::Only { request: id } => request(id, "only"),
             Ground::Never { request: id, .. } => request(id, "never"),
             Ground::Need { request: id, .. } => request(id, "needs"),

@@ -257,14 +257,19 @@ pub(super) fn work_out(
                 rule_at(),
                 "every date is left out; withdraw the request instead",
             ),
-            Err(RepeatsError::NoDate(at)) => {
+            Err(RepeatsError::NoDate(at, near)) => {
+                let near = near.map_or_else(String::new, |near| {
+                    let time = if near.contains('T') {
+                        " (with its time, as that date has several)"
+                    } else {
+                        ""
+                    };
+                    format!("; did you mean {near}{time}?")
+                });
                 let date = &names[at];
                 notes.mistake(
                     places[at].clone(),
-                    format!(
-                        "{} has no date {date} by its rule; where a date has several, add the time",
-                        request.id
-                    ),
+                    format!("{} has no date {date} by its rule{near}", request.id),
                 );
             }
             Err(RepeatsError::Twice(at)) => notes.mistake(

@@ -53,7 +53,7 @@ impl<'a> Table<'a> {
                 );
                 notes.mistake(
                     at,
-                    format!("a {what} has no key \"{}\"; {hint}", clean(key)),
+                    format!("{} {what} has no key \"{}\"; {hint}", a(what), clean(key)),
                 );
             }
         }
@@ -287,6 +287,14 @@ impl<'a> Table<'a> {
                 None
             }
         }
+    }
+}
+
+/// The article of a word.
+fn a(word: &str) -> &'static str {
+    match word.starts_with(['a', 'e', 'i', 'o', 'u']) {
+        true => "an",
+        false => "a",
     }
 }
 

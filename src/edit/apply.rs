@@ -99,10 +99,12 @@ pub enum Refused {
     #[error("{0} {1}")]
     Repeats(Arc<str>, String),
     /// Dates with something of their own would get other names.
-    #[error("some dates of {0} differ from the rest; move its dates one by one")]
+    #[error(
+        "some dates of {0} differ from the rest and would lose their names; undo what differs on them first"
+    )]
     DatesDiffer(Arc<str>),
     /// A single date cannot be taken out of the file.
-    #[error("{0} is one date of a request; withdraw it, or leave the date out with \"except\"")]
+    #[error("{0} is one date of a request; withdraw it instead")]
     OneDate(Arc<str>),
     /// Undo without history, and the like.
     #[error("there is nothing to {0}")]
@@ -147,6 +149,7 @@ pub fn apply(timetable: &mut Timetable, edit: &Edit) -> Result<Vec<Touched>, Ref
                     Refused::UnknownResource(Arc::clone(on))
                 });
             }
+            unbegun_piece(timetable, piece)?;
             if let Some(date) = timetable.occurrence(piece) {
                 return differ(timetable, date, |differs, whole| {
                     let pin = Some(Arc::clone(on));
@@ -175,8 +178,8 @@ pub fn apply(timetable: &mut Timetable, edit: &Edit) -> Result<Vec<Touched>, Ref
             let Some(date) = timetable.occurrence(piece) else {
                 return Err(Refused::UnknownPiece(Arc::clone(piece)));
             };
-            if matches!(edit.what, Change::Withdraw(_)) {
-                unbegun_date(timetable, piece)?;
+            if matches!(edit.what, Change::Withdraw(_) | Change::Unpin(_)) {
+                unbegun_piece(timetable, piece)?;
             }
             differ(timetable, date, |differs, whole| match &edit.what {
                 Change::Unpin(_) => match differs.pin.take() {
@@ -212,6 +215,9 @@ pub fn apply(timetable: &mut Timetable, edit: &Edit) -> Result<Vec<Touched>, Ref
                 }
                 _ => Err(not_so(piece, "withdrawn")),
             })
+        }
+        Change::Unpin(piece) if unbegun_piece(timetable, piece).is_err() => {
+            Err(Refused::Begun(Arc::clone(piece)))
         }
         Change::Unpin(piece) => change(timetable, piece, |request| match request.pin.take() {
             Some(_) => Ok(()),
@@ -322,7 +328,7 @@ pub fn apply(timetable: &mut Timetable, edit: &Edit) -> Result<Vec<Touched>, Ref
                     key: field.key(),
                 });
             };
-            unbegun_date(timetable, id)?;
+            unbegun_piece(timetable, id)?;
             let Some(date) = timetable.occurrence(id) else {
                 return Err(Refused::UnknownPiece(Arc::clone(id)));
             };
@@ -417,8 +423,8 @@ fn unbegun(timetable: &Timetable, at: usize) -> Result<(), Refused> {
     }
 }
 
-/// The same for one date of a request.
-fn unbegun_date(timetable: &Timetable, piece: &Arc<str>) -> Result<(), Refused> {
+/// The same for one piece: a request that does not repeat, or a date.
+fn unbegun_piece(timetable: &Timetable, piece: &Arc<str>) -> Result<(), Refused> {
     match timetable.piece(piece) {
         Some(date) if date.begun(&timetable.settings) => Err(Refused::Begun(Arc::clone(piece))),
         _ => Ok(()),
@@ -453,7 +459,7 @@ fn moved(
 ) -> Result<Vec<Touched>, Refused> {
     within_years(timetable, to)?;
     if let Some(date) = timetable.occurrence(piece) {
-        unbegun_date(timetable, piece)?;
+        unbegun_piece(timetable, piece)?;
         return differ(timetable, date, |differs, whole| {
             let by_rule = whole.repeats.as_ref().map(|r| r.dates()[date.1].start);
             if differs.fastened || whole.fastened {
@@ -533,7 +539,7 @@ fn repeat(
             refused(format!("cannot repeat like that: the rule {error}"))
         }
         RepeatsError::Nothing => refused("would have no date left".into()),
-        RepeatsError::NoDate(_) | RepeatsError::Twice(_) => {
+        RepeatsError::NoDate(..) | RepeatsError::Twice(_) => {
             Refused::DatesDiffer(Arc::clone(&request.id))
         }
     })?));
@@ -554,13 +560,25 @@ fn differ(
     if request.withdrawn {
         return Err(Refused::Withdrawn(Arc::clone(&request.id)));
     }
-    let table = repeats.differ(date, tables, |differing| how(differing, &request))?;
+    let table = repeats.differ(date, tables, |differing| {
+        how(differing, &request)?;
+        // What is as the rule has it does not differ.
+        let by_rule = request.repeats.as_ref().map(|r| r.dates()[date].start);
+        differing.start.take_if(|start| Some(*start) == by_rule);
+        differing.length.take_if(|length| *length == request.length);
+        Ok(())
+    })?;
     let end = Piece::of_date(&timetable.requests[at], &repeats, date)
         .span
         .end;
     within_years(timetable, end)?;
+    let gone = repeats.forget_if_nothing_differs(date);
     request.repeats = Some(Arc::new(repeats));
     timetable.replace(at, request);
+    if gone {
+        timetable.without_tables(&[table]);
+        return Ok(vec![Touched::OccurrenceGone(table)]);
+    }
     Ok(vec![Touched::Occurrence(table)])
 }
 

@@ -307,7 +307,8 @@ impl<'a> Words<'a> {
                 if let Some(request) = context.timetable.request(of) {
                     let dates = request.repeats.iter().flat_map(|r| r.dates());
                     let dates = dates.map(|dated| &*dated.id);
-                    let hint = nearest(word.text, dates).map_or_else(
+                    let same = dates.clone().filter(|id| id.starts_with(word.text)).min();
+                    let hint = same.or_else(|| nearest(word.text, dates)).map_or_else(
                         || "names of dates are like x@2027-01-11".to_string(),
                         |near| format!("did you mean \"{near}\"?"),
                     );

@@ -272,13 +272,14 @@ impl Problem {
                 .max();
             own.unwrap_or(most.unwrap_or(0))
         };
+        // What has no choice keeps its least buffers in cliques all the same.
         let wide: Vec<(i64, i64)> = self
             .items
             .iter()
             .map(|item| {
                 (
-                    widest(item, item.setup, |class| class.setup),
-                    widest(item, item.turnaround, |class| class.turnaround),
+                    widest(item, item.setup, |class| class.setup).max(item.least.0),
+                    widest(item, item.turnaround, |class| class.turnaround).max(item.least.1),
                 )
             })
             .collect();

@@ -77,13 +77,30 @@ pub fn candidates(timetable: &Timetable) -> Vec<Ground> {
             found.push(Ground::Only { request: id() });
         }
     }
-    let pieces = timetable.pieces();
-    found.extend(pieces.iter().filter_map(|piece| {
-        Some(Ground::Pin {
-            piece: Arc::clone(&piece.id),
-            on: piece.pin.clone()?,
-        })
-    }));
+    for request in timetable.requests.iter().filter(|request| request.together) {
+        found.extend(request.repeats.as_ref().map(|_| Ground::Together {
+            request: Arc::clone(&request.id),
+        }));
+    }
+    for request in &timetable.requests {
+        let own = request.repeats.iter().flat_map(|repeats| {
+            let dates = 0..repeats.dates().len();
+            dates.filter_map(|date| Some((&repeats.dates()[date].id, repeats.differs(date)?)))
+        });
+        match &request.pin {
+            // It holds for all dates but those with a pin of their own, which goes with it.
+            Some(pin) => found.push(Ground::Pin {
+                piece: Arc::clone(&request.id),
+                on: Arc::clone(pin),
+            }),
+            None => found.extend(own.filter_map(|(id, differs)| {
+                Some(Ground::Pin {
+                    piece: Arc::clone(id),
+                    on: differs.pin.clone()?,
+                })
+            })),
+        }
+    }
     found
 }
 
@@ -99,6 +116,7 @@ pub fn without(timetable: &Timetable, ground: &Ground) -> Timetable {
     };
     match ground {
         Ground::Pin { piece, .. } | Ground::Begun { piece, .. } => unpin(&mut less, piece),
+        Ground::Together { request: id } => request(id, &|request| request.together = false),
         Ground::Only { request: id } => request(id, &|request| request.only.clear()),
         Ground::Never { request: id, name } => {
             request(id, &|request| request.never.retain(|other| other != name));
@@ -117,7 +135,7 @@ pub fn without(timetable: &Timetable, ground: &Ground) -> Timetable {
     less
 }
 
-/// Lets a piece go to any resource: its own pin if it has one, else its request's.
+/// Takes the pin of a request away, with those of its dates, or the pin of one date.
 fn unpin(timetable: &mut Timetable, piece: &Arc<str>) {
     let dated = timetable.occurrence(piece);
     let Some(at) = dated
@@ -127,20 +145,24 @@ fn unpin(timetable: &mut Timetable, piece: &Arc<str>) {
         return;
     };
     let mut changed = Request::clone(&timetable.requests[at]);
-    let own = dated.and_then(|(_, date)| {
-        let mut repeats = changed.repeats.as_deref().cloned()?;
-        repeats.differs(date)?.pin.as_ref()?;
-        repeats
-            .differ::<()>(date, 0, |differing| {
-                differing.pin = None;
-                Ok(())
-            })
-            .ok()?;
-        Some(repeats)
-    });
-    match own {
-        Some(repeats) => changed.repeats = Some(Arc::new(repeats)),
-        None => changed.pin = None,
+    if dated.is_none() {
+        changed.pin = None;
+    }
+    if let Some(mut repeats) = changed.repeats.as_deref().cloned() {
+        for date in 0..repeats.dates().len() {
+            let asked = dated.is_none_or(|(_, only)| only == date);
+            if asked
+                && repeats
+                    .differs(date)
+                    .is_some_and(|differs| differs.pin.is_some())
+            {
+                let _ = repeats.differ::<()>(date, 0, |differing| {
+                    differing.pin = None;
+                    Ok(())
+                });
+            }
+        }
+        changed.repeats = Some(Arc::new(repeats));
     }
     timetable.replace(at, changed);
 }

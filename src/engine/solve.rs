@@ -510,6 +510,7 @@ impl Solving<'_, '_> {
                 proof: self.proof.clone(),
                 other: self.other,
             }),
+            stays: Arc::default(),
             seconds: self.began.elapsed().as_secs_f64(),
         }
     }

@@ -4,6 +4,7 @@ use super::model::{Mode, Model};
 use super::update::{Effect, make};
 use crate::actions::Action;
 use crate::edit::Change;
+use crate::engine::who::Verdict;
 use crossterm::event::{KeyCode, KeyEvent};
 use std::sync::Arc;
 
@@ -61,11 +62,19 @@ pub(super) fn choosing(model: &mut Model, key: KeyEvent, action: Option<Action>)
         Some(Action::Last) => choices.len(),
         _ => {
             model.mode = Mode::Board;
-            let choice = choices.get(chosen).filter(|_| key.code == KeyCode::Enter);
-            return choice.map_or_else(Vec::new, |choice| {
-                let on = Arc::clone(&choice.resource);
-                make(model, vec![Change::Pin { piece, on }.into()])
-            });
+            let Some(choice) = choices.get(chosen).filter(|_| key.code == KeyCode::Enter) else {
+                return Vec::new();
+            };
+            let on = Arc::clone(&choice.resource);
+            if let Verdict::Cannot(_) | Verdict::Taken(_) = choice.verdict {
+                let said = crate::words::choice(choice);
+                model.say(
+                    format!("{on}: {said} (:pin {piece} on {on} does it all the same)"),
+                    true,
+                );
+                return Vec::new();
+            }
+            return make(model, vec![Change::Pin { piece, on }.into()]);
         }
     };
     model.mode = Mode::Who(piece, to.min(choices.len().saturating_sub(1)));

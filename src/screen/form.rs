@@ -26,6 +26,8 @@ pub struct Entry {
 pub struct Form {
     /// What it is about; empty for a new request.
     pub id: Option<Arc<str>>,
+    /// The request it belongs to, where it is one of its dates; else the same.
+    pub of: Arc<str>,
     /// The fields.
     pub fields: Vec<Entry>,
     /// The one in hand.
@@ -80,18 +82,23 @@ pub(super) fn open(model: &mut Model, new: bool) {
     let form = match (here, row) {
         (Some(piece), _) => {
             let request = &piece.request;
+            let rule = request.repeats.as_ref().and_then(|r| r.rule.as_deref());
+            let together = if request.together { "yes" } else { "no" };
             Form {
-                id: Some(Arc::clone(&request.id)),
+                id: Some(Arc::clone(&piece.id)),
+                of: Arc::clone(&request.id),
                 fields: vec![
                     entry("title", request.title.to_string()),
-                    entry("start", zone.print(request.start)),
-                    entry("end", zone.print(request.span().end)),
+                    entry("start", zone.print(piece.span.start)),
+                    entry("end", zone.print(piece.span.end)),
                     entry("size", number(request.size)),
                     entry("weight", request.weight.to_string()),
                     entry("needs", list(&request.needs)),
                     entry("people", list(&request.people)),
                     entry("only", list(&request.only)),
                     entry("never", list(&request.never)),
+                    entry("repeat", rule.unwrap_or_default().to_string()),
+                    entry("together", together.into()),
                 ],
                 chosen: 0,
             }
@@ -100,6 +107,7 @@ pub(super) fn open(model: &mut Model, new: bool) {
             let resource = &model.timetable().resources().all[*resource];
             Form {
                 id: Some(Arc::clone(&resource.id)),
+                of: Arc::clone(&resource.id),
                 fields: vec![
                     entry("title", resource.title.as_deref().unwrap_or("").to_string()),
                     entry("seats", number(resource.seats)),
@@ -114,6 +122,7 @@ pub(super) fn open(model: &mut Model, new: bool) {
         }
         _ => Form {
             id: None,
+            of: "".into(),
             fields: vec![
                 entry("id", String::new()),
                 entry("title", String::new()),
@@ -123,6 +132,8 @@ pub(super) fn open(model: &mut Model, new: bool) {
                 entry("weight", String::new()),
                 entry("needs", String::new()),
                 entry("people", String::new()),
+                entry("repeat", String::new()),
+                entry("together", String::new()),
             ],
             chosen: 0,
         },
@@ -148,6 +159,10 @@ impl Form {
                     value.replace('\\', "\\\\").replace('"', "\\\"")
                 ),
                 ("weight", "") => "weight 1".into(),
+                ("together", "") => "together no".into(),
+                ("repeat", value) if !value.is_empty() && !value.starts_with('"') => {
+                    format!("repeat \"{value}\"")
+                }
                 (label, "") => format!("{label} none"),
                 // Blanks after commas are how people write lists.
                 ("needs" | "people" | "only" | "never" | "offers", value)
@@ -192,13 +207,15 @@ impl Form {
             );
             return vec![line];
         };
+        // Times are those of the piece, everything else is said of the whole request.
+        let of = &self.of;
         let changed = |field: &&Entry| field.input.value().trim() != field.before.trim();
         let mut lines: Vec<String> = Vec::new();
         for field in self.fields.iter().filter(changed) {
             match field.label {
                 "start" => lines.push(format!("move {id} to {}", field.input.value().trim())),
                 "end" => {}
-                _ => lines.push(format!("set {id} {}", said(field))),
+                _ => lines.push(format!("set {of} {}", said(field))),
             }
         }
         lines

@@ -107,6 +107,9 @@ pub fn update(model: &mut Model, msg: Msg) -> Vec<Effect> {
         Msg::Solver(event) => heard(model, event),
         Msg::Why(generation, why) => {
             model.why = Some((generation, why));
+            if let Mode::Why(0) = model.mode {
+                model.mode = Mode::Why(super::panels::why::first(model));
+            }
             Vec::new()
         }
         Msg::Written(written) => {
@@ -567,7 +570,15 @@ fn acting(model: &mut Model, action: Action) -> Vec<Effect> {
                 Prefer::Count => Prefer::Changes,
                 Prefer::Changes => Prefer::Count,
             };
-            return make(model, vec![Change::Prefer(prefer).into()]);
+            let effects = make(model, vec![Change::Prefer(prefer).into()]);
+            if !effects.is_empty() {
+                let said = match prefer {
+                    Prefer::Count => "fewest resources come first now",
+                    Prefer::Changes => "fewest changes come first now",
+                };
+                model.say(said, false);
+            }
+            return effects;
         }
         Action::Undo => return make(model, vec![Change::Undo.into()]),
         Action::Redo => return make(model, vec![Change::Redo.into()]),

@@ -2,6 +2,7 @@
 //! concerned stay unplaced with their reason.
 
 use super::{Piece, Timetable, Unfit, all_may_use, items, may_use, occupied};
+use crate::clock::Span;
 use std::collections::HashMap;
 use std::sync::Arc;
 
@@ -47,7 +48,7 @@ pub fn findings(timetable: &Timetable) -> Vec<Finding> {
     let pieces = timetable.pieces();
     let resources = timetable.resources();
     let mut found = Vec::new();
-    let mut pinned: HashMap<usize, Vec<(crate::clock::Span, &Piece)>> = HashMap::new();
+    let mut pinned: HashMap<usize, Vec<(Span, &Piece)>> = HashMap::new();
     // Requests that say the same of themselves share the search for a possible resource.
     let mut possible_before: HashMap<Wishes<'_>, Vec<usize>> = HashMap::new();
     let present: Vec<&Piece> = pieces.iter().filter(|piece| !piece.withdrawn).collect();
@@ -125,6 +126,53 @@ pub fn findings(timetable: &Timetable) -> Vec<Finding> {
         );
     }
     found
+}
+
+/// Of what has begun, the resources that it can stay on: `known` is where it was, as far as
+/// that may still take it and nothing that is pinned there, or has begun there too, is in its
+/// way. Pieces with a pin of their own are left out.
+pub fn stays(
+    timetable: &Timetable,
+    pieces: &[Piece],
+    known: &HashMap<Arc<str>, Arc<str>>,
+) -> HashMap<Arc<str>, Arc<str>> {
+    let mut stays = HashMap::new();
+    if timetable.settings.settled_until.is_none() || known.is_empty() {
+        return stays;
+    }
+    let resources = timetable.resources();
+    let present: Vec<&Piece> = pieces.iter().filter(|piece| !piece.withdrawn).collect();
+    let mut taken: HashMap<usize, Vec<Span>> = HashMap::new();
+    let items = items(&present);
+    for item in &items {
+        let item = &present[item.clone()];
+        let pin = item.iter().find_map(|piece| piece.pin.as_ref());
+        if let Some(at) = pin.and_then(|pin| resources.position(pin)) {
+            let spans = item.iter().map(|piece| occupied(piece, &resources.all[at]));
+            taken.entry(at).or_default().extend(spans);
+        }
+    }
+    for item in items {
+        let item = &present[item];
+        if item.iter().any(|piece| piece.pin.is_some()) {
+            continue;
+        }
+        let begun = item.iter().find(|piece| piece.begun(&timetable.settings));
+        let known = begun.and_then(|piece| known.get(&piece.id));
+        let Some(at) = known.and_then(|resource| resources.position(resource)) else {
+            continue;
+        };
+        let resource = &resources.all[at];
+        let spans: Vec<Span> = item.iter().map(|piece| occupied(piece, resource)).collect();
+        let taken = taken.entry(at).or_default();
+        let clear = |span: &Span| taken.iter().all(|other| !other.overlaps(*span));
+        if all_may_use(item, resource).is_ok() && spans.iter().all(clear) {
+            taken.extend(spans);
+            let begun = item.iter().filter(|piece| piece.begun(&timetable.settings));
+            stays.extend(begun.map(|piece| (Arc::clone(&piece.id), Arc::clone(&resource.id))));
+        }
+    }
+    stays
 }
 
 /// What decides which resources suit a piece, whatever its time.

@@ -14,7 +14,7 @@ mod resources;
 mod stated;
 
 pub(crate) use finding::Wishes;
-pub use finding::{Finding, FindingKind, findings};
+pub use finding::{Finding, FindingKind, findings, stays};
 pub use hours::{Closure, Days, Hours, Opening, subtract};
 pub use piece::{
     Piece, Unfit, all_may_use, items, itself, least_buffers, may_use, occupied, suits,

@@ -2,6 +2,7 @@
 
 use crate::clock::{Instant, RepeatError, Zone, starts};
 use crate::lookup::FastMap;
+use crate::text::nearest;
 use chrono::{NaiveDate, NaiveDateTime, Timelike};
 use std::sync::Arc;
 
@@ -84,8 +85,9 @@ pub enum RepeatsError {
     Rule(RepeatError),
     /// Every date is left out.
     Nothing,
-    /// Something differs on what is none of its dates: the place in the list.
-    NoDate(usize),
+    /// Something differs on what is none of its dates: the place in the list, and the name of
+    /// the date that is nearest to it.
+    NoDate(usize, Option<Arc<str>>),
     /// Something differs twice on the same date: the later place in the list.
     Twice(usize),
 }
@@ -144,9 +146,13 @@ impl Repeats {
             places.insert(Arc::from(name), at);
         }
         for (at, differing) in differing.iter().enumerate() {
-            let place = *places
-                .get(&differing.date)
-                .ok_or(RepeatsError::NoDate(at))?;
+            let Some(place) = places.get(&differing.date).copied() else {
+                let names = || places.keys().map(|name| &**name);
+                let day = differing.date.split('T').next().unwrap_or_default();
+                let same = names().filter(|name| name.starts_with(day)).min();
+                let near = same.or_else(|| nearest(&differing.date, names()));
+                return Err(RepeatsError::NoDate(at, near.map(Arc::from)));
+            };
             if dates[place].differs.replace(at).is_some() {
                 return Err(RepeatsError::Twice(at));
             }
@@ -191,6 +197,27 @@ impl Repeats {
             }
         }
         Ok(table)
+    }
+
+    /// Takes out what differs on the date at that place when that is nothing any more;
+    /// whether it was.
+    pub(crate) fn forget_if_nothing_differs(&mut self, date: usize) -> bool {
+        let Some(at) = self.dates[date].differs else {
+            return false;
+        };
+        let differing = &self.differing[at];
+        if *differing != Differing::nothing(&differing.date, differing.table) {
+            return false;
+        }
+        self.differing.remove(at);
+        for dated in &mut self.dates {
+            dated.differs = match dated.differs {
+                Some(other) if other == at => None,
+                Some(other) if other > at => Some(other - 1),
+                other => other,
+            };
+        }
+        true
     }
 
     /// Its dates, by start.
@@ -265,7 +292,10 @@ mod tests {
             )
         };
         assert!(make(&["2027-01-12"]).is_ok());
-        assert_eq!(make(&["2027-01-13"]), Err(RepeatsError::NoDate(0)));
+        assert_eq!(
+            make(&["2027-01-13"]),
+            Err(RepeatsError::NoDate(0, Some("2027-01-11".into())))
+        );
         assert_eq!(
             make(&["2027-01-12", "2027-01-12"]),
             Err(RepeatsError::Twice(1))

@@ -4,7 +4,7 @@ use super::{count_of, list, span};
 use crate::claim::{Ground, NoPlace, Why};
 use crate::clock::{Instant, Zone};
 use crate::text::clean;
-use crate::timetable::{Piece, Timetable};
+use crate::timetable::{Piece, Prefer, Timetable};
 use std::collections::BTreeMap;
 use std::sync::Arc;
 
@@ -35,6 +35,7 @@ pub fn ground(ground: &Ground, zone: Zone) -> String {
     match ground {
         Ground::Pin { piece, on } => format!("pin {piece} on {on}"),
         Ground::Begun { piece, on } => format!("settled_until: {piece} has begun on {on}"),
+        Ground::Together { request } => format!("{request} together"),
         Ground::Only { request } => format!("{request} only"),
         Ground::Never { request, name } => format!("{request} never {name}"),
         Ground::Need { request, need } => format!("{request} needs {}", clean(need)),
@@ -62,6 +63,7 @@ fn grounds(timetable: &Timetable, grounds: &[Ground]) -> Vec<String> {
                 add(0, format!("# {} {}", "needs", clean(need)), request)
             }
             Ground::Size { request, .. } => add(1, "the size of".into(), request),
+            Ground::Together { request } => add(6, "the dates staying together of".into(), request),
             Ground::Only { request } => add(2, "what is allowed to".into(), request),
             Ground::Never { request, .. } => add(3, "what is ruled out for".into(), request),
             Ground::Closure { resource, .. } => add(4, "the closure of".into(), resource),
@@ -112,6 +114,14 @@ fn floor(timetable: &Timetable, why: &Why) -> String {
     let (one, floor) = (clean(&noun.one), count_of(why.floor, noun));
     let names = pieces(timetable, &why.pieces, MOST_NAMES);
     let open = match why.count.cmp(&why.floor) {
+        std::cmp::Ordering::Greater
+            if why.unplaced.is_empty() && timetable.settings.prefer == Prefer::Changes =>
+        {
+            format!(
+                " (The plan uses {}, because fewest changes come first.)",
+                why.count
+            )
+        }
         std::cmp::Ordering::Greater if why.unplaced.is_empty() => format!(
             " (The plan uses {}; that fewer cannot do is not proved.)",
             why.count
@@ -122,8 +132,12 @@ fn floor(timetable: &Timetable, why: &Why) -> String {
         return "Nothing has to be placed.".into();
     }
     if why.floor <= why.clique {
+        let nothing = match why.grounds.is_empty() {
+            true => " Nothing else that is stated adds to that.",
+            false => "",
+        };
         return format!(
-            "It takes {floor} because so many overlap one another, and no two of those can share a {one}: {names}. Nothing else that is stated adds to that.{open}"
+            "It takes {floor} because so many overlap one another, and no two of those can share a {one}: {names}.{nothing}{open}"
         );
     }
     let ground = match why.by {
@@ -251,7 +265,7 @@ fn prices(timetable: &Timetable, why: &Why) -> Option<String> {
     });
     let said: Vec<String> = saving.into_iter().chain(together).collect();
     if said.is_empty() {
-        let none = !why.prices.is_empty();
+        let none = !why.prices.is_empty() && why.prices.iter().all(|price| price.proved);
         return none.then(|| "No single one of these pins costs anything by itself.".into());
     }
     let mut text = said.join("; ");

@@ -47,6 +47,8 @@ pub(crate) struct Plans<'a> {
     seed: u64,
     skip: Vec<bool>,
     search: Option<tabu::Tabu<'a>>,
+    /// The search in which other pieces may be left out than in the best plan.
+    others: Option<tabu::Tabu<'a>>,
     /// The value it started from and the target it aims at.
     aimed: Option<((u64, usize), usize)>,
     since_better: u64,
@@ -64,6 +66,7 @@ impl<'a> Plans<'a> {
         let skip = vec![false; problem.items.len()];
         Plans {
             search: tabu::Tabu::new(problem, &skip, seed),
+            others: None,
             problem,
             seed,
             skip,
@@ -79,6 +82,33 @@ impl<'a> Plans<'a> {
     /// Whether the problem is too large for it.
     pub(crate) fn too_large(&self) -> bool {
         self.search.is_none()
+    }
+
+    /// A plan with at most `target` resources that leaves out no more weight, whichever pieces
+    /// that is.
+    fn leave_out_others(
+        &mut self,
+        known: Known<'_>,
+        target: usize,
+        steps: u64,
+        stop: &dyn Stopper,
+    ) -> Option<Assignment> {
+        if self.others.is_none() {
+            let nothing = vec![false; self.problem.items.len()];
+            self.others = tabu::Tabu::new(self.problem, &nothing, self.seed);
+        }
+        let search = self.others.as_mut()?;
+        if !search.aim(known.best, target, stop) {
+            return None;
+        }
+        let (problem, mut better) = (self.problem, None);
+        search.run(steps, stop, &mut |left, on| {
+            let as_little = better.is_none() && left <= known.value.0;
+            if as_little && rows::value(problem, on) < known.value {
+                better = Some(on.to_vec());
+            }
+        });
+        better
     }
 
     /// Up to `steps` steps and what goes with them.
@@ -106,6 +136,14 @@ impl<'a> Plans<'a> {
         };
         self.since_better += steps;
         self.turns += 1;
+        // Other pieces that weigh no more may leave less to the rest.
+        if rest && self.turns.is_multiple_of(2) {
+            let found = self.leave_out_others(known, target, steps, stop);
+            return found.map_or(Slice::Nothing, |better| {
+                self.since_better = 0;
+                Slice::Better(better)
+            });
+        }
         let Some(search) = &mut self.search else {
             return Slice::Nothing;
         };

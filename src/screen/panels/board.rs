@@ -255,7 +255,12 @@ fn bar(model: &Model, buffer: &mut Buffer, line: Rect, row: &Row, at: usize, kno
                 close
             },
         );
-        let mut inside = format!("{}{}", marks(model, piece, known), clean(&piece.id));
+        // The axis has the date.
+        let name = match piece.dated {
+            Some(_) => &piece.request.id,
+            None => &piece.id,
+        };
+        let mut inside = format!("{}{}", marks(model, piece, known), clean(name));
         // Where there is room to spare the title says more than blanks do.
         if cells > inside.len() + 10 && !piece.request.title.is_empty() {
             let title: String = piece.request.title.chars().take(cells).collect();

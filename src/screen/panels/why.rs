@@ -44,6 +44,14 @@ pub(in crate::screen) fn lines(model: &Model) -> Vec<(String, Option<Target>)> {
     lines
 }
 
+/// The line to begin at: the first ground, when the whole sentence is in sight above it.
+pub(in crate::screen) fn first(model: &Model) -> usize {
+    let lines = lines(model);
+    let first = lines.iter().position(|(_, target)| target.is_some());
+    let room = usize::from(model.size.1).saturating_sub(5);
+    first.filter(|first| *first < room).unwrap_or(0)
+}
+
 fn grounds(why: &Why) -> Vec<&Ground> {
     let of_unplaced = why.unplaced.iter().flat_map(|unplaced| &unplaced.grounds);
     let mut grounds: Vec<&Ground> = Vec::new();
@@ -65,6 +73,7 @@ fn target(timetable: &crate::timetable::Timetable, ground: &Ground) -> Target {
     match ground {
         Ground::Pin { piece: id, .. }
         | Ground::Begun { piece: id, .. }
+        | Ground::Together { request: id }
         | Ground::Only { request: id }
         | Ground::Never { request: id, .. }
         | Ground::Need { request: id, .. }
