@@ -75,6 +75,16 @@ pub fn why(settled: &Settled, stop: &(dyn Stopper + Sync)) -> Why {
                 .push(no_place(timetable, &answer.violations, pieces, stop));
         }
     }
+    let mut of_unplaced: Vec<&mut Vec<Ground>> = Vec::new();
+    of_unplaced.extend(
+        why.unplaced
+            .iter_mut()
+            .map(|unplaced| &mut unplaced.grounds),
+    );
+    for grounds in of_unplaced.into_iter().chain([&mut why.grounds]) {
+        let own = own_pins(stated, grounds);
+        grounds.extend(own);
+    }
     let of_unplaced = why
         .unplaced
         .iter_mut()
@@ -89,6 +99,32 @@ pub fn why(settled: &Settled, stop: &(dyn Stopper + Sync)) -> Why {
     }
     why.prices.retain(|price| !begun.contains(&price.pin));
     why
+}
+
+/// Where a request's pin is a ground, the pins of its dates are part of it.
+fn own_pins(timetable: &Timetable, grounds: &[Ground]) -> Vec<Ground> {
+    let mut own = Vec::new();
+    for ground in grounds {
+        let Ground::Pin { piece, .. } = ground else {
+            continue;
+        };
+        let repeats = timetable
+            .request(piece)
+            .and_then(|request| request.repeats.as_ref());
+        let Some(repeats) = repeats else { continue };
+        for date in 0..repeats.dates().len() {
+            let differs = repeats.differs(date).filter(|differs| !differs.withdrawn);
+            own.extend(
+                differs
+                    .and_then(|differs| differs.pin.as_ref())
+                    .map(|pin| Ground::Pin {
+                        piece: Arc::clone(&repeats.dates()[date].id),
+                        on: Arc::clone(pin),
+                    }),
+            );
+        }
+    }
+    own
 }
 
 /// The timetable with what has begun pinned where it is, and which pieces those are.
