@@ -49,8 +49,8 @@ fn only(tiny: &Tiny, requests: &BTreeSet<usize>, grounds: &[Ground]) -> Tiny {
         .collect();
     less.requests = kept.iter().map(|at| less.requests[*at]).collect();
     // Dates that need not stay together are requests of their own.
-    for at in 0..less.requests.len() {
-        let id = id(kept[at]);
+    for (at, request) in kept.iter().enumerate() {
+        let id = id(*request);
         let stays = |g: &Ground| matches!(g, Ground::Together { request } if **request == *id);
         if !grounds.iter().any(stays)
             && let Some(again) = less.again[at].take()
