@@ -7,6 +7,7 @@ use crate::claim::{Changes, ChangesProof, Plan};
 use crate::clock::Span;
 use crate::lookup::{FastMap, FastSet};
 use crate::timetable::Piece;
+use std::cell::OnceCell;
 use std::sync::Arc;
 
 /// Checks the claim; `plan` uses so many resources and leaves out so much weight.
@@ -17,15 +18,23 @@ pub(super) fn check(
     (in_use, left_out): (usize, u64),
     refusals: &mut Vec<Refusal>,
 ) -> Changed {
-    let before: FastMap<&str, &str> = claimed
-        .since
-        .placements
-        .iter()
-        .map(|placement| (&*placement.piece, &*placement.resource))
-        .collect();
-    let elsewhere = |piece: &str, resource: &str| before.get(piece).is_some_and(|r| *r != resource);
-    let placed = plan.placements.iter();
-    let relocated = placed.filter(|p| elsewhere(&p.piece, &p.resource)).count();
+    let since = &claimed.since.placements;
+    let before = OnceCell::<FastMap<&str, &str>>::new();
+    let elsewhere = |piece: &str, resource: &str| {
+        let before =
+            before.get_or_init(|| since.iter().map(|p| (&*p.piece, &*p.resource)).collect());
+        before.get(piece).is_some_and(|r| *r != resource)
+    };
+    // As a rule both list the same pieces in the same order.
+    let pairs = || plan.placements.iter().zip(since);
+    let alike = plan.placements.len() == since.len() && pairs().all(|(p, q)| p.piece == q.piece);
+    let relocated = match alike {
+        true => pairs().filter(|(p, q)| p.resource != q.resource).count(),
+        false => {
+            let placed = plan.placements.iter();
+            placed.filter(|p| elsewhere(&p.piece, &p.resource)).count()
+        }
+    };
     let mut floor = 0;
     if let Some(proof) = &claimed.proof {
         if proof.limit < in_use {

@@ -32,9 +32,8 @@ pub fn check(timetable: &Timetable, answer: &Answer) -> Result<Receipt, Vec<Refu
     let mut unplaced_floor = by_halls.max(by_prices);
     if floor > timetable.resources().all.len() {
         // Not everything fits, so something stays out: at least the lightest.
-        let counted = facts.items.iter().enumerate();
-        let counted = counted.filter(|(_, pieces)| !facts.all[pieces[0]].withdrawn);
-        let lightest = counted.map(|(item, _)| facts.weight(item)).min();
+        let counted = facts.all.iter().filter(|piece| !piece.withdrawn);
+        let lightest = counted.map(|piece| facts.weight(facts.item(piece))).min();
         unplaced_floor = unplaced_floor.max(lightest.unwrap_or(0));
     }
     if !refusals.is_empty() {
@@ -132,10 +131,9 @@ pub(super) struct Facts<'a> {
     pub(super) timetable: &'a Timetable,
     all: Vec<Piece>,
     places: FastMap<Arc<str>, usize>,
-    /// Per piece the number of what it stays together with; withdrawn pieces are alone.
-    item_of: Vec<usize>,
-    /// The pieces of each item.
-    items: Vec<Vec<usize>>,
+    /// The pieces that stay together, request by request, and which request is where.
+    together: Vec<Vec<usize>>,
+    joined: FastMap<Arc<str>, usize>,
     /// The resources each item of several pieces may use, once anybody has asked.
     shared: Vec<std::cell::OnceCell<Vec<usize>>>,
     /// Resources by their own names and by those of their kinds, for looking up `only`.
@@ -161,20 +159,18 @@ impl<'a> Facts<'a> {
             .enumerate()
             .map(|(at, piece)| (Arc::clone(&piece.id), at))
             .collect();
-        let (mut item_of, mut items) = (Vec::with_capacity(all.len()), Vec::<Vec<usize>>::new());
-        let mut joined: FastMap<&str, usize> = FastMap::default();
+        // Most pieces are alone: only what stays together is listed.
+        let mut together: Vec<Vec<usize>> = Vec::new();
+        let mut joined: FastMap<Arc<str>, usize> = FastMap::default();
         for (at, piece) in all.iter().enumerate() {
             let request = &piece.request;
-            let joins = request.together && request.repeats.is_some() && !piece.withdrawn;
-            let item = match joins {
-                true => *joined.entry(&request.id).or_insert(items.len()),
-                false => items.len(),
-            };
-            if item == items.len() {
-                items.push(Vec::new());
+            if request.together && request.repeats.is_some() && !piece.withdrawn {
+                let group = *joined.entry(Arc::clone(&request.id)).or_insert_with(|| {
+                    together.push(Vec::new());
+                    together.len() - 1
+                });
+                together[group].push(at);
             }
-            items[item].push(at);
-            item_of.push(item);
         }
         let resources = &timetable.resources().all;
         let mut meant: FastMap<&str, Vec<usize>> = FastMap::default();
@@ -187,9 +183,9 @@ impl<'a> Facts<'a> {
         let uniform = resources.iter().all(|r| (r.setup, r.turnaround) == own);
         Facts {
             timetable,
-            shared: vec![std::cell::OnceCell::new(); items.len()],
-            item_of,
-            items,
+            shared: vec![std::cell::OnceCell::new(); together.len()],
+            together,
+            joined,
             all,
             places,
             meant,
@@ -201,16 +197,26 @@ impl<'a> Facts<'a> {
         self.places.get(id).map(|at| &self.all[*at])
     }
 
-    /// The item of a piece.
+    /// The item of a piece: a number that only what stays together shares.
     pub(super) fn item(&self, piece: &Piece) -> usize {
-        self.places
-            .get(&piece.id)
-            .map_or(usize::MAX, |at| self.item_of[*at])
+        let group = match piece.request.together && !piece.withdrawn {
+            true => self.joined.get(&piece.request.id),
+            false => None,
+        };
+        match group {
+            Some(group) => self.all.len() + group,
+            None => self.places.get(&piece.id).copied().unwrap_or(usize::MAX),
+        }
     }
 
     /// The pieces of an item.
     pub(super) fn of_item(&self, item: usize) -> impl Iterator<Item = &Piece> {
-        self.items[item].iter().map(|at| &self.all[*at])
+        let (one, several) = match item.checked_sub(self.all.len()) {
+            None => (self.all.get(item), None),
+            Some(group) => (None, self.together.get(group)),
+        };
+        let several = several.into_iter().flatten().map(|at| &self.all[*at]);
+        one.into_iter().chain(several)
     }
 
     /// How much it hurts to leave an item out.
@@ -306,9 +312,12 @@ impl<'a> Facts<'a> {
     /// times, by their places in the list.
     pub(super) fn usable(&self, piece: &Piece) -> Vec<usize> {
         let item = self.item(piece);
-        if self.items.get(item).is_none_or(|pieces| pieces.len() < 2) {
+        let group = item.checked_sub(self.all.len());
+        let Some(group) =
+            group.filter(|group| self.together.get(*group).is_some_and(|p| p.len() > 1))
+        else {
             return self.usable_alone(piece);
-        }
+        };
         let work_out = || {
             let resources = &self.timetable.resources().all;
             let mut pieces = self.of_item(item);
@@ -336,7 +345,7 @@ impl<'a> Facts<'a> {
             });
             usable
         };
-        self.shared[item].get_or_init(work_out).clone()
+        self.shared[group].get_or_init(work_out).clone()
     }
 
     fn usable_alone(&self, piece: &Piece) -> Vec<usize> {
@@ -458,12 +467,12 @@ fn plan(facts: &Facts<'_>, plan: &Plan, refusals: &mut Vec<Refusal>) -> usize {
 
 /// What stays together is on one resource, or has no place as a whole.
 fn together(facts: &Facts<'_>, plan: &Plan, refusals: &mut Vec<Refusal>) {
-    if facts.items.iter().all(|pieces| pieces.len() < 2) {
+    if facts.together.is_empty() {
         return;
     }
     let placed = plan.placements.iter();
     let on: FastMap<&str, &Arc<str>> = placed.map(|p| (&*p.piece, &p.resource)).collect();
-    for pieces in facts.items.iter().filter(|pieces| pieces.len() > 1) {
+    for pieces in &facts.together {
         let first = &facts.all[pieces[0]].id;
         for other in &pieces[1..] {
             let other = &facts.all[*other].id;

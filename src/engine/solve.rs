@@ -323,7 +323,7 @@ impl Solving<'_, '_> {
         };
         let (problem, wishes, two) = (self.problem, &reference.wishes, reference.two);
         let mut changes = Changes::new(problem, wishes, two, &self.best, limit);
-        changes.quick(nodes, &super::Never);
+        changes.at_once(nodes, &super::Never);
         match (first, changes.plan()) {
             (_, None) => {}
             (true, Some(plan)) => self.near = Some(plan.clone()),

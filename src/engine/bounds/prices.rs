@@ -8,8 +8,8 @@
 //! claim rests on a float. The dearest chain is a linear sweep by end (weighted interval
 //! scheduling; Kleinberg, Tardos 2006, 6.1).
 
-use crate::engine::Problem;
 use crate::engine::problem::Unit;
+use crate::engine::{Problem, Stopper};
 use std::sync::Arc;
 
 /// The takers of a class by the end of what they occupy.
@@ -187,13 +187,17 @@ impl Chains {
 
     /// The chains of single resources where taking something costs what `cost` says (unit and
     /// resource), resources are free, at most `limit` of them may take anything, and a weight
-    /// of `out` may be left out.
+    /// of `out` may be left out. `None` when stopped.
     pub(crate) fn costing(
         problem: &Problem,
         cost: &dyn Fn(usize, usize) -> i64,
         limit: usize,
         out: u64,
-    ) -> Chains {
+        stop: &dyn Stopper,
+    ) -> Option<Chains> {
+        if stop.stop() {
+            return None;
+        }
         let mut chains = Chains::of(problem);
         chains.costs = false;
         chains.limit = Some(limit);
@@ -219,6 +223,9 @@ impl Chains {
             .filter(|(_, taken)| *taken);
         for (chain, (class, _)) in classes.into_iter().zip(with_takers) {
             for member in &class.members {
+                if stop.stop() {
+                    return None;
+                }
                 let units = chain.items.iter();
                 chains.list.push(Chain {
                     members: 1,
@@ -233,7 +240,7 @@ impl Chains {
             }
         }
         chains.entries = chains.list.iter().map(|chain| chain.items.len()).sum();
-        chains
+        Some(chains)
     }
 
     /// The chains of single resources with what is left for each of them.

@@ -46,6 +46,9 @@ const MOST_STEPS: u32 = 3_000;
 /// Most (piece, resource) pairs that prices are looked for; beyond it only the plan counts.
 const MOST_ENTRIES: usize = 3_000_000;
 
+/// Items handled between questions whether to stop.
+const POLL: usize = 128;
+
 /// Most (item, resource) pairs for which losses are kept.
 const MOST_PAIRS: usize = 4_000_000;
 
@@ -138,10 +141,7 @@ impl<'a> Changes<'a> {
     /// A plan with few changes in a moment: growing budgets from what can stay as it is, then
     /// short improving chains from the best plan. About `nodes` cases.
     pub(crate) fn quick(&mut self, nodes: u64, stop: &dyn Stopper) {
-        if self.cost == self.least {
-            return;
-        }
-        self.deepen(self.least / self.unit, nodes, &NothingKnown, stop);
+        self.at_once(nodes, stop);
         if self.cost > self.least && self.cost < u64::MAX {
             self.improve(stop);
         }
@@ -168,9 +168,17 @@ impl<'a> Changes<'a> {
         self.improve(stop);
     }
 
+    /// The first half of that.
+    pub(crate) fn at_once(&mut self, nodes: u64, stop: &dyn Stopper) {
+        if self.cost > self.least {
+            self.deepen(self.least / self.unit, nodes, &NothingKnown, stop);
+        }
+    }
+
     fn improve(&mut self, stop: &dyn Stopper) {
         let (problem, wishes) = (self.problem, self.wishes);
-        let mut moves = Moves::from(problem, wishes, self.limit, &self.best, &self.skip);
+        let from = Moves::from(problem, wishes, self.limit, (&self.best, &self.skip), stop);
+        let Some(mut moves) = from else { return };
         moves.improve(CHAIN, stop);
         if moves.whole() {
             self.take(&moves.on);
@@ -180,10 +188,9 @@ impl<'a> Changes<'a> {
     /// Budgets from `from` relocations on, until a plan is found that is better than the
     /// best or the cases run out.
     fn deepen(&mut self, from: u64, nodes: u64, useless: &dyn Useless, stop: &dyn Stopper) {
-        if stop.stop() {
+        let Some(base) = self.at_home(stop) else {
             return;
-        }
-        let base = self.at_home();
+        };
         for level in from..from + MOST_LEVELS {
             let budget = level * self.unit + (self.unit - 1);
             // Within the last level the second plan may still gain.
@@ -192,7 +199,8 @@ impl<'a> Changes<'a> {
             }
             let budget = budget.min(self.cost.saturating_sub(1));
             let (problem, wishes) = (self.problem, self.wishes);
-            let mut moves = Moves::from(problem, wishes, self.limit, &base, &self.skip);
+            let from = Moves::from(problem, wishes, self.limit, (&base, &self.skip), stop);
+            let Some(mut moves) = from else { return };
             if moves.missing() > MOST_MISSING {
                 return;
             }
@@ -207,9 +215,13 @@ impl<'a> Changes<'a> {
     }
 
     /// Everything where it costs least, as far as that fits together; the rest has no place.
-    fn at_home(&self) -> Assignment {
+    /// `None` when stopped.
+    fn at_home(&self, stop: &dyn Stopper) -> Option<Assignment> {
         let mut rows = rows::Rows::empty(self.problem);
         for item in 0..self.skip.len() {
+            if item.is_multiple_of(POLL) && stop.stop() {
+                return None;
+            }
             if let Some(home) = self.wishes.home(item).filter(|_| !self.skip[item])
                 && self.problem.allows(item, home as usize)
                 && rows.gap(item, home).is_some()
@@ -217,7 +229,7 @@ impl<'a> Changes<'a> {
                 rows.place(item, home);
             }
         }
-        rows.on
+        Some(rows.on)
     }
 
     /// Works on plan and proof until they meet, nothing more comes, or somebody says stop;
@@ -230,6 +242,11 @@ impl<'a> Changes<'a> {
             .filter(|(skip, _)| **skip)
             .map(|(_, item)| item.weight)
             .sum();
+        let unproved = |changes: &Changes<'_>| Known {
+            on: changes.best.clone(),
+            relocated: changes.relocated(),
+            proof: None,
+        };
         let (problem, wishes, unit) = (self.problem, self.wishes, self.unit);
         let cost = |place: usize, resource: usize| {
             let item = problem.units[place].item as usize;
@@ -266,14 +283,12 @@ impl<'a> Changes<'a> {
             let members = classes.map(|class| problem.classes[*class as usize].members.len());
             members.sum::<usize>()
         });
-        if entries.sum::<usize>() > MOST_ENTRIES {
-            return Known {
-                on: self.best.clone(),
-                relocated: self.relocated(),
-                proof: None,
-            };
+        if stop.stop() || entries.sum::<usize>() > MOST_ENTRIES {
+            return unproved(self);
         }
-        let chains = Chains::costing(problem, &cost, self.limit, out);
+        let Some(chains) = Chains::costing(problem, &cost, self.limit, out, stop) else {
+            return unproved(self);
+        };
         // By itself everything costs its least: a start that proves as much.
         let start = (0..problem.units.len()).map(|place| {
             let item = problem.units[place].item as usize;

@@ -64,13 +64,14 @@ struct Way {
 
 impl<'a> Moves<'a> {
     /// Starts from a plan; what has no place in it is left out for good when `skip` says so.
+    /// `None` when stopped.
     pub(crate) fn from(
         problem: &'a Problem,
         wishes: &'a Wishes,
         limit: usize,
-        plan: &[u32],
-        skip: &[bool],
-    ) -> Moves<'a> {
+        (plan, skip): (&[u32], &[bool]),
+        stop: &dyn Stopper,
+    ) -> Option<Moves<'a>> {
         let rows = problem.resources.len();
         let mut moves = Moves {
             problem,
@@ -91,6 +92,9 @@ impl<'a> Moves<'a> {
             cut: false,
         };
         for (item, resource) in plan.iter().enumerate() {
+            if item.is_multiple_of(super::POLL) && stop.stop() {
+                return None;
+            }
             if moves.skipped[item] {
                 continue;
             }
@@ -103,7 +107,7 @@ impl<'a> Moves<'a> {
                 moves.put(item as u32, *resource);
             }
         }
-        moves
+        Some(moves)
     }
 
     /// Whether everything has its place and no more resources are in use than may be.
