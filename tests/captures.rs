@@ -153,6 +153,32 @@ fn carrying_finding_and_help_as_people_see_them() {
 }
 
 #[test]
+fn why_and_who_as_people_see_them() {
+    let proved = ("", "at least 9: proved");
+    capture(
+        "why-80x24-no-color",
+        "exam-fortnight",
+        (80, 24),
+        true,
+        &[proved, ("y", "line 497")],
+    );
+    capture(
+        "who-80x24-no-color",
+        "exam-fortnight",
+        (80, 24),
+        true,
+        &[proved, ("t", "who can take")],
+    );
+    capture(
+        "evenings-80x24-no-color",
+        "spring-evenings",
+        (80, 24),
+        true,
+        &[("", "at least 6: proved")],
+    );
+}
+
+#[test]
 fn the_depot_as_people_see_it() {
     // Better plans and floors come in for a moment; these are the last ones.
     let whole = [("", "22 crews in use"), ("", "floor 22")];
