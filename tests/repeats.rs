@@ -447,7 +447,7 @@ fn graphs_with_a_known_answer() {
             "{vertices}"
         );
         assert!(receipt.floor() <= answer);
-        if answer == 4 {
+        if answer < 6 {
             assert!(
                 matches!(receipt.knowledge(), Knowledge::Proved(_)),
                 "{receipt:?}"
