@@ -4,7 +4,7 @@
 mod near;
 
 use super::bounds::ladder::{Found, Ladder};
-use super::bounds::{clique, hall, incompatible, prices};
+use super::bounds::{chains, clique, hall, incompatible};
 use super::changes::{Places, Wishes};
 use super::plans::slices::{Known, Plans, SLICE, SLICE_WORK, Slice};
 use super::plans::{Assignment, NONE, align, alike, greedy, keep, rows};
@@ -241,7 +241,7 @@ impl Solving<'_, '_> {
                         whole[*place] = *price;
                     }
                 }
-                let value = prices::Chains::of(self.problem).count(&whole, *unit, &mut Vec::new());
+                let value = chains::Chains::of(self.problem).count(&whole, *unit, &mut Vec::new());
                 if value > self.floor.value() {
                     let named = whole.iter().enumerate().filter(|(_, price)| **price > 0);
                     let named =

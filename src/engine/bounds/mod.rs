@@ -1,5 +1,6 @@
 //! Lower bounds, each with the certificate that `audit` rechecks.
 
+pub(super) mod chains;
 pub(super) mod clique;
 pub(super) mod hall;
 pub(super) mod incompatible;

@@ -12,7 +12,8 @@ mod wishes;
 
 pub(crate) use wishes::{FIRST, Places, Wishes};
 
-use super::bounds::prices::{Chains, Prices};
+use super::bounds::chains::Chains;
+use super::bounds::prices::Prices;
 use super::plans::tabu::Tabu;
 use super::plans::{Assignment, NONE, rows};
 use super::{Problem, Stopper};

@@ -9,7 +9,8 @@
 use super::left::Left;
 use crate::claim::Case;
 use crate::clock::Instant;
-use crate::engine::bounds::prices::{Chains, Prices};
+use crate::engine::bounds::chains::Chains;
+use crate::engine::bounds::prices::Prices;
 use crate::engine::plans::{Assignment, NONE};
 use crate::engine::{Problem, Stopper};
 use std::sync::Arc;

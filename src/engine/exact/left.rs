@@ -2,7 +2,7 @@
 //! pieces that have been put somewhere. `audit` works the same rules out on its own.
 
 use crate::engine::Problem;
-use crate::engine::bounds::prices::Held;
+use crate::engine::bounds::chains::Held;
 
 /// Most (piece, resource) pairs of a problem that is looked at case by case.
 const MOST_PAIRS: usize = 2_000_000;
