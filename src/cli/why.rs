@@ -1,7 +1,7 @@
 //! `fewest why`.
 
 use super::{Outcome, Search, notes};
-use crate::claim::NoPlace;
+use crate::claim::{Case, Ground};
 use crate::desk::{self, Desk};
 use crate::engine::Never;
 use crate::text::clean;
@@ -64,18 +64,12 @@ pub(super) fn why(file: &Path, json: bool, search: Search) -> Outcome {
     let timetable = desk.timetable();
     let zone = timetable.settings.zone;
     let file_name = clean(&file.display().to_string()).into_owned();
-    let ground = |ground: &crate::claim::Ground| {
+    let ground = |ground: &Ground| {
         let line = desk.document().line_of_ground(timetable, ground);
         GroundOut {
             edit_or_key: words::ground(ground, zone),
             place: format!("{file_name}:{}", line.unwrap_or(1)),
         }
-    };
-    let unplaced = |unplaced: &NoPlace| -> (String, Vec<GroundOut>) {
-        (
-            words::no_place(timetable, unplaced),
-            unplaced.grounds.iter().map(ground).collect(),
-        )
     };
     let report = Report {
         count: why.count,
@@ -97,17 +91,14 @@ pub(super) fn why(file: &Path, json: bool, search: Search) -> Outcome {
         unplaced: why
             .unplaced
             .iter()
-            .map(|found| {
-                let (because, grounds) = unplaced(found);
-                UnplacedOut {
-                    pieces: found.pieces.iter().map(|id| &**id).collect(),
-                    because,
-                    at: found.at.map(|at| zone.rfc3339(at)),
-                    set: found.set.iter().map(|id| &**id).collect(),
-                    resources: found.resources.iter().map(|id| &**id).collect(),
-                    cases: found.cases.as_ref().map(crate::claim::Case::count),
-                    grounds,
-                }
+            .map(|found| UnplacedOut {
+                pieces: found.pieces.iter().map(|id| &**id).collect(),
+                because: words::no_place(timetable, found),
+                at: found.at.map(|at| zone.rfc3339(at)),
+                set: found.set.iter().map(|id| &**id).collect(),
+                resources: found.resources.iter().map(|id| &**id).collect(),
+                cases: found.cases.as_ref().map(Case::count),
+                grounds: found.grounds.iter().map(ground).collect(),
             })
             .collect(),
         sentence: words::why(timetable, &why),

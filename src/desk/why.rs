@@ -2,13 +2,13 @@
 //! stated piece by piece and having audit recheck what remains.
 
 use super::{Job, Settled};
-use crate::audit;
+use crate::audit::{self, Knowledge};
 use crate::claim::{FloorProof, Ground, HallViolation, NoPlace, PinPrice, Why};
 use crate::edit::Change;
 use crate::engine::reasons::{cannot_all, explicit, minimal, plainer, without};
-use crate::engine::{Budget, Either, Stopper, Until};
+use crate::engine::{Budget, Either, Flag, Stopper, Until};
 use crate::lookup::FastSet;
-use crate::timetable::{Piece, Resource, Timetable, all_may_use};
+use crate::timetable::{Piece, Prefer, Resource, Timetable, all_may_use};
 use std::collections::HashMap;
 use std::sync::Arc;
 use std::time::{Duration, Instant};
@@ -197,9 +197,12 @@ fn saved(
     less: &Timetable,
     stop: &(dyn Stopper + Sync),
 ) -> Option<(usize, bool)> {
+    let mut timetable = less.clone();
+    // It is the count that is asked for, whatever comes first in the plan.
+    Arc::make_mut(&mut timetable.settings).prefer = Prefer::Count;
     let job = Job {
         generation: 0,
-        timetable: less.clone(),
+        timetable,
         reference: Some(Arc::new(settled.answer().plan.clone())),
         issued: None,
         floor: None,
@@ -209,11 +212,19 @@ fn saved(
         threads: 2,
         ..Budget::default()
     };
-    let until = Either(Until(Instant::now() + PER_PIN), Told(stop));
-    let found = job.run(budget, &until, &mut |_| {}).ok()?;
+    // Once the count is proved nobody waits for fewest changes.
+    let enough = Flag::default();
+    let within = Either(Until(Instant::now() + PER_PIN), enough.clone());
+    let mut proved_yet = |settled: &Arc<Settled>| {
+        if matches!(settled.receipt().knowledge(), Knowledge::Proved(_)) {
+            enough.raise();
+        }
+    };
+    let until = Either(within, Told(stop));
+    let found = job.run(budget, &until, &mut proved_yet).ok()?;
     let receipt = found.receipt();
     let saves = settled.receipt().in_use().checked_sub(receipt.in_use())?;
-    let proved = receipt.unplaced() == 0 && receipt.in_use() == receipt.floor();
+    let proved = matches!(receipt.knowledge(), Knowledge::Proved(_));
     (receipt.unplaced() == 0).then_some((saves, proved))
 }
 

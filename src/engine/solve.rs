@@ -207,10 +207,18 @@ impl Solving<'_, '_> {
 
     /// Takes over what still holds of an earlier floor, when that is more than is known.
     fn still(&mut self, floor: &FloorProof) {
-        let mut units: FastMap<&str, usize> = FastMap::default();
-        units.extend((0..self.problem.units.len()).map(|unit| (&**self.problem.id_of(unit), unit)));
+        if let FloorProof::Cases { value, .. } = floor {
+            if *value > self.floor.value() {
+                self.floor = floor.clone();
+            }
+            return;
+        }
+        let units = 0..self.problem.units.len();
+        let units = units.map(|unit| (&**self.problem.id_of(unit), unit));
+        let units: FastMap<&str, usize> = units.collect();
         match floor {
-            FloorProof::Clique { at: Some(_), .. } => {}
+            // The largest at any moment is known already.
+            FloorProof::Clique { at: Some(_), .. } | FloorProof::Cases { .. } => {}
             FloorProof::Clique { pieces, .. } | FloorProof::Incompatible { pieces } => {
                 let problem = self.problem;
                 let mut clique: Vec<usize> = Vec::new();
@@ -253,10 +261,6 @@ impl Solving<'_, '_> {
                     };
                 }
             }
-            FloorProof::Cases { value, .. } if *value > self.floor.value() => {
-                self.floor = floor.clone();
-            }
-            FloorProof::Cases { .. } => {}
         }
     }
 
@@ -302,13 +306,10 @@ impl Solving<'_, '_> {
         self.best = on;
         self.proof = None;
         self.due = self.reference.is_some();
-        if !matches!(
-            self.reference,
-            None | Some(Reference {
-                prefer: Prefer::Changes,
-                ..
-            })
-        ) {
+        if self
+            .reference
+            .is_some_and(|reference| reference.prefer == Prefer::Count)
+        {
             self.stay_near(QUICK);
         }
     }

@@ -106,6 +106,11 @@ pub fn update(model: &mut Model, msg: Msg) -> Vec<Effect> {
         }
         Msg::Solver(event) => heard(model, event),
         Msg::Why(generation, why) => {
+            // One that was asked of an earlier state may come late.
+            let current = model.desk.settled().map(|settled| settled.generation());
+            if current != Some(generation) {
+                return Vec::new();
+            }
             model.why = Some((generation, why));
             if let Mode::Why(0) = model.mode {
                 model.mode = Mode::Why(super::panels::why::first(model));

@@ -41,7 +41,7 @@ const MANY: u64 = 8;
 /// Steps of the ascent between looks at what it has come to.
 const STEPS: u32 = 20;
 
-/// Steps of the ascent at most, and without a better bound.
+/// Steps of the ascent at most.
 const MOST_STEPS: u32 = 3_000;
 
 /// Most (piece, resource) pairs that prices are looked for; beyond it only the plan counts.
