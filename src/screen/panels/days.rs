@@ -1,6 +1,6 @@
 //! The days strip: each day with its load, the floor, what is in use; Enter goes there.
 
-use super::sheet;
+use super::{in_sight, sheet};
 use crate::clock::Instant;
 use crate::screen::draw::put;
 use crate::screen::model::{Mode, Model};
@@ -139,8 +139,7 @@ pub(in crate::screen) fn draw(
         .map_or(0, |settled| settled.receipt().floor());
     let heading = format!(" Days (floor of the whole: {floor}): Enter goes there, Esc leaves");
     let area = sheet(model, buffer, whole, height, &heading);
-    let room = usize::from(height).saturating_sub(1).max(1);
-    let skip = (chosen + 1).saturating_sub(room);
+    let (skip, room) = in_sight(height, chosen);
     let most = days
         .iter()
         .map(|day| day.in_use)

@@ -1,6 +1,6 @@
 //! What is doubtful in the file, what cannot be, what has no place, who clashes.
 
-use super::sheet;
+use super::{in_sight, sheet};
 use crate::edit::Touched;
 use crate::screen::draw::put;
 use crate::screen::model::Model;
@@ -89,8 +89,7 @@ pub(in crate::screen) fn draw(
             theme.label,
         );
     }
-    let room = usize::from(height).saturating_sub(1).max(1);
-    let skip = (chosen + 1).saturating_sub(room);
+    let (skip, _) = in_sight(height, chosen);
     let mut y = 1;
     let mut here = 1;
     for (at, (text, _)) in lines.iter().enumerate().skip(skip) {

@@ -32,6 +32,13 @@ fn sheet(model: &Model, buffer: &mut Buffer, whole: Rect, height: u16, heading: 
     area
 }
 
+/// Of a list under a heading on a sheet of that height: lines before the first one in sight,
+/// and how many are, so that the chosen one is among them.
+fn in_sight(height: u16, chosen: usize) -> (usize, usize) {
+    let room = usize::from(height).saturating_sub(1).max(1);
+    ((chosen + 1).saturating_sub(room), room)
+}
+
 /// A key in one of the panels that list something: up and down, Enter goes, all else leaves.
 pub(super) fn listed(model: &mut Model, key: KeyEvent, action: Option<Action>) {
     let count = match &model.mode {

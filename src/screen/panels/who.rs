@@ -1,6 +1,6 @@
 //! Who can take this? Every resource for the piece in hand, the nearest fit first.
 
-use super::sheet;
+use super::{in_sight, sheet};
 use crate::engine::who::{Choice, who_can_take};
 use crate::screen::draw::put;
 use crate::screen::model::Model;
@@ -33,8 +33,7 @@ pub(in crate::screen) fn draw(
     let choices = choices(model, piece);
     let width = choices.iter().map(|choice| choice.resource.len()).max();
     let width = width.unwrap_or(0).min(22);
-    let room = usize::from(height).saturating_sub(1).max(1);
-    let skip = (chosen + 1).saturating_sub(room);
+    let (skip, room) = in_sight(height, chosen);
     let mut here = 1;
     for (row, (at, choice)) in choices.iter().enumerate().skip(skip).take(room).enumerate() {
         let y = row as u16 + 1;

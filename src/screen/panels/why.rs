@@ -1,7 +1,7 @@
 //! Why not fewer, and why not everything: in sentences, then each ground with the line of the
 //! file that states it.
 
-use super::sheet;
+use super::{in_sight, sheet};
 use crate::claim::{Ground, Why};
 use crate::screen::draw::put;
 use crate::screen::model::Model;
@@ -98,8 +98,7 @@ pub(in crate::screen) fn draw(
         .min(whole.height.saturating_sub(3));
     let heading = " why: Enter on a ground goes to it, Esc leaves";
     let area = sheet(model, buffer, whole, height, heading);
-    let room = usize::from(height).saturating_sub(1).max(1);
-    let skip = (chosen + 1).saturating_sub(room);
+    let (skip, room) = in_sight(height, chosen);
     let mut here = 1;
     for (row, (at, (text, target))) in lines.iter().enumerate().skip(skip).take(room).enumerate() {
         let y = row as u16 + 1;
