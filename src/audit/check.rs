@@ -325,15 +325,7 @@ impl<'a> Facts<'a> {
                 .next()
                 .map_or_else(Vec::new, |first| self.usable_alone(first));
             for piece in pieces {
-                let listed = |r: &Resource| {
-                    let only = &piece.request.only;
-                    let here = |name: &Arc<str>| *name == r.id || Some(name) == r.kind.as_ref();
-                    only.is_empty() || only.iter().any(here)
-                };
-                usable.retain(|at| {
-                    let resource = &resources[*at];
-                    listed(resource) && Facts::against(piece, resource).is_none()
-                });
+                usable.retain(|at| Facts::against(piece, &resources[*at]).is_none());
             }
             usable.retain(|at| {
                 let spans = self
